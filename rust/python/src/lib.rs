@@ -1,0 +1,15 @@
+//! `rayloom._core`: checks and borrows arrays, calls one core function through
+//! one [`gate`], wraps the result. No algorithm lives here.
+
+// The methods below take what numpy hands over; pyo3 needs owned arguments.
+#![allow(clippy::needless_pass_by_value)]
+
+mod gate;
+mod products;
+
+use pyo3::prelude::*;
+
+#[pymodule]
+fn _core(module: &Bound<'_, PyModule>) -> PyResult<()> {
+    products::register(module)
+}
