@@ -1,0 +1,12 @@
+"""The model: a frame on the Earth, blocks in the frame, a slowness in each block.
+
+:class:`Frame` places local coordinates on the sphere (or on a flat box),
+:class:`BlockGrid` cuts a volume of it into blocks, :class:`SlownessModel` gives
+each block a slowness and travels to and from netCDF.
+"""
+
+from rayloom.model.frame import Frame
+from rayloom.model.grid import BlockGrid, BlockWidths
+from rayloom.model.slowness import SlownessModel
+
+__all__ = ["BlockGrid", "BlockWidths", "Frame", "SlownessModel"]
