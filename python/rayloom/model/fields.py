@@ -45,8 +45,12 @@ UNIT_OF_SUFFIX: Final = {
 """Unit of a quantity that ends so, longest ending first to match."""
 
 RESERVED_NAMES: Final = frozenset(
-    "x y depth x_bounds y_bounds depth_bounds bounds_edge longitude latitude rotated_pole "
-    "slowness slowness_reference vp vp_reference dvp vs vs_reference dvs".split()
+    [
+        *("x", "y", "depth", "x_bounds", "y_bounds", "depth_bounds", "edge"),
+        *("longitude", "latitude", "rotated_pole"),
+        *("slowness", "slowness_reference"),
+        *("vp", "vp_reference", "dvp", "vs", "vs_reference", "dvs"),
+    ]
 )
 """Names that a model file uses for itself."""
 

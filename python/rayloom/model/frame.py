@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Self
+from typing import Final, Self
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -12,6 +12,27 @@ from rayloom.errors import InputError
 from rayloom.units import EARTH_RADIUS_KM, WGS84_FLATTENING
 
 Floats = NDArray[np.float64]
+
+COINCIDENT_POLES_RAD: Final = 1e-12
+"""Two poles nearer to each other than this are taken as one."""
+
+
+@dataclass(frozen=True)
+class RotatedPole:
+    """A rotated sphere as a map projection names it (CF-1.8, appendix F).
+
+    Attributes
+    ----------
+    latitude_deg, longitude_deg : float
+        Where the frame's pole (y = 90°) lies on the Earth, degrees; the latitude is
+        geocentric.
+    north_pole_x_deg : float
+        Rotated longitude x of the Earth's north pole, degrees.
+    """
+
+    latitude_deg: float
+    longitude_deg: float
+    north_pole_x_deg: float
 
 
 @dataclass(frozen=True, init=False)
@@ -107,6 +128,29 @@ class Frame:
         x_axis = np.cos(azimuth) * east - np.sin(azimuth) * north
         y_axis = np.cos(azimuth) * north + np.sin(azimuth) * east
         return np.stack([up, x_axis, y_axis])
+
+    def rotated_pole(self) -> RotatedPole:
+        """Describe the frame by its pole.
+
+        Returns
+        -------
+        RotatedPole
+            Where both poles coincide the north pole has no x of its own; it is then
+            taken as 0 and the pole's longitude carries the whole turn.
+
+        Raises
+        ------
+        InputError
+            If the frame is flat.
+        """
+        axes = self.axes
+        centre, _, pole = axes
+        longitude, latitude = (float(value) for value in _longitude_latitude_deg(pole))
+        north_pole_x = float(np.degrees(np.arctan2(axes[1, 2], axes[0, 2])))
+        if np.hypot(pole[0], pole[1]) < COINCIDENT_POLES_RAD:
+            towards_centre = np.copysign(1.0, -pole[2]) * centre
+            longitude, north_pole_x = float(_longitude_latitude_deg(towards_centre)[0]), 0.0
+        return RotatedPole(latitude, longitude, north_pole_x)
 
     def local_coordinates(
         self, longitude_deg: ArrayLike, latitude_deg: ArrayLike

@@ -185,9 +185,9 @@ class SlownessModel:
         Returns
         -------
         xarray.Dataset
-            Dimensions (depth, y, x); see :mod:`rayloom.model.netcdf`.
+            Dimensions (depth, y, x); see :mod:`rayloom.model.dataset`.
         """
-        from rayloom.model.netcdf import dataset_of
+        from rayloom.model.dataset import dataset_of
 
         return dataset_of(self)
 
@@ -200,7 +200,7 @@ class SlownessModel:
         InputError
             If a variable is missing or contradicts another.
         """
-        from rayloom.model.netcdf import model_of
+        from rayloom.model.dataset import model_of
 
         return model_of(dataset)
 

@@ -1,0 +1,79 @@
+"""Model files: the dataset of a model as netCDF-4, written whole or not at all."""
+
+from __future__ import annotations
+
+import os
+from pathlib import Path
+from typing import Any, Final
+
+from rayloom.errors import FileAccessError, InputError
+from rayloom.model.dataset import dataset_of, model_of
+from rayloom.model.slowness import SlownessModel
+
+ENGINE: Final = "h5netcdf"
+
+
+def write(model: SlownessModel, path: Path) -> None:
+    """Write a model under a temporary name, then give it its own.
+
+    Parameters
+    ----------
+    model : SlownessModel
+        The model.
+    path : Path
+        The file, replaced if there.
+
+    Raises
+    ------
+    FileAccessError
+        If the file cannot be written.
+    """
+    dataset = dataset_of(model)
+    packed = {"zlib": True, "complevel": 4, "shuffle": True}
+    encoding: dict[Any, dict[str, Any]] = {
+        name: {"_FillValue": None, **(packed if variable.ndim == 3 else {})}
+        for name, variable in dataset.variables.items()
+    }
+    temporary = path.with_name(f".{path.name}.{os.getpid()}.part")
+    try:
+        dataset.to_netcdf(temporary, engine=ENGINE, encoding=encoding)
+        temporary.replace(path)
+    except OSError as error:
+        raise FileAccessError(f"{path}: cannot be written ({error})") from error
+    finally:
+        temporary.unlink(missing_ok=True)
+
+
+def read(path: Path) -> SlownessModel:
+    """Read a model file.
+
+    Parameters
+    ----------
+    path : Path
+        The file.
+
+    Returns
+    -------
+    SlownessModel
+        The same bits that were written.
+
+    Raises
+    ------
+    FileAccessError
+        If the file is missing or not netCDF-4.
+    InputError
+        If it is netCDF-4 but not a model.
+    """
+    import xarray
+
+    if not path.is_file():
+        raise FileAccessError(f"{path}: there is no such file")
+    try:
+        with xarray.open_dataset(path, engine=ENGINE, decode_times=False) as dataset:
+            dataset.load()
+    except (OSError, ValueError) as error:
+        raise FileAccessError(f"{path}: cannot be read as netCDF-4 ({error})") from error
+    try:
+        return model_of(dataset)
+    except InputError as error:
+        raise InputError(str(error), where=str(path)) from error
