@@ -1,0 +1,33 @@
+"""Remarks on the inputs that do not stop the work."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Literal
+
+Severity = Literal["info", "warning"]
+
+
+@dataclass(frozen=True)
+class Notice:
+    """One remark on the inputs.
+
+    Parameters
+    ----------
+    severity : {"info", "warning"}
+        ``"warning"`` for what deserves a look, ``"info"`` for what was done.
+    what : str
+        Short code of the remark, for example ``"remote_station"``.
+    who : str
+        The station, event or file concerned.
+    detail : str
+        The remark in one sentence, with its numbers.
+    """
+
+    severity: Severity
+    what: str
+    who: str
+    detail: str
+
+    def __str__(self) -> str:
+        return f"{self.severity}: {self.who}: {self.detail}"

@@ -1,0 +1,56 @@
+"""Rows that give the same event, station and phase more than once."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+
+import numpy as np
+
+from rayloom.survey.notices import Notice
+from rayloom.survey.tables import BoolArray, FloatArray
+from rayloom.survey.text_table import TextTable
+
+
+def drop_repeats(
+    keys: Iterable[tuple[int, int, str]],
+    names: Sequence[str],
+    values: FloatArray,
+    table: TextTable,
+    notices: list[Notice],
+) -> BoolArray:
+    """Mark the rows to keep: repeats with the same values go, different ones stay.
+
+    Both are told in a notice with their lines. Which of several different ones
+    is used is decided where their residuals are known.
+
+    Parameters
+    ----------
+    keys : iterable of (event row, station row, phase)
+        What each row is about.
+    names : (n,) sequence of str
+        Each row in words, for the notices.
+    values : (n, k) float array
+        What makes rows of one key the same.
+    table : TextTable
+        Lines and source of the rows.
+    notices : list of Notice
+        Gets one notice per repeat.
+    """
+    kept = np.ones(len(values), dtype=bool)
+    first: dict[tuple[int, int, str], int] = {}
+    for row, key in enumerate(keys):
+        other = first.setdefault(key, row)
+        if other == row:
+            continue
+        pair = f"{table.problems.place}s {table.lines[other]} and {table.lines[row]}"
+        if np.array_equal(values[row], values[other]):
+            kept[row] = False
+            detail = f"{pair} of {table.source} are the same; one is kept"
+            notices.append(Notice("info", "repeated_row", names[row], detail))
+        else:
+            detail = (
+                f"{pair} of {table.source} differ; the one closer to its event's median "
+                "residual will be used"
+            )
+            notices.append(Notice("warning", "conflicting_rows", names[row], detail))
+    return kept
