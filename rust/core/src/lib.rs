@@ -5,6 +5,7 @@
 //! [`error::CoreError`] on failure; results never depend on the number of
 //! threads.
 
+pub mod earth;
 pub mod error;
 pub mod monitor;
 pub mod products;

@@ -4,6 +4,7 @@
 // The methods below take what numpy hands over; pyo3 needs owned arguments.
 #![allow(clippy::needless_pass_by_value)]
 
+mod earth;
 mod gate;
 mod products;
 
@@ -11,5 +12,6 @@ use pyo3::prelude::*;
 
 #[pymodule]
 fn _core(module: &Bound<'_, PyModule>) -> PyResult<()> {
+    earth::register(module)?;
     products::register(module)
 }

@@ -1,0 +1,182 @@
+//! The ray integrals of one spherical shell: [`Shell`].
+
+use std::ops::{Add, AddAssign};
+
+/// Nodes of the 8-point Gauss-Legendre rule on 0..1 (Abramowitz & Stegun 1964,
+/// table 25.4).
+pub(super) const GAUSS_NODES: [f64; 8] = [
+    0.019_855_071_751_231_856,
+    0.101_666_761_293_186_64,
+    0.237_233_795_041_835_5,
+    0.408_282_678_752_175_1,
+    0.591_717_321_247_825,
+    0.762_766_204_958_164_5,
+    0.898_333_238_706_813_4,
+    0.980_144_928_248_768_1,
+];
+
+/// Weights that belong to [`GAUSS_NODES`].
+pub(super) const GAUSS_WEIGHTS: [f64; 8] = [
+    0.050_614_268_145_188_13,
+    0.111_190_517_226_687_24,
+    0.156_853_322_938_943_64,
+    0.181_341_891_689_181,
+    0.181_341_891_689_181,
+    0.156_853_322_938_943_64,
+    0.111_190_517_226_687_24,
+    0.050_614_268_145_188_13,
+];
+
+/// Angle and time that a ray spends between two radii.
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
+pub struct Travel {
+    /// Angle at the Earth's centre, radians.
+    pub angle_rad: f64,
+    /// Time, seconds.
+    pub time_s: f64,
+}
+
+impl Travel {
+    /// The mark of a ray that does not exist.
+    pub const NONE: Self = Self {
+        angle_rad: f64::NAN,
+        time_s: f64::NAN,
+    };
+}
+
+impl Add for Travel {
+    type Output = Self;
+
+    fn add(self, other: Self) -> Self {
+        Self {
+            angle_rad: self.angle_rad + other.angle_rad,
+            time_s: self.time_s + other.time_s,
+        }
+    }
+}
+
+impl AddAssign for Travel {
+    fn add_assign(&mut self, other: Self) {
+        *self = *self + other;
+    }
+}
+
+/// A spherical shell with a velocity linear in radius, v = α + β r.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Shell {
+    /// Inner radius, km.
+    pub bottom_km: f64,
+    /// Outer radius, km.
+    pub top_km: f64,
+    /// α, km/s.
+    intercept_km_s: f64,
+    /// β, 1/s.
+    gradient_per_s: f64,
+}
+
+impl Shell {
+    /// The shell between `(radius in km, velocity in km/s)` below and above.
+    pub(super) fn new(bottom: (f64, f64), top: (f64, f64)) -> Self {
+        let gradient_per_s = (top.1 - bottom.1) / (top.0 - bottom.0);
+        Self {
+            bottom_km: bottom.0,
+            top_km: top.0,
+            intercept_km_s: bottom.1 - gradient_per_s * bottom.0,
+            gradient_per_s,
+        }
+    }
+
+    /// Velocity at a radius, km/s.
+    #[must_use]
+    pub fn velocity_km_s(&self, radius_km: f64) -> f64 {
+        self.intercept_km_s + self.gradient_per_s * radius_km
+    }
+
+    /// dv/dr, 1/s.
+    #[must_use]
+    pub fn gradient_per_s(&self) -> f64 {
+        self.gradient_per_s
+    }
+
+    /// η = r/v, the ray parameter of a ray that is horizontal at this radius, s/rad.
+    #[must_use]
+    pub fn horizontal_s(&self, radius_km: f64) -> f64 {
+        radius_km / self.velocity_km_s(radius_km)
+    }
+
+    /// r − p v, positive where a ray of parameter p can be. Linear in r.
+    pub(super) fn clearance_km(&self, ray_parameter: f64, radius_km: f64) -> f64 {
+        radius_km - ray_parameter * self.velocity_km_s(radius_km)
+    }
+
+    /// Angle and time between the radii `low_km` (or the turning point above
+    /// it) and `high_km`; zero if the ray does not reach up to `high_km`.
+    ///
+    /// Δ = ∫ p v / (r √(r² − p²v²)) dr and T = ∫ r / (v √(r² − p²v²)) dr
+    /// (Aki & Richards 2002, chapter 9).
+    #[must_use]
+    pub fn cross(&self, ray_parameter: f64, low_km: f64, high_km: f64) -> Travel {
+        let Some(path) = self.path(ray_parameter, low_km, high_km) else {
+            return Travel::default();
+        };
+        let mut sum = Travel::default();
+        for (node, weight) in GAUSS_NODES.iter().zip(GAUSS_WEIGHTS) {
+            let (radius, velocity, density) = path.at(*node);
+            let scaled = weight * density;
+            sum.angle_rad += scaled * velocity * velocity;
+            sum.time_s += scaled * radius * radius;
+        }
+        sum.angle_rad *= ray_parameter;
+        sum
+    }
+
+    /// The stretch of ray between two radii, `None` if there is none.
+    pub(super) fn path(&self, ray_parameter: f64, low_km: f64, high_km: f64) -> Option<Path> {
+        let above = self.clearance_km(ray_parameter, high_km);
+        if above <= 0.0 || high_km <= low_km {
+            return None;
+        }
+        let below = self.clearance_km(ray_parameter, low_km);
+        let (start_km, below) = if below > 0.0 {
+            (low_km, below)
+        } else {
+            let turning_km = low_km - below * (high_km - low_km) / (above - below);
+            (turning_km, 0.0)
+        };
+        Some(Path {
+            shell: *self,
+            ray_parameter,
+            start_km,
+            length_km: high_km - start_km,
+            root_low: below.sqrt(),
+            root_high: above.sqrt(),
+        })
+    }
+}
+
+/// A ray between two radii of one shell, in the variable x in 0..1 that is
+/// linear in √(r − p v): the turning point's singularity is gone, and nothing
+/// is divided by the velocity gradient.
+#[derive(Debug, Clone, Copy)]
+pub(super) struct Path {
+    shell: Shell,
+    ray_parameter: f64,
+    start_km: f64,
+    length_km: f64,
+    root_low: f64,
+    root_high: f64,
+}
+
+impl Path {
+    /// r, v and g with dΔ = p v² g dx and dT = r² g dx.
+    #[inline]
+    pub(super) fn at(&self, x: f64) -> (f64, f64, f64) {
+        let both = self.root_low + self.root_high;
+        let rise = x * (2.0 * self.root_low + (self.root_high - self.root_low) * x);
+        let radius = self.start_km + self.length_km * rise / both;
+        let velocity = self.shell.velocity_km_s(radius);
+        let root = (radius + self.ray_parameter * velocity).sqrt();
+        let density = 2.0 * self.length_km / (both * root * velocity * radius);
+        (radius, velocity, density)
+    }
+}
