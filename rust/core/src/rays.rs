@@ -1,0 +1,311 @@
+//! Whole data sets of rays, traced in parallel: [`RayBatch`].
+
+use rayon::prelude::*;
+
+use crate::blocks::Blocks;
+use crate::earth::WavefrontTable;
+use crate::entry::{CornerTimes, EarthWave, Surface};
+use crate::error::{CoreError, Result};
+use crate::fermat::straight_path;
+use crate::frame::{Chart, SphereChart};
+use crate::lattice::Lattice;
+use crate::monitor::Monitor;
+use crate::path::Path;
+use crate::tracer::{Beginning, Quality, Ray, Tracer};
+use crate::vec3::Vec3;
+
+/// How a path is found.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Method {
+    /// The ray of least time.
+    Bent,
+    /// The coarse graph's path, unrefined.
+    Graph,
+    /// The straight chord.
+    Straight,
+}
+
+/// Rays in the order of their pairs. Each ray's path lengths form a row of a
+/// sparse matrix over blocks, with rising column indices.
+#[derive(Debug, Clone, Default)]
+pub struct RayBatch {
+    /// False where no ray exists; its row and poly-line are empty.
+    pub traced: Vec<bool>,
+    /// Travel time (s) from the event or source to the receiver.
+    pub time_s: Vec<f64>,
+    /// Part of it outside the model (s).
+    pub outside_time_s: Vec<f64>,
+    /// Start of each row, and the end of the last.
+    pub row_pointers: Vec<i64>,
+    /// Block of each stored value.
+    pub columns: Vec<i32>,
+    /// Path length (km) of each stored value.
+    pub lengths_km: Vec<f64>,
+    /// Start of each poly-line, and the end of the last.
+    pub point_offsets: Vec<i64>,
+    /// Grid coordinates (km) of all poly-lines, `[x, y, depth]` in turn.
+    pub points_km: Vec<f64>,
+    /// Block of each segment of the poly-lines (one fewer than points, per ray).
+    pub segment_blocks: Vec<i32>,
+}
+
+/// A distant event: its wave's table and its epicentre in grid coordinates (km).
+#[derive(Debug, Clone, Copy)]
+pub struct DistantEvent<'a> {
+    /// First arrivals from the event's depth.
+    pub table: &'a WavefrontTable,
+    /// Rotated longitude and latitude as arcs (km).
+    pub epicentre: [f64; 2],
+}
+
+/// Traces rays between points inside a model. `pairs` holds indices into
+/// `sources` and `receivers` (grid coordinates, km).
+///
+/// # Errors
+/// [`CoreError::Invalid`] for a point outside the model or an index out of
+/// range, [`CoreError::Interrupted`] when the monitor asks for it.
+pub fn trace_between<C: Chart>(
+    blocks: &Blocks<C>,
+    sources: &[Vec3],
+    receivers: &[Vec3],
+    pairs: &[[u32; 2]],
+    (method, quality): (Method, Quality),
+    monitor: &Monitor,
+) -> Result<RayBatch> {
+    check_inside(blocks, "source", sources)?;
+    check_inside(blocks, "receiver", receivers)?;
+    check_pairs(pairs, sources.len(), receivers.len())?;
+    monitor.set_total(pairs.len() as u64);
+    if method == Method::Straight {
+        let rays = chords(blocks, pairs.iter().map(|pair| {
+            let from = sources[pair[0] as usize];
+            Some((from, 0.0, receivers[pair[1] as usize]))
+        }));
+        return Ok(pack(blocks, rays));
+    }
+    // Reciprocity: search from the side that needs fewer searches.
+    let from_sources = distinct(pairs, 0) < distinct(pairs, 1);
+    let (near, far) = if from_sources { (0, 1) } else { (1, 0) };
+    let ends = [sources, receivers];
+    let lattice = Lattice::new(blocks, quality.coarse_nodes);
+    let tracer = Tracer::new(blocks, &lattice, None, quality);
+    let rays = per_group(pairs, near, || tracer.workspace(), |workspace, members| {
+        let goal = ends[near][pairs[members[0]][near] as usize];
+        let points: Vec<Vec3> = members
+            .iter()
+            .map(|&member| ends[far][pairs[member][far] as usize])
+            .collect();
+        let mut rays = if method == Method::Graph {
+            tracer.graph_paths(goal, &points, workspace, monitor)?
+        } else {
+            let beginnings: Vec<_> = points.into_iter().map(Beginning::Point).collect();
+            tracer.trace_to(goal, &beginnings, workspace, monitor)?
+        };
+        if from_sources {
+            rays.iter_mut().flatten().for_each(|ray| ray.path.reverse());
+        }
+        Ok(rays)
+    })?;
+    Ok(pack(blocks, rays))
+}
+
+/// Traces rays of distant events to stations inside a model. `pairs` holds
+/// indices into `events` and `stations` (grid coordinates, km).
+///
+/// # Errors
+/// As [`trace_between`].
+pub fn trace_distant(
+    blocks: &Blocks<SphereChart>,
+    events: &[DistantEvent<'_>],
+    stations: &[Vec3],
+    pairs: &[[u32; 2]],
+    quality: Quality,
+    monitor: &Monitor,
+) -> Result<RayBatch> {
+    check_inside(blocks, "station", stations)?;
+    check_pairs(pairs, events.len(), stations.len())?;
+    monitor.set_total(pairs.len() as u64);
+    let lattice = Lattice::new(blocks, quality.coarse_nodes);
+    let surface = Surface::new(blocks, &lattice);
+    let waves: Vec<EarthWave<'_>> = events
+        .iter()
+        .map(|event| EarthWave::new(event.table, blocks.chart(), event.epicentre))
+        .collect();
+    let corners: Vec<CornerTimes> = waves.par_iter().map(|wave| surface.sample(wave)).collect();
+    let tracer = Tracer::new(blocks, &lattice, Some(&surface), quality);
+    let rays = per_group(pairs, 1, || tracer.workspace(), |workspace, members| {
+        let beginnings: Vec<_> = members
+            .iter()
+            .map(|&member| {
+                let event = pairs[member][0] as usize;
+                Beginning::Wave {
+                    incoming: &waves[event],
+                    corners: &corners[event],
+                }
+            })
+            .collect();
+        let station = stations[pairs[members[0]][1] as usize];
+        tracer.trace_to(station, &beginnings, workspace, monitor)
+    })?;
+    Ok(pack(blocks, rays))
+}
+
+/// Straight chords from given entry points to stations; `outside_time_s` is
+/// kept as the time up to the entry. Pairs with a non-finite entry give no ray.
+///
+/// # Errors
+/// [`CoreError::Invalid`] if the arrays' lengths disagree.
+pub fn straight_from_entries<C: Chart>(
+    blocks: &Blocks<C>,
+    entries: &[Vec3],
+    outside_time_s: &[f64],
+    receivers: &[Vec3],
+) -> Result<RayBatch> {
+    if entries.len() != outside_time_s.len() || entries.len() != receivers.len() {
+        return Err(CoreError::invalid(
+            "entries, times and receivers",
+            "equal lengths",
+            format!("{}, {}, {}", entries.len(), outside_time_s.len(), receivers.len()),
+        ));
+    }
+    let ends = entries.iter().zip(outside_time_s).zip(receivers);
+    let rays = chords(
+        blocks,
+        ends.map(|((&from, &time), &to)| time.is_finite().then_some((from, time, to))),
+    );
+    Ok(pack(blocks, rays))
+}
+
+fn chords<C: Chart>(
+    blocks: &Blocks<C>,
+    ends: impl Iterator<Item = Option<(Vec3, f64, Vec3)>>,
+) -> Vec<Option<Ray>> {
+    ends.map(|ends| {
+        let (from, outside_time_s, to) = ends?;
+        let mut path = Path::default();
+        let found = blocks
+            .around(from)
+            .into_iter()
+            .any(|block| straight_path(blocks, block, from, to, &mut path));
+        found.then_some(Ray {
+            path,
+            outside_time_s,
+        })
+    })
+    .collect()
+}
+
+/// Runs `work` once for each distinct index in column `by` of the pairs, in
+/// parallel, and brings the results into the order of the pairs.
+fn per_group<W>(
+    pairs: &[[u32; 2]],
+    by: usize,
+    workspace: impl Fn() -> W + Sync + Send,
+    work: impl Fn(&mut W, &[usize]) -> Result<Vec<Option<Ray>>> + Sync + Send,
+) -> Result<Vec<Option<Ray>>> {
+    let mut order: Vec<usize> = (0..pairs.len()).collect();
+    order.sort_by_key(|&pair| (pairs[pair][by], pair));
+    let groups: Vec<&[usize]> = order
+        .chunk_by(|&a, &b| pairs[a][by] == pairs[b][by])
+        .collect();
+    let results = groups
+        .par_iter()
+        .with_max_len(1)
+        .map_init(workspace, |workspace, members| work(workspace, members))
+        .collect::<Result<Vec<_>>>()?;
+    let mut rays = vec![None; pairs.len()];
+    for (members, found) in groups.iter().zip(results) {
+        for (&member, ray) in members.iter().zip(found) {
+            rays[member] = ray;
+        }
+    }
+    Ok(rays)
+}
+
+fn distinct(pairs: &[[u32; 2]], column: usize) -> usize {
+    pairs
+        .iter()
+        .map(|pair| pair[column])
+        .collect::<std::collections::HashSet<_>>()
+        .len()
+}
+
+fn check_inside<C: Chart>(blocks: &Blocks<C>, what: &str, points: &[Vec3]) -> Result<()> {
+    let outside = points.iter().position(|&point| !blocks.contains(point));
+    outside.map_or(Ok(()), |index| {
+        Err(CoreError::invalid(
+            format!("{what} {index}"),
+            "a point inside the block model",
+            format!("{:?} km", points[index]),
+        ))
+    })
+}
+
+fn check_pairs(pairs: &[[u32; 2]], first: usize, second: usize) -> Result<()> {
+    let wrong = pairs
+        .iter()
+        .find(|pair| pair[0] as usize >= first || pair[1] as usize >= second);
+    wrong.map_or(Ok(()), |pair| {
+        Err(CoreError::invalid(
+            "pair",
+            format!("indices below {first} and {second}"),
+            format!("{pair:?}"),
+        ))
+    })
+}
+
+/// Path lengths by block, times and poly-lines of all rays.
+fn pack<C: Chart>(blocks: &Blocks<C>, rays: Vec<Option<Ray>>) -> RayBatch {
+    let mut batch = RayBatch {
+        row_pointers: vec![0],
+        point_offsets: vec![0],
+        ..RayBatch::default()
+    };
+    let mut row: Vec<(u32, f64)> = Vec::new();
+    for ray in rays {
+        batch.traced.push(ray.is_some());
+        row.clear();
+        let (mut inside, mut outside) = (f64::NAN, f64::NAN);
+        if let Some(ray) = ray {
+            batch.append_points(&ray.path);
+            row.extend(segment_lengths(blocks, &ray.path));
+            row.sort_by_key(|entry| entry.0);
+            row.dedup_by(|next, kept| {
+                let same = next.0 == kept.0;
+                if same {
+                    kept.1 += next.1;
+                }
+                same
+            });
+            inside = row
+                .iter()
+                .map(|&(block, length)| blocks.slowness_of(block) * length)
+                .sum();
+            outside = ray.outside_time_s;
+        }
+        batch.columns.extend(row.iter().map(|entry| entry.0 as i32));
+        batch.lengths_km.extend(row.iter().map(|entry| entry.1));
+        batch.row_pointers.push(batch.columns.len() as i64);
+        batch.point_offsets.push((batch.points_km.len() / 3) as i64);
+        batch.time_s.push(inside + outside);
+        batch.outside_time_s.push(outside);
+    }
+    batch
+}
+
+fn segment_lengths<C: Chart>(blocks: &Blocks<C>, path: &Path) -> Vec<(u32, f64)> {
+    path.points
+        .windows(2)
+        .zip(&path.blocks)
+        .map(|(ends, &block)| (block, blocks.chart().distance(ends[0], ends[1])))
+        .filter(|entry| entry.1 > 0.0)
+        .collect()
+}
+
+impl RayBatch {
+    fn append_points(&mut self, path: &Path) {
+        self.points_km.extend(path.points.iter().flatten());
+        self.segment_blocks
+            .extend(path.blocks.iter().map(|&block| block as i32));
+    }
+}

@@ -1,0 +1,192 @@
+//! Search over the whole model from one point: [`CoarseSearch`].
+//!
+//! Shortest paths on a graph of boundary nodes (Moser 1991), solved block by
+//! block: a visit relaxes all changed nodes of one block at once, blocks are
+//! visited in the order of their earliest pending node, and may be visited
+//! again, until nothing changes. The fixed point is that of Dijkstra's method.
+
+use crate::blocks::{Blocks, Cell};
+use crate::error::Result;
+use crate::frame::Chart;
+use crate::lattice::Lattice;
+use crate::monitor::Monitor;
+use crate::relax::{Changed, relax};
+use crate::search::buckets::BucketQueue;
+use crate::vec3::Vec3;
+
+/// Visits between two looks at the monitor.
+const VISITS_PER_CHECK: usize = 4096;
+
+/// The graph of one block model.
+#[derive(Debug)]
+pub struct CoarseSearch<'a, C> {
+    blocks: &'a Blocks<C>,
+    lattice: &'a Lattice,
+    slowness: Vec<f32>,
+    bucket_width_s: f32,
+    words: usize,
+}
+
+/// Arrival times of one search and the memory it works in.
+#[derive(Debug, Default)]
+pub struct CoarseField {
+    times: Vec<f32>,
+    pending: Vec<u64>,
+    queue: BucketQueue,
+    changed: Vec<Changed>,
+    old: Vec<f32>,
+    new: Vec<f32>,
+}
+
+impl CoarseField {
+    /// Arrival time (s) of every lattice node; infinite where not reached.
+    pub fn times(&self) -> &[f32] {
+        &self.times
+    }
+}
+
+impl<'a, C: Chart> CoarseSearch<'a, C> {
+    /// Prepares searches in `blocks` over the nodes of `lattice`.
+    pub fn new(blocks: &'a Blocks<C>, lattice: &'a Lattice) -> Self {
+        let slowness: Vec<f32> = blocks.slowness().iter().map(|&s| s as f32).collect();
+        let fastest = slowness.iter().copied().fold(f32::INFINITY, f32::min);
+        let narrowest = (0..3)
+            .flat_map(|axis| blocks.edges(axis).windows(2))
+            .map(|pair| pair[1] - pair[0])
+            .fold(f64::INFINITY, f64::min);
+        Self {
+            blocks,
+            lattice,
+            slowness,
+            bucket_width_s: fastest * narrowest as f32,
+            words: lattice.surface().len().div_ceil(64),
+        }
+    }
+
+    /// Fills `field` with arrival times from `source` (grid coordinates, km),
+    /// giving up beyond `limit_s`.
+    ///
+    /// # Errors
+    /// [`crate::error::CoreError::Interrupted`] when the monitor asks for it.
+    pub fn run(
+        &self,
+        source: Vec3,
+        limit_s: f32,
+        field: &mut CoarseField,
+        monitor: &Monitor,
+    ) -> Result<()> {
+        self.start(source, field);
+        let mut visits = 0;
+        while let Some(block) = field.queue.pop() {
+            self.visit(block, limit_s, field);
+            visits += 1;
+            if visits % VISITS_PER_CHECK == 0 {
+                monitor.check()?;
+            }
+        }
+        Ok(())
+    }
+
+    fn start(&self, source: Vec3, field: &mut CoarseField) {
+        let lanes = self.lattice.lanes();
+        field.times.clear();
+        field.times.resize(self.lattice.node_count(), f32::INFINITY);
+        field.pending.clear();
+        field.pending.resize(self.blocks.count() * self.words, 0);
+        field.queue.reset(self.blocks.count(), self.bucket_width_s);
+        field.old.resize(lanes, 0.0);
+        field.new.resize(lanes, 0.0);
+        for block in self.blocks.around(source) {
+            let cell = self.blocks.cell(block);
+            let base = self.lattice.base(cell);
+            for (number, node) in self.lattice.surface().iter().enumerate() {
+                let at = self.lattice.node_position(cell, number);
+                let time = self.blocks.chart().distance(at, source) * self.blocks.slowness_of(block);
+                if (time as f32) < field.times[base + node.offset] {
+                    field.times[base + node.offset] = time as f32;
+                    self.announce(cell, number, time as f32, field);
+                    field.pending[block as usize * self.words + number / 64] |= 1 << (number % 64);
+                    field.queue.lower(block, time as f32);
+                }
+            }
+        }
+    }
+
+    /// Marks a node as pending in the other blocks that share it.
+    #[inline]
+    fn announce(&self, cell: Cell, number: usize, time: f32, field: &mut CoarseField) {
+        for &(code, there) in &self.lattice.surface()[number].shared {
+            let Some(block) = self.displaced(cell, code) else {
+                continue;
+            };
+            let word = block as usize * self.words + usize::from(there) / 64;
+            field.pending[word] |= 1 << (there % 64);
+            field.queue.lower(block, time);
+        }
+    }
+
+    #[inline]
+    fn displaced(&self, cell: Cell, code: u8) -> Option<u32> {
+        let shift = [code / 9, code / 3 % 3, code % 3].map(usize::from);
+        let mut there = cell;
+        for axis in 0..3 {
+            let index = there[axis] + shift[axis];
+            if index == 0 || index > self.blocks.size(axis) {
+                return None;
+            }
+            there[axis] = index - 1;
+        }
+        Some(self.blocks.index(there))
+    }
+
+    fn visit(&self, block: u32, limit_s: f32, field: &mut CoarseField) {
+        let cell = self.blocks.cell(block);
+        let base = self.lattice.base(cell);
+        let surface = self.lattice.surface();
+        let (x, y, z) = split_shape(self.lattice.shape(cell), self.lattice.lanes());
+        for (time, node) in field.old.iter_mut().zip(surface) {
+            *time = field.times[base + node.offset];
+        }
+        field.new.copy_from_slice(&field.old);
+        field.changed.clear();
+        for word in 0..self.words {
+            let slot = block as usize * self.words + word;
+            let mut bits = std::mem::take(&mut field.pending[slot]);
+            while bits != 0 {
+                let number = word * 64 + bits.trailing_zeros() as usize;
+                bits &= bits - 1;
+                field.changed.push(Changed {
+                    at: [x[number], y[number], z[number]],
+                    time_s: field.old[number],
+                });
+            }
+        }
+        let slowness = self.slowness[block as usize];
+        relax(x, y, z, &field.changed, slowness, &mut field.new);
+        for (number, node) in surface.iter().enumerate() {
+            let time = field.new[number];
+            if time < field.old[number] && time <= limit_s {
+                field.times[base + node.offset] = time;
+                self.announce(cell, number, time, field);
+            }
+        }
+    }
+
+    /// The block model searched.
+    pub fn blocks(&self) -> &'a Blocks<C> {
+        self.blocks
+    }
+
+    /// The lattice searched.
+    pub fn lattice(&self) -> &'a Lattice {
+        self.lattice
+    }
+}
+
+/// Splits a shape table into its x, y and z lanes.
+#[inline]
+pub fn split_shape(shape: &[f32], lanes: usize) -> (&[f32], &[f32], &[f32]) {
+    let (x, rest) = shape.split_at(lanes);
+    let (y, z) = rest.split_at(lanes);
+    (x, y, z)
+}

@@ -1,0 +1,8 @@
+//! Shortest paths on graphs of boundary nodes: over the whole model from one
+//! point ([`coarse`]), and finer around one ray inside a proven bound
+//! ([`fine`]).
+
+pub mod backtrack;
+pub mod buckets;
+pub mod coarse;
+pub mod fine;
