@@ -1,3 +1,5 @@
+from collections.abc import Callable
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -36,3 +38,66 @@ class WavefrontTable:
     def at(
         self, distance_rad: NDArray[np.float64], depth_km: NDArray[np.float64]
     ) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]]: ...
+
+class BlockModel:
+    def __new__(
+        cls,
+        x_edges_km: NDArray[np.float64],
+        y_edges_km: NDArray[np.float64],
+        depth_edges_km: NDArray[np.float64],
+        slowness_s_per_km: NDArray[np.float64],
+        *,
+        radius_km: float | None = None,
+    ) -> BlockModel: ...
+
+class RayArrays:
+    @property
+    def traced(self) -> NDArray[np.bool_]: ...
+    @property
+    def time_s(self) -> NDArray[np.float64]: ...
+    @property
+    def outside_time_s(self) -> NDArray[np.float64]: ...
+    @property
+    def row_pointers(self) -> NDArray[np.int64]: ...
+    @property
+    def columns(self) -> NDArray[np.int32]: ...
+    @property
+    def lengths_km(self) -> NDArray[np.float64]: ...
+    @property
+    def point_offsets(self) -> NDArray[np.int64]: ...
+    @property
+    def points_km(self) -> NDArray[np.float64]: ...
+    @property
+    def segment_blocks(self) -> NDArray[np.int32]: ...
+
+def trace_between(
+    model: BlockModel,
+    sources_km: NDArray[np.float64],
+    receivers_km: NDArray[np.float64],
+    pairs: NDArray[np.uint32],
+    *,
+    method: str,
+    quality: str,
+    coarse_nodes: int | None = None,
+    threads: int | None = None,
+    progress: Callable[[int, int], object] | None = None,
+) -> RayArrays: ...
+def trace_distant(
+    model: BlockModel,
+    radial: RadialModel,
+    epicentres_km: NDArray[np.float64],
+    source_depths_km: NDArray[np.float64],
+    stations_km: NDArray[np.float64],
+    pairs: NDArray[np.uint32],
+    *,
+    quality: str,
+    coarse_nodes: int | None = None,
+    threads: int | None = None,
+    progress: Callable[[int, int], object] | None = None,
+) -> RayArrays: ...
+def straight_from_entries(
+    model: BlockModel,
+    entries_km: NDArray[np.float64],
+    outside_time_s: NDArray[np.float64],
+    stations_km: NDArray[np.float64],
+) -> RayArrays: ...

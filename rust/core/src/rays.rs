@@ -3,7 +3,7 @@
 use rayon::prelude::*;
 
 use crate::blocks::Blocks;
-use crate::earth::WavefrontTable;
+use crate::earth::{HIGHEST_KM, RadialModel, WavefrontTable};
 use crate::entry::{CornerTimes, EarthWave, Surface};
 use crate::error::{CoreError, Result};
 use crate::fermat::straight_path;
@@ -12,7 +12,7 @@ use crate::lattice::Lattice;
 use crate::monitor::Monitor;
 use crate::path::Path;
 use crate::tracer::{Beginning, Quality, Ray, Tracer};
-use crate::vec3::Vec3;
+use crate::vec3::{Vec3, dot};
 
 /// How a path is found.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -49,13 +49,89 @@ pub struct RayBatch {
     pub segment_blocks: Vec<i32>,
 }
 
-/// A distant event: its wave's table and its epicentre in grid coordinates (km).
-#[derive(Debug, Clone, Copy)]
-pub struct DistantEvent<'a> {
-    /// First arrivals from the event's depth.
-    pub table: &'a WavefrontTable,
-    /// Rotated longitude and latitude as arcs (km).
-    pub epicentre: [f64; 2],
+/// Margin (rad) around the distances of a model's corners, in a wave's table.
+const DISTANCE_MARGIN_RAD: f64 = 0.01;
+/// Distances (rad) between which the direct wave may enter a model.
+const ENTRY_DISTANCES_RAD: (f64, f64) = (0.30, 1.75);
+
+/// The waves of distant events on the way to a model.
+#[derive(Debug)]
+pub struct DistantWaves {
+    tables: Vec<Option<WavefrontTable>>,
+    epicentres: Vec<[f64; 2]>,
+}
+
+impl DistantWaves {
+    /// Tabulates the first arrivals of events at `epicentres` (grid coordinates,
+    /// km) and `depths_km`, in the part of the Earth that holds the model.
+    ///
+    /// # Errors
+    /// [`CoreError::Invalid`] if an event lies outside the radial model or the
+    /// arrays' lengths disagree.
+    pub fn new(
+        blocks: &Blocks<SphereChart>,
+        radial: &RadialModel,
+        epicentres: &[[f64; 2]],
+        depths_km: &[f64],
+    ) -> Result<Self> {
+        if epicentres.len() != depths_km.len() {
+            return Err(CoreError::invalid(
+                "source depths",
+                format!("{} values, one per epicentre", epicentres.len()),
+                depths_km.len().to_string(),
+            ));
+        }
+        let tables = epicentres
+            .par_iter()
+            .zip(depths_km)
+            .map(|(&epicentre, &depth_km)| wave_table(blocks, radial, epicentre, depth_km))
+            .collect::<Result<Vec<_>>>()?;
+        Ok(Self {
+            tables,
+            epicentres: epicentres.to_vec(),
+        })
+    }
+
+    /// Number of waves.
+    #[must_use]
+    pub fn len(&self) -> usize {
+        self.tables.len()
+    }
+
+    /// True without waves.
+    #[must_use]
+    pub fn is_empty(&self) -> bool {
+        self.tables.is_empty()
+    }
+}
+
+/// The table of one wave over the model's distances; `None` if they all lie
+/// outside those at which a direct wave may enter.
+fn wave_table(
+    blocks: &Blocks<SphereChart>,
+    radial: &RadialModel,
+    epicentre: [f64; 2],
+    depth_km: f64,
+) -> Result<Option<WavefrontTable>> {
+    let chart = blocks.chart();
+    let pole = chart.position([epicentre[0], epicentre[1], 0.0]);
+    let (mut near, mut far) = (f64::INFINITY, 0.0_f64);
+    for &x in blocks.edges(0) {
+        for &y in blocks.edges(1) {
+            let cosine = dot(pole, chart.position([x, y, 0.0])) / chart.radius_km().powi(2);
+            let distance = cosine.clamp(-1.0, 1.0).acos();
+            (near, far) = (near.min(distance), far.max(distance));
+        }
+    }
+    let near = (near - DISTANCE_MARGIN_RAD).max(ENTRY_DISTANCES_RAD.0);
+    let far = (far + DISTANCE_MARGIN_RAD).min(ENTRY_DISTANCES_RAD.1);
+    if near >= far {
+        return Ok(None);
+    }
+    let depths = blocks.edges(2);
+    let top_km = depths[0].max(-HIGHEST_KM);
+    let bottom_km = depths[depths.len() - 1].min(radial.bottom_depth_km());
+    WavefrontTable::build(radial, depth_km, top_km, bottom_km, near, far).map(Some)
 }
 
 /// Traces rays between points inside a model. `pairs` holds indices into
@@ -110,37 +186,46 @@ pub fn trace_between<C: Chart>(
 }
 
 /// Traces rays of distant events to stations inside a model. `pairs` holds
-/// indices into `events` and `stations` (grid coordinates, km).
+/// indices into `waves` and `stations` (grid coordinates, km).
 ///
 /// # Errors
 /// As [`trace_between`].
 pub fn trace_distant(
     blocks: &Blocks<SphereChart>,
-    events: &[DistantEvent<'_>],
+    waves: &DistantWaves,
     stations: &[Vec3],
     pairs: &[[u32; 2]],
     quality: Quality,
     monitor: &Monitor,
 ) -> Result<RayBatch> {
     check_inside(blocks, "station", stations)?;
-    check_pairs(pairs, events.len(), stations.len())?;
+    check_pairs(pairs, waves.len(), stations.len())?;
     monitor.set_total(pairs.len() as u64);
     let lattice = Lattice::new(blocks, quality.coarse_nodes);
     let surface = Surface::new(blocks, &lattice);
-    let waves: Vec<EarthWave<'_>> = events
+    let waves: Vec<Option<EarthWave<'_>>> = waves
+        .tables
         .iter()
-        .map(|event| EarthWave::new(event.table, blocks.chart(), event.epicentre))
+        .zip(&waves.epicentres)
+        .map(|(table, &epicentre)| {
+            table
+                .as_ref()
+                .map(|table| EarthWave::new(table, blocks.chart(), epicentre))
+        })
         .collect();
-    let corners: Vec<CornerTimes> = waves.par_iter().map(|wave| surface.sample(wave)).collect();
+    let corners: Vec<Option<CornerTimes>> = waves
+        .par_iter()
+        .map(|wave| wave.as_ref().map(|wave| surface.sample(wave)))
+        .collect();
     let tracer = Tracer::new(blocks, &lattice, Some(&surface), quality);
     let rays = per_group(pairs, 1, || tracer.workspace(), |workspace, members| {
         let beginnings: Vec<_> = members
             .iter()
             .map(|&member| {
                 let event = pairs[member][0] as usize;
-                Beginning::Wave {
-                    incoming: &waves[event],
-                    corners: &corners[event],
+                match (&waves[event], &corners[event]) {
+                    (Some(incoming), Some(corners)) => Beginning::Wave { incoming, corners },
+                    _ => Beginning::Nowhere,
                 }
             })
             .collect();

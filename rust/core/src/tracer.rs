@@ -88,6 +88,8 @@ pub enum Beginning<'a> {
         /// Its times at the surface's corners.
         corners: &'a CornerTimes,
     },
+    /// No direct wave comes.
+    Nowhere,
 }
 
 /// One traced ray.
@@ -209,8 +211,8 @@ impl<'a, C: Chart> Tracer<'a, C> {
     {
         let mut path = self.first_guess(receiver, beginning, workspace)?;
         workspace.refiner.set_incoming(match beginning {
-            Beginning::Point(_) => None,
             Beginning::Wave { incoming, .. } => Some(incoming),
+            Beginning::Point(_) | Beginning::Nowhere => None,
         });
         let graph_time = path.time(self.blocks);
         workspace.refiner.refine(&mut path, self.quality.first);
@@ -242,6 +244,7 @@ impl<'a, C: Chart> Tracer<'a, C> {
         workspace: &Workspace<'_, C>,
     ) -> Option<Path> {
         match beginning {
+            Beginning::Nowhere => None,
             Beginning::Point(point) => trace_back(&self.coarse, &workspace.coarse, receiver, point),
             Beginning::Wave { incoming, corners } => {
                 let surface = self.surface?;
@@ -270,6 +273,7 @@ impl<'a, C: Chart> Tracer<'a, C> {
         let scale = (stretched / graph_time) as f32;
         let mut limit_s = stretched + slack_s;
         let start = match beginning {
+            Beginning::Nowhere => return None,
             Beginning::Point(point) => Start::Point(point),
             Beginning::Wave { incoming, corners } => {
                 limit_s += workspace.refiner.outside_time(present) - corners.earliest_s;

@@ -7,11 +7,13 @@
 mod earth;
 mod gate;
 mod products;
+mod rays;
 
 use pyo3::prelude::*;
 
 #[pymodule]
 fn _core(module: &Bound<'_, PyModule>) -> PyResult<()> {
     earth::register(module)?;
-    products::register(module)
+    products::register(module)?;
+    rays::register(module)
 }

@@ -1,0 +1,243 @@
+"""Rays of distant events into a model."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import replace
+from typing import get_args
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from rayloom import _core
+from rayloom.earth import ReferenceEarth
+from rayloom.errors import InputError
+from rayloom.forward.core_arrays import block_model, checked_pairs, points_km, rays_of
+from rayloom.forward.local import require_choice
+from rayloom.forward.rays import Rays
+from rayloom.forward.settings import DistantMethod, Quality
+from rayloom.model import SlownessModel
+from rayloom.survey import Events, Stations
+
+Floats = NDArray[np.float64]
+Progress = Callable[[int, int], object]
+
+NEAREST_ENTRY_DEG = 25.0
+"""Closer than this the upper mantle's triplications make the incoming wave ambiguous."""
+
+OUTSIDE = "station outside the blocks"
+NO_WAVE = "no direct wave enters the blocks"
+TOO_NEAR = f"ray enters closer than {NEAREST_ENTRY_DEG:g}° to the event"
+
+
+def trace_distant(
+    model: SlownessModel,
+    earth: ReferenceEarth,
+    events: Events,
+    stations: Stations,
+    *,
+    pairs: ArrayLike | None = None,
+    phases: str | ArrayLike = "P",
+    method: DistantMethod = "bent",
+    quality: Quality = "standard",
+    face_nodes: int | None = None,
+    previous: Rays | None = None,
+    threads: int | None = None,
+    progress: Progress | None = None,
+) -> Rays:
+    """Trace first arrivals of distant events through a model to stations.
+
+    Outside the blocks the wave runs through the one-dimensional Earth; it enters
+    through the base or a side, wherever the sum of both times is least, but only
+    where it travels upwards and inwards, and nowhere closer than 25° to the event.
+
+    Parameters
+    ----------
+    model : SlownessModel
+        The blocks, on a sphere.
+    earth : ReferenceEarth
+        The Earth outside them.
+    events : Events
+        Geographic latitudes, longitudes and depths.
+    stations : Stations
+        Geographic latitudes, longitudes and depths of the sensors.
+    pairs : array_like of int, shape (k, 2), optional
+        Rows of event and station; all pairs, event by event, by default.
+    phases : str or array_like of str, shape (k,), optional
+        Phase of every pair; of the model's wave type.
+    method : {"bent", "reference", "straight"}
+        Rays of least time in the model; rays of least time in the reference model,
+        timed in the model; or chords from the reference rays' entry points.
+    quality : {"standard", "thorough"}
+        How close to the true first arrival a bent ray must come.
+    face_nodes : int, optional
+        Coarse graph nodes inside each block edge, and squared inside each face;
+        by default that of the quality (2 or 3).
+    previous : Rays, optional
+        Rays of the same pairs in a similar model; changes of course are counted.
+    threads : int, optional
+        Number of threads; all cores by default. The result does not depend on it.
+    progress : callable, optional
+        Told (rays done, rays in all).
+
+    Returns
+    -------
+    Rays
+        In the order of the pairs; a pair without a ray has NaN times, an empty row
+        and its reason counted in ``problems``.
+
+    Raises
+    ------
+    InputError
+        If the frame is flat, a phase does not belong to the model's wave type, or an
+        argument has a wrong form.
+    """
+    if model.grid.frame.is_flat:
+        raise InputError("distant events need a frame on the sphere", where="model")
+    require_choice("method", method, get_args(DistantMethod))
+    require_choice("quality", quality, get_args(Quality))
+    pair_rows = checked_pairs(pairs, len(events), len(stations))
+    _require_wave(model, phases, len(pair_rows))
+    traced_model = model if method == "bent" else model.with_slowness(model.reference)
+    rays = _first_arrivals(
+        traced_model, earth, events, stations, pair_rows, quality, face_nodes, threads, progress
+    )
+    if method == "straight":
+        rays = _chords(model, rays, stations, pair_rows)
+    if method != "bent":
+        rays = replace(rays, time_s=rays.predict_s(model.slowness_s_per_km))
+    if previous is not None:
+        rays = replace(rays, basin_jumps=rays.course_changes(previous))
+    return rays
+
+
+def _require_wave(model: SlownessModel, phases: str | ArrayLike, count: int) -> None:
+    names = np.unique(np.asarray(phases, dtype=str))
+    if np.ndim(phases) > 0 and np.shape(phases) != (count,):
+        raise InputError(
+            f"expected one phase per pair ({count}), got shape {np.shape(phases)}", where="phases"
+        )
+    foreign = [str(name) for name in names if name != model.wave]
+    if foreign:
+        raise InputError(
+            f"phase {foreign[0]!r} does not fit a model of {model.wave} velocity; "
+            f"expected {model.wave!r}",
+            where="phases",
+        )
+
+
+def station_points(model: SlownessModel, stations: Stations) -> Floats:
+    """Place stations in a model's frame.
+
+    Returns
+    -------
+    ndarray, shape (n, 3)
+        x, y in degrees and depth_km (negative above sea level).
+    """
+    x, y = model.grid.frame.local_coordinates(stations.longitude_deg, stations.latitude_deg)
+    return np.column_stack([x, y, stations.depth_km])
+
+
+def _first_arrivals(
+    model: SlownessModel,
+    earth: ReferenceEarth,
+    events: Events,
+    stations: Stations,
+    pairs: NDArray[np.uint32],
+    quality: Quality,
+    face_nodes: int | None,
+    threads: int | None,
+    progress: Progress | None,
+) -> Rays:
+    grid = model.grid
+    points = station_points(model, stations)
+    inside = grid.locate(points) >= 0
+    used = inside[pairs[:, 1]]
+    epicentre_x, epicentre_y = grid.frame.local_coordinates(
+        events.longitude_deg, events.latitude_deg
+    )
+    epicentres = points_km(grid, np.column_stack([epicentre_x, epicentre_y, events.depth_km]))
+    anywhere = points_km(grid, np.where(inside[:, None], points, grid.centres[0]))
+    arrays = _core.trace_distant(
+        block_model(model),
+        earth.mantle_model(model.wave),
+        np.ascontiguousarray(epicentres[:, :2]),
+        np.ascontiguousarray(events.depth_km, dtype=np.float64),
+        anywhere,
+        np.ascontiguousarray(pairs[used]),
+        quality=quality,
+        coarse_nodes=face_nodes,
+        threads=threads,
+        progress=progress,
+    )
+    rays = rays_of(grid, arrays)
+    far_enough = _entry_distance_deg(rays, events, pairs[used]) >= NEAREST_ENTRY_DEG
+    problems = {
+        OUTSIDE: int((~used).sum()),
+        NO_WAVE: int((~rays.traced).sum()),
+        TOO_NEAR: int((rays.traced & ~far_enough).sum()),
+    }
+    kept = rays.traced & far_enough
+    return replace(
+        _spread(rays, used, kept),
+        problems={reason: number for reason, number in problems.items() if number},
+    )
+
+
+def _entry_distance_deg(rays: Rays, events: Events, pairs: NDArray[np.uint32]) -> Floats:
+    frame = rays.grid.frame
+    entry = rays.entry
+    event_x, event_y = frame.local_coordinates(events.longitude_deg, events.latitude_deg)
+    here = frame.unit_vectors(entry[:, 0], entry[:, 1])
+    there = frame.unit_vectors(event_x, event_y)[pairs[:, 0]]
+    cosine = np.clip(np.sum(here * there, axis=1), -1.0, 1.0)
+    return np.asarray(np.degrees(np.arccos(cosine)))
+
+
+def _spread(rays: Rays, used: NDArray[np.bool_], kept: NDArray[np.bool_]) -> Rays:
+    """Bring rays of the used pairs into the order of all pairs, keeping some."""
+    if used.all() and kept.all():
+        return rays
+    from scipy.sparse import csr_array
+
+    count = len(used)
+    target = np.flatnonzero(used)
+    time_s = np.full(count, np.nan)
+    outside_time_s = np.full(count, np.nan)
+    traced = np.zeros(count, dtype=bool)
+    time_s[target[kept]] = rays.time_s[kept]
+    outside_time_s[target[kept]] = rays.outside_time_s[kept]
+    traced[target[kept]] = True
+    stored = np.zeros(count, dtype=np.int64)
+    stored[target] = np.where(kept, np.diff(rays.path_lengths.indptr), 0)
+    chosen = rays.path_lengths[np.flatnonzero(kept)]
+    indptr = np.concatenate([[0], np.cumsum(stored)])
+    path_lengths = csr_array(
+        (chosen.data, chosen.indices, indptr), shape=(count, rays.grid.block_count)
+    )
+    point_counts = np.zeros(count, dtype=np.int64)
+    point_counts[target] = np.where(kept, np.diff(rays.point_offsets), 0)
+    keep_point = np.repeat(kept, np.diff(rays.point_offsets))
+    return Rays(
+        grid=rays.grid,
+        time_s=time_s,
+        outside_time_s=outside_time_s,
+        path_lengths=path_lengths,
+        traced=traced,
+        point_offsets=np.concatenate([[0], np.cumsum(point_counts)]),
+        all_points=rays.all_points[keep_point],
+    )
+
+
+def _chords(
+    model: SlownessModel, rays: Rays, stations: Stations, pairs: NDArray[np.uint32]
+) -> Rays:
+    grid = model.grid
+    points = station_points(model, stations)[pairs[:, 1]]
+    arrays = _core.straight_from_entries(
+        block_model(model),
+        points_km(grid, rays.entry),
+        np.ascontiguousarray(rays.outside_time_s),
+        points_km(grid, points),
+    )
+    return rays_of(grid, arrays, problems=rays.problems)

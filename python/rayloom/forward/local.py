@@ -1,0 +1,116 @@
+"""Rays between points inside a model."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import get_args
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from rayloom import _core
+from rayloom.errors import InputError
+from rayloom.forward.core_arrays import (
+    block_model,
+    checked_pairs,
+    checked_points,
+    points_km,
+    rays_of,
+)
+from rayloom.forward.rays import Rays
+from rayloom.forward.settings import LocalMethod, Quality
+from rayloom.model import BlockGrid, SlownessModel
+
+Progress = Callable[[int, int], object]
+
+
+def trace(
+    model: SlownessModel,
+    sources: ArrayLike,
+    receivers: ArrayLike,
+    *,
+    pairs: ArrayLike | None = None,
+    method: LocalMethod = "bent",
+    quality: Quality = "standard",
+    face_nodes: int | None = None,
+    threads: int | None = None,
+    progress: Progress | None = None,
+) -> Rays:
+    """Trace first arrivals between points inside a model.
+
+    Parameters
+    ----------
+    model : SlownessModel
+        The blocks.
+    sources : array_like, shape (n, 3)
+        x, y (degrees, or km in a flat frame) and depth_km.
+    receivers : array_like, shape (m, 3)
+        Likewise.
+    pairs : array_like of int, shape (k, 2), optional
+        Rows of source and receiver; all pairs, source by source, by default.
+    method : {"bent", "graph", "straight"}
+        The ray of least time, the raw path of the coarse graph, or the chord.
+    quality : {"standard", "thorough"}
+        How close to the true first arrival a bent ray must come.
+    face_nodes : int, optional
+        Coarse graph nodes inside each block edge, and squared inside each face;
+        by default that of the quality (2 or 3).
+    threads : int, optional
+        Number of threads; all cores by default. The result does not depend on it.
+    progress : callable, optional
+        Told (rays done, rays in all).
+
+    Returns
+    -------
+    Rays
+        In the order of the pairs.
+
+    Raises
+    ------
+    InputError
+        If a point lies outside the model, or an argument has a wrong form.
+
+    References
+    ----------
+    Moser, T. J. (1991). Shortest path calculation of seismic rays. Geophysics 56, 59-67.
+    """
+    source_points = _inside("sources", model.grid, sources)
+    receiver_points = _inside("receivers", model.grid, receivers)
+    require_choice("method", method, get_args(LocalMethod))
+    require_choice("quality", quality, get_args(Quality))
+    arrays = _core.trace_between(
+        block_model(model),
+        points_km(model.grid, source_points),
+        points_km(model.grid, receiver_points),
+        checked_pairs(pairs, len(source_points), len(receiver_points)),
+        method=method,
+        quality=quality,
+        coarse_nodes=face_nodes,
+        threads=threads,
+        progress=progress,
+    )
+    return rays_of(model.grid, arrays)
+
+
+def require_choice(name: str, value: str, allowed: tuple[str, ...]) -> None:
+    """Refuse a value that is not one of those allowed.
+
+    Raises
+    ------
+    InputError
+        If it is not.
+    """
+    if value not in allowed:
+        raise InputError(f"expected one of {', '.join(allowed)}; got {value!r}", where=name)
+
+
+def _inside(name: str, grid: BlockGrid, points: ArrayLike) -> np.ndarray:
+    array = checked_points(name, points)
+    outside = np.flatnonzero(grid.locate(array) < 0)
+    if outside.size:
+        raise InputError(
+            f"row {outside[0]} {array[outside[0]].tolist()} lies outside the blocks; "
+            "move the point or extend the grid",
+            where=name,
+        )
+    return array
