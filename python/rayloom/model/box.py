@@ -21,6 +21,9 @@ THICKEST_KM: Final = 20.0
 PADDING_RATIO: Final = 1.3
 """Width of a padding block in widths of the one before it, until the greatest width."""
 
+WHOLE_BLOCKS: Final = 1e-2
+"""Share of a block that a station may lie beyond a whole number of blocks."""
+
 DEGREE_DIGITS: Final = 2
 """Decimals of edges in degrees, so that a settings file stays readable."""
 
@@ -85,7 +88,7 @@ class Box:
 
     def _axis(self, half_deg: float, step_deg: float) -> list[float | EdgeSegment]:
         """Lay equal blocks over the stations and half a block more, widening ones outside."""
-        count = int(np.ceil(2.0 * half_deg / step_deg)) + 1
+        count = int(np.ceil(2.0 * half_deg / step_deg - WHOLE_BLOCKS)) + 1
         inner = round(0.5 * count * step_deg, DEGREE_DIGITS + 1)
         outer = [inner]
         width = step_deg
