@@ -12,7 +12,7 @@ from typing import Final
 import numpy as np
 
 from rayloom.survey.notices import Notice
-from rayloom.survey.tables import FloatArray, TextArray, TimeArray
+from rayloom.survey.tables import BoolArray, FloatArray, TextArray, TimeArray
 from rayloom.survey.text_table import TextTable
 
 _TIME: Final = re.compile(
@@ -50,7 +50,7 @@ class Span:
     hint: str = ""
     above: bool = False
 
-    def holds(self, values: FloatArray) -> np.ndarray[tuple[int], np.dtype[np.bool_]]:
+    def holds(self, values: FloatArray) -> BoolArray:
         """Whether each value lies within."""
         low = values > self.low if self.above else values >= self.low
         return np.asarray(low & (values <= self.high))
@@ -160,7 +160,7 @@ class ColumnReader:
         self,
         name: str,
         cells: list[str],
-        good: np.ndarray[tuple[int], np.dtype[np.bool_]],
+        good: BoolArray,
         expected: Callable[[str], str],
     ) -> None:
         for row in np.flatnonzero(~good):

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Final
 import numpy as np
 
 from rayloom.survey.notices import Notice
-from rayloom.survey.tables import IndexArray, TextArray, TimeArray
+from rayloom.survey.tables import BoolArray, IndexArray, TextArray, TimeArray
 from rayloom.survey.text_table import Problems
 
 if TYPE_CHECKING:
@@ -150,9 +150,7 @@ class EpochFinder:
             f"{_day(self.stations.start[row])} to {_day(self.stations.end[row])}" for row in rows
         )
 
-    def _holds(
-        self, rows: IndexArray, time: TimeArray | np.datetime64
-    ) -> np.ndarray[tuple[int], np.dtype[np.bool_]]:
+    def _holds(self, rows: IndexArray, time: TimeArray | np.datetime64) -> BoolArray:
         inside = (self._start[rows] <= time) & (time < self._end[rows])
         return np.asarray(inside | np.isnat(time))
 
