@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Final
+from typing import TYPE_CHECKING, Final
 
 import numpy as np
 from numpy.typing import NDArray
 
 from rayloom.errors import InputError
 from rayloom.model.frame import Frame
-from rayloom.survey import Survey
 from rayloom.units import EARTH_RADIUS_KM, KM_PER_DEGREE
+
+if TYPE_CHECKING:
+    from rayloom.survey import Survey
 
 Floats = NDArray[np.float64]
 

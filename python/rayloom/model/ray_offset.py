@@ -8,10 +8,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rayloom.errors import InputError
-from rayloom.survey import Survey
 
 if TYPE_CHECKING:
     from rayloom.earth import ReferenceEarth
+    from rayloom.survey import Survey
 
 Floats = NDArray[np.float64]
 

@@ -12,11 +12,11 @@ from rayloom.model.grid import BlockGrid
 from rayloom.model.network import NetworkExtent, network_extent
 from rayloom.model.ray_offset import ray_offset_deg
 from rayloom.model.settings import GridSettings, SuggestionSettings
-from rayloom.survey import Survey
 from rayloom.units import KM_PER_DEGREE
 
 if TYPE_CHECKING:
     from rayloom.earth import ReferenceEarth
+    from rayloom.survey import Survey
 
 DEPTH_PER_APERTURE: Final = 0.8
 SHALLOWEST_BASE_KM: Final = 150.0
