@@ -104,6 +104,13 @@ def test_bad_event_cell_is_named(tmp_path: Path, row: str, column: str) -> None:
     assert "expected" in problems[0]
 
 
+@pytest.mark.parametrize("code", ["A" * 65, '"A\nB"', "A\x07"])
+def test_codes_are_short_and_printable(tmp_path: Path, code: str) -> None:
+    problems = station_problems(tmp_path, f"{STATION_HEAD}XA,{code},10,20,0\n")
+    assert problems[0].startswith("line 2, column station: 'A")
+    assert "64 printable characters" in problems[0]
+
+
 def test_all_problems_of_a_file_come_at_once_in_line_order(tmp_path: Path) -> None:
     text = STATION_HEAD + "XA,A,ten,20,0\nXA,B,1,2\nXA,C,1,999,x\nXA,D,1,2,3,4\n"
     problems = station_problems(tmp_path, text)
@@ -173,7 +180,7 @@ def test_repeated_station_is_joined_and_moved_one_is_a_problem(tmp_path: Path) -
     notices: list[Notice] = []
     again = STATION_HEAD + "XA,A,1,2,3\nXA,B,1,2,3\nXA,A,1.0,2,3\n"
     assert len(read_stations(written(tmp_path, again), notices=notices)) == 2
-    assert "lines 2 and 4" in notices[0].detail
+    assert "XA.A 2 and 4" in notices[0].detail
     problems = station_problems(tmp_path, STATION_HEAD + "XA,A,1,2,3\nXA,A,1.1,2,3\n")
     assert problems[0].startswith("line 3, station XA.A: stands at another position in line 2")
 
@@ -275,9 +282,9 @@ def test_repeated_picks_drop_when_equal_and_stay_when_not(tmp_path: Path) -> Non
     rows = row + row + row.replace("15:00Z", "15:05Z")
     picks = picks_of(tmp_path, PICK_HEAD + rows, notices)
     assert len(picks) == 2
-    assert {notice.what for notice in notices} == {"repeated_row", "conflicting_rows"}
+    assert {notice.what for notice in notices} == {"repeated_rows", "conflicting_rows"}
     details = {notice.what: notice.detail for notice in notices}
-    assert "lines 2 and 3" in details["repeated_row"]
+    assert "lines 2 and 3" in details["repeated_rows"]
     assert "lines 2 and 4" in details["conflicting_rows"]
     assert "e1 XA ALP P" in {notice.who for notice in notices}
 

@@ -24,6 +24,8 @@ _TIME: Final = re.compile(
 _FIRST_YEAR: Final = 1700
 _LAST_YEAR: Final = 2261
 _NO_TIME: Final = np.datetime64("NaT", "ns")
+_CODE_LENGTH: Final = 64
+_CODE: Final = f"a code of at most {_CODE_LENGTH} printable characters"
 _MOMENT: Final = "a UTC time such as 2021-03-07T04:05:06.78Z"
 _DAY: Final = "a UTC day or time such as 2021-03-07 or 2021-03-07T04:05:06Z"
 
@@ -79,19 +81,18 @@ class ColumnReader:
         """Whether the table has the column."""
         return name in self.table.columns
 
-    def text(self, name: str, *, optional: bool = False) -> TextArray:
-        """Return a column of codes; a blank cell is a problem unless optional.
+    def text(self, name: str) -> TextArray:
+        """Return a column of codes; a blank or odd cell is a problem.
 
         Returns
         -------
         (n,) str array
         """
-        cells = self._cells(name, optional=optional)
-        if self.has(name) and not optional:
-            for line, cell in zip(self.table.lines, cells, strict=True):
-                if not cell:
-                    self.problems.add(line, f"column {name}: blank; expected a code")
-        return np.array(cells, dtype=np.str_)
+        cells = self._cells(name)
+        if self.has(name):
+            good = np.array([_is_code(cell) for cell in cells], dtype=bool)
+            self._note_bad(name, cells, good, lambda _cell: _CODE)
+        return np.array([cell[:_CODE_LENGTH] for cell in cells], dtype=np.str_)
 
     def number(
         self, name: str, span: Span, *, optional: bool = False, missing: float = math.nan
@@ -102,7 +103,7 @@ class ColumnReader:
         -------
         (n,) float array
         """
-        cells = self._cells(name, optional=optional)
+        cells = self._cells(name)
         blank = np.array([not cell for cell in cells], dtype=bool)
         values = np.array([_number(cell) for cell in cells], dtype=np.float64)
         good = np.isfinite(values) & span.holds(values)
@@ -123,7 +124,7 @@ class ColumnReader:
         -------
         (n,) datetime64[ns] array
         """
-        cells = self._cells(name, optional=optional)
+        cells = self._cells(name)
         values = np.array([_moment(cell, day_alone) for cell in cells], dtype="datetime64[ns]")
         good = ~np.isnat(values)
         if optional:
@@ -153,7 +154,7 @@ class ColumnReader:
                 found = ", ".join(self.table.columns)
                 self.problems.add(1, f"column {name} is missing{guess} (found: {found})")
 
-    def _cells(self, name: str, *, optional: bool) -> list[str]:
+    def _cells(self, name: str) -> list[str]:
         return self.table.columns.get(name) or [""] * len(self.table)
 
     def _note_bad(
@@ -177,6 +178,10 @@ def _close(name: str, spare: Sequence[str], *, cutoff: float) -> str:
     starts = [other for other in spare if len(other) >= 3 and name.startswith(other)]
     close = starts or difflib.get_close_matches(name, spare, n=1, cutoff=cutoff)
     return close[0] if close else ""
+
+
+def _is_code(cell: str) -> bool:
+    return 0 < len(cell) <= _CODE_LENGTH and cell.isprintable()
 
 
 def _number(cell: str) -> float:

@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Literal
+from typing import Final, Literal
 
 Severity = Literal["info", "warning"]
+
+_SHOWN: Final = 5
 
 
 @dataclass(frozen=True)
@@ -31,3 +34,10 @@ class Notice:
 
     def __str__(self) -> str:
         return f"{self.severity}: {self.who}: {self.detail}"
+
+
+def few(items: Sequence[object]) -> str:
+    """Write out the first few items and how many more there are."""
+    named = ", ".join(str(item) for item in items[:_SHOWN])
+    rest = len(items) - _SHOWN
+    return f"{named} and {rest} more" if rest > 0 else named
