@@ -125,9 +125,9 @@ def test_all_problems_of_a_file_come_at_once_in_line_order(tmp_path: Path) -> No
 
 
 def test_missing_columns_are_listed_with_a_guess(tmp_path: Path) -> None:
-    problems = station_problems(tmp_path, "network,stat,lat,longitude,elevation\nXA,A,1,2,x\n")
+    problems = station_problems(tmp_path, "network,stn,lat,longitude,elevation\nXA,A,1,2,x\n")
     assert len(problems) == 3
-    assert "column station is missing; did you mean 'station' by 'stat'?" in problems[0]
+    assert "column station is missing; did you mean 'station' by 'stn'?" in problems[0]
     assert "did you mean 'latitude' by 'lat'?" in problems[1]
     assert "did you mean 'elevation_m' by 'elevation'?" in problems[2]
 

@@ -135,24 +135,42 @@ class ColumnReader:
 
     def misspelt(self, optional: Sequence[str], known: Sequence[str]) -> list[Notice]:
         """Point at unused columns whose names come close to an absent optional one."""
-        notices = []
-        spare = [name for name in self.table.columns if name not in known]
-        for name in optional:
-            close = [] if self.has(name) else _close(name, spare, cutoff=0.7)
-            if close:
-                detail = f"column {close!r} is not used; did you mean {name!r}?"
-                notices.append(Notice("warning", "unused_column", self.table.source, detail))
-        return notices
+        guesses = self._guesses(optional, known, cutoff=0.7)
+        return [
+            Notice(
+                "warning",
+                "unused_column",
+                self.table.source,
+                f"column {close!r} is not used; did you mean {name!r}?",
+            )
+            for name, close in guesses.items()
+        ]
 
     def require(self, names: Sequence[str], known: Sequence[str]) -> None:
         """Note each missing column, with the unused one that comes closest."""
-        spare = [name for name in self.table.columns if name not in known]
+        guesses = self._guesses(names, known, cutoff=0.5)
+        found = ", ".join(self.table.columns)
         for name in names:
             if not self.has(name):
-                close = _close(name, spare, cutoff=0.5)
-                guess = f"; did you mean {name!r} by {close!r}?" if close else ""
-                found = ", ".join(self.table.columns)
+                guess = f"; did you mean {name!r} by {guesses[name]!r}?" if name in guesses else ""
                 self.problems.add(1, f"column {name} is missing{guess} (found: {found})")
+
+    def _guesses(
+        self, names: Sequence[str], known: Sequence[str], *, cutoff: float
+    ) -> dict[str, str]:
+        """Pair absent columns with unused ones, closest pair first, each used once."""
+        pairs = [
+            (_closeness(name, other), name, other)
+            for name in names
+            if not self.has(name)
+            for other in self.table.columns
+            if other not in known
+        ]
+        guesses: dict[str, str] = {}
+        for closeness, name, other in sorted(pairs, reverse=True):
+            if closeness >= cutoff and name not in guesses and other not in guesses.values():
+                guesses[name] = other
+        return guesses
 
     def _cells(self, name: str) -> list[str]:
         return self.table.columns.get(name) or [""] * len(self.table)
@@ -173,11 +191,11 @@ class ColumnReader:
             )
 
 
-def _close(name: str, spare: Sequence[str], *, cutoff: float) -> str:
-    """Return the spare name closest to a wanted one, or an empty text."""
-    starts = [other for other in spare if len(other) >= 3 and name.startswith(other)]
-    close = starts or difflib.get_close_matches(name, spare, n=1, cutoff=cutoff)
-    return close[0] if close else ""
+def _closeness(name: str, other: str) -> float:
+    """Likeness of two column names, 0 to 1; an abbreviation of three letters or more is 1."""
+    if len(other) >= 3 and name.startswith(other):
+        return 1.0
+    return difflib.SequenceMatcher(None, name, other).ratio()
 
 
 def _is_code(cell: str) -> bool:
