@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import secrets
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from pathlib import Path
 
 from rayloom.errors import FileAccessError
@@ -47,7 +47,8 @@ def replacing(path: str | Path) -> Iterator[Path]:
             "check that the folder exists, is writable and has room"
         ) from error
     finally:
-        temporary.unlink(missing_ok=True)
+        with suppress(OSError):
+            temporary.unlink()
 
 
 def write_text(path: str | Path, text: str) -> None:

@@ -294,7 +294,7 @@ def _round_values(low: float, high: float, *, most: int, in_degrees: bool = Fals
 
     steps = [1, 1.5, 3, 4.5, 6, 9, 10] if in_degrees and high - low > 60.0 else [1, 2, 5, 10]
     values = np.asarray(MaxNLocator(most, steps=steps).tick_values(low, high))
-    margin = 0.03 * (high - low)
+    margin = 0.06 * (high - low)
     return values[(values >= low + margin) & (values <= high - margin)]
 
 

@@ -334,8 +334,14 @@ def _draw_histogram(
     axes.spines[["top", "right"]].set_visible(False)
     axes.set_title("(b)", loc="left", fontweight="bold", pad=4)
     axes.set_ylim(0.0, 1.12 * axes.get_ylim()[1])
-    axes.set_title(
-        _histogram_note(before, after, reach, kept, trusted), loc="right", fontsize=6, pad=4
+    axes.text(
+        1.0,
+        0.97,
+        _histogram_note(before, after, reach, kept, trusted),
+        transform=axes.transAxes,
+        ha="right",
+        va="top",
+        fontsize=6,
     )
     axes.legend(loc="upper left", borderpad=0, handlelength=1.4)
 
@@ -350,7 +356,7 @@ def _histogram_note(
     beyond = int(np.sum(np.abs(before) > reach)), int(np.sum(np.abs(after) > reach))
     remarks = []
     if trusted.sum() < kept.sum():
-        remarks.append(f"RMS without {kept.sum() - trusted.sum()} suspected outliers")
+        remarks.append(f"RMS without\n{kept.sum() - trusted.sum()} suspected\noutliers")
     if any(beyond):
-        remarks.append(f"beyond the axis: {beyond[0]} before, {beyond[1]} after")
-    return "; ".join(remarks)
+        remarks.append(f"beyond the axis:\n{beyond[0]} before,\n{beyond[1]} after")
+    return "\n".join(remarks)
