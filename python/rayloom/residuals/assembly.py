@@ -260,8 +260,8 @@ def _lost_events(selection: Selection, readings: Readings, events: Events) -> li
         rows = np.flatnonzero(readings.event_index == event)
         reasons = sorted({selection.reason[row] for row in rows})
         detail = (
-            f"all {len(rows)} picks are left out ({', '.join(reasons)}); "
-            f"for example: {selection.detail[rows[0]]}"
+            f"event {events.event[event]}: all {len(rows)} picks are left out "
+            f"({', '.join(reasons)}); for example: {selection.detail[rows[0]]}"
         )
         notices.append(Notice("warning", "event_left_out", str(events.event[event]), detail))
     return notices

@@ -23,6 +23,9 @@ from rayloom.survey.tables import (
 from rayloom.survey.text_table import TextTable, read_text_table
 from rayloom.survey.uncertainty import read_uncertainty
 
+_TYPICAL_TRAVEL: Final = np.timedelta64(720, "s")
+"""Time after the origin at which the epoch of a station is looked up."""
+
 RESIDUAL: Final = Span(-3600.0, 3600.0, "s", "observed minus predicted, in seconds")
 
 _REQUIRED: Final = ("event", "network", "station", "phase", "residual_s")
@@ -71,7 +74,7 @@ def read_ready_residuals(
     settings: SurveySettings,
     notices: list[Notice],
 ) -> Readings:
-    """Read a residuals file (CSV); a station's epoch is that of the origin time.
+    """Read a residuals file (CSV); a station's epoch is that of a typical arrival.
 
     Raises
     ------
@@ -86,9 +89,10 @@ def read_ready_residuals(
     event, network, station = (reader.text(name) for name in ("event", "network", "station"))
     event_index = find_events(event, events, table.lines, table.problems)
     origin = np.where(event_index >= 0, events.time[event_index], np.datetime64("NaT", "ns"))
+    arrival = origin + _TYPICAL_TRAVEL
     readings = Readings(
         event_index,
-        find_stations(network, station, origin, stations, table.lines, table.problems),
+        find_stations(network, station, arrival, stations, table.lines, table.problems),
         reader.text("phase"),
         reader.number("residual_s", RESIDUAL),
         read_uncertainty(reader, settings, notices),

@@ -141,7 +141,7 @@ class ColumnReader:
                 "warning",
                 "unused_column",
                 self.table.source,
-                f"column {close!r} is not used; did you mean {name!r}?",
+                f"column {close!r} of {self.table.source} is not used; did you mean {name!r}?",
             )
             for name, close in guesses.items()
         ]

@@ -72,7 +72,8 @@ def tidy_epochs(
                 )
     if joined:
         detail = (
-            f"{len(joined)} rows give a station's position again at overlapping times; "
+            f"{len(joined)} rows of {problems.source} give a station's position again at "
+            "overlapping times; "
             f"taken as one station each ({problems.place}s: {few(joined)})"
         )
         notices.append(Notice("info", "repeated_stations", problems.source, detail))

@@ -24,7 +24,7 @@ class Notice:
     who : str
         The station, event or file concerned.
     detail : str
-        The remark in one sentence, with its numbers.
+        The remark in one sentence that stands alone: who, and the numbers.
     """
 
     severity: Severity
@@ -33,7 +33,7 @@ class Notice:
     detail: str
 
     def __str__(self) -> str:
-        return f"{self.severity}: {self.who}: {self.detail}"
+        return f"{self.severity}: {self.detail}"
 
 
 def few(items: Sequence[object]) -> str:

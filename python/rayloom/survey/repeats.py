@@ -50,11 +50,14 @@ def drop_repeats(
             equal.append(pair)
         else:
             detail = (
-                f"{place}s {pair} of {table.source} differ; the one closer to its event's median "
-                "residual will be used"
+                f"{names[row]}: {place}s {pair} of {table.source} differ; the one closer to its "
+                "event's median residual will be used"
             )
             notices.append(Notice("warning", "conflicting_rows", names[row], detail))
     if equal:
-        detail = f"{len(equal)} rows repeat earlier ones and are dropped ({place}s {few(equal)})"
+        detail = (
+            f"{len(equal)} rows of {table.source} repeat earlier ones and are dropped "
+            f"({place}s {few(equal)})"
+        )
         notices.append(Notice("info", "repeated_rows", table.source, detail))
     return kept
