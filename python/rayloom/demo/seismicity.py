@@ -137,7 +137,8 @@ def _mislocated(true: Events, rng: np.random.Generator) -> Events:
     """Give hypocentres and origin times the usual errors of a catalogue."""
     count = len(true.event)
     east_km, north_km = rng.normal(0.0, HORIZONTAL_ERROR_KM, (2, count))
-    depth_km = np.maximum(true.depth_km + rng.normal(0.0, DEPTH_ERROR_KM, count), 1.0)
+    depth_km: Floats = true.depth_km + rng.normal(0.0, DEPTH_ERROR_KM, count)
+    depth_km = np.maximum(np.round(depth_km, 1), 1.0).astype(np.float64)
     origin_s = rng.normal(0.0, ORIGIN_ERROR_S, count)
     origin_s += ORIGIN_PER_DEPTH_S_PER_KM * (depth_km - true.depth_km)
     latitude_deg = true.latitude_deg + north_km / KM_PER_DEGREE
@@ -148,11 +149,11 @@ def _mislocated(true: Events, rng: np.random.Generator) -> Events:
         time=_later(true.time, np.round(origin_s, 2)),
         latitude_deg=np.round(latitude_deg, 3),
         longitude_deg=np.round(longitude_deg, 3),
-        depth_km=np.round(depth_km, 1),
+        depth_km=depth_km,
         magnitude=true.magnitude,
     )
 
 
 def _later(time: NDArray[np.datetime64], shift_s: Floats) -> NDArray[np.datetime64]:
     """Shift times by seconds."""
-    return time + np.round(shift_s * 1e9).astype("timedelta64[ns]")
+    return np.asarray(time + np.round(shift_s * 1e9).astype("timedelta64[ns]"))

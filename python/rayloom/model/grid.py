@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import TYPE_CHECKING, Self
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -10,6 +11,9 @@ from numpy.typing import ArrayLike, NDArray
 from rayloom.errors import InputError
 from rayloom.model.frame import Frame
 from rayloom.units import EARTH_RADIUS_KM
+
+if TYPE_CHECKING:
+    from rayloom.model.settings import GridSettings
 
 Floats = NDArray[np.float64]
 
@@ -70,6 +74,27 @@ class BlockGrid:
             ("depth_edges_km", depth_edges_km, -np.inf, depth_limit),
         ):
             object.__setattr__(self, name, _rising(name, edges, low=low, high=high))
+
+    @classmethod
+    def from_spec(cls, spec: GridSettings) -> Self:
+        """Build the grid that settings describe.
+
+        Parameters
+        ----------
+        spec : GridSettings
+            Place and edges.
+
+        Returns
+        -------
+        BlockGrid
+            The same grid for the same settings, bit for bit.
+
+        Raises
+        ------
+        InputError
+            If the edges do not rise or leave the sphere.
+        """
+        return cls(spec.place(), *spec.edges())
 
     def __eq__(self, other: object) -> bool:
         if not isinstance(other, BlockGrid):

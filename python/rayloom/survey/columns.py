@@ -12,7 +12,7 @@ from typing import Final
 import numpy as np
 
 from rayloom.survey.notices import Notice
-from rayloom.survey.tables import FloatArray, TextArray, TimeArray
+from rayloom.survey.tables import BoolArray, FloatArray, TextArray, TimeArray
 from rayloom.survey.text_table import TextTable
 
 _TIME: Final = re.compile(
@@ -24,6 +24,8 @@ _TIME: Final = re.compile(
 _FIRST_YEAR: Final = 1700
 _LAST_YEAR: Final = 2261
 _NO_TIME: Final = np.datetime64("NaT", "ns")
+_CODE_LENGTH: Final = 64
+_CODE: Final = f"a code of at most {_CODE_LENGTH} printable characters"
 _MOMENT: Final = "a UTC time such as 2021-03-07T04:05:06.78Z"
 _DAY: Final = "a UTC day or time such as 2021-03-07 or 2021-03-07T04:05:06Z"
 
@@ -50,7 +52,7 @@ class Span:
     hint: str = ""
     above: bool = False
 
-    def holds(self, values: FloatArray) -> np.ndarray[tuple[int], np.dtype[np.bool_]]:
+    def holds(self, values: FloatArray) -> BoolArray:
         """Whether each value lies within."""
         low = values > self.low if self.above else values >= self.low
         return np.asarray(low & (values <= self.high))
@@ -79,19 +81,18 @@ class ColumnReader:
         """Whether the table has the column."""
         return name in self.table.columns
 
-    def text(self, name: str, *, optional: bool = False) -> TextArray:
-        """Return a column of codes; a blank cell is a problem unless optional.
+    def text(self, name: str) -> TextArray:
+        """Return a column of codes; a blank or odd cell is a problem.
 
         Returns
         -------
         (n,) str array
         """
-        cells = self._cells(name, optional=optional)
-        if self.has(name) and not optional:
-            for line, cell in zip(self.table.lines, cells, strict=True):
-                if not cell:
-                    self.problems.add(line, f"column {name}: blank; expected a code")
-        return np.array(cells, dtype=np.str_)
+        cells = self._cells(name)
+        if self.has(name):
+            good = np.array([_is_code(cell) for cell in cells], dtype=bool)
+            self._note_bad(name, cells, good, lambda _cell: _CODE)
+        return np.array([cell[:_CODE_LENGTH] for cell in cells], dtype=np.str_)
 
     def number(
         self, name: str, span: Span, *, optional: bool = False, missing: float = math.nan
@@ -102,7 +103,7 @@ class ColumnReader:
         -------
         (n,) float array
         """
-        cells = self._cells(name, optional=optional)
+        cells = self._cells(name)
         blank = np.array([not cell for cell in cells], dtype=bool)
         values = np.array([_number(cell) for cell in cells], dtype=np.float64)
         good = np.isfinite(values) & span.holds(values)
@@ -123,7 +124,7 @@ class ColumnReader:
         -------
         (n,) datetime64[ns] array
         """
-        cells = self._cells(name, optional=optional)
+        cells = self._cells(name)
         values = np.array([_moment(cell, day_alone) for cell in cells], dtype="datetime64[ns]")
         good = ~np.isnat(values)
         if optional:
@@ -134,33 +135,51 @@ class ColumnReader:
 
     def misspelt(self, optional: Sequence[str], known: Sequence[str]) -> list[Notice]:
         """Point at unused columns whose names come close to an absent optional one."""
-        notices = []
-        spare = [name for name in self.table.columns if name not in known]
-        for name in optional:
-            close = [] if self.has(name) else _close(name, spare, cutoff=0.7)
-            if close:
-                detail = f"column {close!r} is not used; did you mean {name!r}?"
-                notices.append(Notice("warning", "unused_column", self.table.source, detail))
-        return notices
+        guesses = self._guesses(optional, known, cutoff=0.7)
+        return [
+            Notice(
+                "warning",
+                "unused_column",
+                self.table.source,
+                f"column {close!r} of {self.table.source} is not used; did you mean {name!r}?",
+            )
+            for name, close in guesses.items()
+        ]
 
     def require(self, names: Sequence[str], known: Sequence[str]) -> None:
         """Note each missing column, with the unused one that comes closest."""
-        spare = [name for name in self.table.columns if name not in known]
+        guesses = self._guesses(names, known, cutoff=0.5)
+        found = ", ".join(self.table.columns)
         for name in names:
             if not self.has(name):
-                close = _close(name, spare, cutoff=0.5)
-                guess = f"; did you mean {name!r} by {close!r}?" if close else ""
-                found = ", ".join(self.table.columns)
+                guess = f"; did you mean {name!r} by {guesses[name]!r}?" if name in guesses else ""
                 self.problems.add(1, f"column {name} is missing{guess} (found: {found})")
 
-    def _cells(self, name: str, *, optional: bool) -> list[str]:
+    def _guesses(
+        self, names: Sequence[str], known: Sequence[str], *, cutoff: float
+    ) -> dict[str, str]:
+        """Pair absent columns with unused ones, closest pair first, each used once."""
+        pairs = [
+            (_closeness(name, other), name, other)
+            for name in names
+            if not self.has(name)
+            for other in self.table.columns
+            if other not in known
+        ]
+        guesses: dict[str, str] = {}
+        for closeness, name, other in sorted(pairs, reverse=True):
+            if closeness >= cutoff and name not in guesses and other not in guesses.values():
+                guesses[name] = other
+        return guesses
+
+    def _cells(self, name: str) -> list[str]:
         return self.table.columns.get(name) or [""] * len(self.table)
 
     def _note_bad(
         self,
         name: str,
         cells: list[str],
-        good: np.ndarray[tuple[int], np.dtype[np.bool_]],
+        good: BoolArray,
         expected: Callable[[str], str],
     ) -> None:
         for row in np.flatnonzero(~good):
@@ -172,11 +191,15 @@ class ColumnReader:
             )
 
 
-def _close(name: str, spare: Sequence[str], *, cutoff: float) -> str:
-    """Return the spare name closest to a wanted one, or an empty text."""
-    starts = [other for other in spare if len(other) >= 3 and name.startswith(other)]
-    close = starts or difflib.get_close_matches(name, spare, n=1, cutoff=cutoff)
-    return close[0] if close else ""
+def _closeness(name: str, other: str) -> float:
+    """Likeness of two column names, 0 to 1; an abbreviation of three letters or more is 1."""
+    if len(other) >= 3 and name.startswith(other):
+        return 1.0
+    return difflib.SequenceMatcher(None, name, other).ratio()
+
+
+def _is_code(cell: str) -> bool:
+    return 0 < len(cell) <= _CODE_LENGTH and cell.isprintable()
 
 
 def _number(cell: str) -> float:

@@ -8,8 +8,8 @@ from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
-from rayloom.survey.notices import Notice
-from rayloom.survey.tables import IndexArray, TextArray, TimeArray
+from rayloom.survey.notices import Notice, few
+from rayloom.survey.tables import BoolArray, IndexArray, TextArray, TimeArray
 from rayloom.survey.text_table import Problems
 
 if TYPE_CHECKING:
@@ -52,6 +52,7 @@ def tidy_epochs(
         axis=1,
     )
     dropped = np.zeros(len(stations), dtype=bool)
+    joined: list[str] = []
     for label, rows in _repeated(stations.labels).items():
         ordered = sorted(rows, key=lambda row: (start[row], row))
         last = ordered[0]
@@ -61,7 +62,7 @@ def tidy_epochs(
             elif np.array_equal(position[row], position[last]):
                 end[last] = max(end[last], end[row])
                 dropped[row] = True
-                notices.append(_joined(label, lines[last], lines[row], problems))
+                joined.append(f"{label} {lines[last]} and {lines[row]}")
             else:
                 problems.add(
                     lines[row],
@@ -69,16 +70,15 @@ def tidy_epochs(
                     f"{lines[last]} at the same time; expected one position at a time "
                     "(correct it, or give both rows start and end)",
                 )
+    if joined:
+        detail = (
+            f"{len(joined)} rows of {problems.source} give a station's position again at "
+            "overlapping times; "
+            f"taken as one station each ({problems.place}s: {few(joined)})"
+        )
+        notices.append(Notice("info", "repeated_stations", problems.source, detail))
     closed = np.where(end == _NEVER, np.datetime64("NaT", "ns"), end)
     return replace(stations, end=closed).select(~dropped)
-
-
-def _joined(label: str, kept: int, dropped: int, problems: Problems) -> Notice:
-    detail = (
-        f"{problems.place}s {kept} and {dropped} of {problems.source} give the same position "
-        "at overlapping times; taken as one station"
-    )
-    return Notice("info", "repeated_station", label, detail)
 
 
 def _bounds(stations: Stations) -> tuple[TimeArray, TimeArray]:
@@ -150,9 +150,7 @@ class EpochFinder:
             f"{_day(self.stations.start[row])} to {_day(self.stations.end[row])}" for row in rows
         )
 
-    def _holds(
-        self, rows: IndexArray, time: TimeArray | np.datetime64
-    ) -> np.ndarray[tuple[int], np.dtype[np.bool_]]:
+    def _holds(self, rows: IndexArray, time: TimeArray | np.datetime64) -> BoolArray:
         inside = (self._start[rows] <= time) & (time < self._end[rows])
         return np.asarray(inside | np.isnat(time))
 

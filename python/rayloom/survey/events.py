@@ -151,7 +151,7 @@ def _first_of_each(
         if all(
             column[row] == column[other] or _both_void(column, row, other) for column in columns
         ):
-            detail = f"{pair} of {problems.source} are the same; one is kept"
+            detail = f"event {event}: {pair} of {problems.source} are the same; one is kept"
             notices.append(Notice("info", "repeated_event", event, detail))
         else:
             problems.add(

@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Literal
+from typing import Final, Literal
 
 Severity = Literal["info", "warning"]
+
+_SHOWN: Final = 5
 
 
 @dataclass(frozen=True)
@@ -21,7 +24,7 @@ class Notice:
     who : str
         The station, event or file concerned.
     detail : str
-        The remark in one sentence, with its numbers.
+        The remark in one sentence that stands alone: who, and the numbers.
     """
 
     severity: Severity
@@ -30,4 +33,11 @@ class Notice:
     detail: str
 
     def __str__(self) -> str:
-        return f"{self.severity}: {self.who}: {self.detail}"
+        return f"{self.severity}: {self.detail}"
+
+
+def few(items: Sequence[object]) -> str:
+    """Write out the first few items and how many more there are."""
+    named = ", ".join(str(item) for item in items[:_SHOWN])
+    rest = len(items) - _SHOWN
+    return f"{named} and {rest} more" if rest > 0 else named

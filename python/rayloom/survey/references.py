@@ -10,12 +10,12 @@ import numpy as np
 
 from rayloom.survey.epochs import NO_EPOCH, UNKNOWN_STATION, EpochFinder
 from rayloom.survey.events import Events
+from rayloom.survey.notices import few
 from rayloom.survey.stations import Stations
 from rayloom.survey.tables import BoolArray, IndexArray, TextArray, TimeArray
 from rayloom.survey.text_table import Problems
 
 UNKNOWN_EVENT: Final = -1
-_LINES_NAMED: Final = 5
 _GUESSES: Final = 20
 
 
@@ -88,7 +88,5 @@ def _elsewhere(lines: list[int], problems: Problems) -> str:
     further = lines[1:]
     if not further:
         return ""
-    named = ", ".join(map(str, further[:_LINES_NAMED]))
-    rest = len(further) - _LINES_NAMED
     plural = "s" if len(further) > 1 else ""
-    return f" (also {problems.place}{plural} {named}{f' and {rest} more' if rest > 0 else ''})"
+    return f" (also {problems.place}{plural} {few(further)})"

@@ -6,7 +6,7 @@ from collections.abc import Iterable, Sequence
 
 import numpy as np
 
-from rayloom.survey.notices import Notice
+from rayloom.survey.notices import Notice, few
 from rayloom.survey.tables import BoolArray, FloatArray
 from rayloom.survey.text_table import TextTable
 
@@ -20,8 +20,8 @@ def drop_repeats(
 ) -> BoolArray:
     """Mark the rows to keep: repeats with the same values go, different ones stay.
 
-    Both are told in a notice with their lines. Which of several different ones
-    is used is decided where their residuals are known.
+    Both are told with their lines. Which of several different ones is used is
+    decided where their residuals are known.
 
     Parameters
     ----------
@@ -34,23 +34,30 @@ def drop_repeats(
     table : TextTable
         Lines and source of the rows.
     notices : list of Notice
-        Gets one notice per repeat.
+        Gets one notice on all equal repeats, and one on each different one.
     """
     kept = np.ones(len(values), dtype=bool)
     first: dict[tuple[int, int, str], int] = {}
+    equal: list[str] = []
+    place = table.problems.place
     for row, key in enumerate(keys):
         other = first.setdefault(key, row)
         if other == row:
             continue
-        pair = f"{table.problems.place}s {table.lines[other]} and {table.lines[row]}"
+        pair = f"{table.lines[other]} and {table.lines[row]}"
         if np.array_equal(values[row], values[other]):
             kept[row] = False
-            detail = f"{pair} of {table.source} are the same; one is kept"
-            notices.append(Notice("info", "repeated_row", names[row], detail))
+            equal.append(pair)
         else:
             detail = (
-                f"{pair} of {table.source} differ; the one closer to its event's median "
-                "residual will be used"
+                f"{names[row]}: {place}s {pair} of {table.source} differ; the one closer to its "
+                "event's median residual will be used"
             )
             notices.append(Notice("warning", "conflicting_rows", names[row], detail))
+    if equal:
+        detail = (
+            f"{len(equal)} rows of {table.source} repeat earlier ones and are dropped "
+            f"({place}s {few(equal)})"
+        )
+        notices.append(Notice("info", "repeated_rows", table.source, detail))
     return kept

@@ -34,7 +34,7 @@ def read_uncertainty(
     missing = np.isnan(values) & ~stated
     if missing.any():
         detail = (
-            f"{int(missing.sum())} of {len(table)} rows state no uncertainty; "
+            f"{int(missing.sum())} of {len(table)} rows of {table.source} state no uncertainty; "
             f"they take default_uncertainty_s = {settings.default_uncertainty_s:g} s"
         )
         notices.append(Notice("info", "default_uncertainty", table.source, detail))

@@ -9,7 +9,7 @@ import numpy as np
 
 from rayloom.survey.events import Events, read_events
 from rayloom.survey.network import remote_stations
-from rayloom.survey.notices import Notice
+from rayloom.survey.notices import Notice, few
 from rayloom.survey.picks import Picks, read_picks
 from rayloom.survey.settings import SurveySettings
 from rayloom.survey.stations import Stations, read_stations
@@ -81,7 +81,6 @@ def _without_picks(stations: Stations, events: Events, picks: Picks) -> list[Not
     for kind, labels, used in tables:
         idle = labels[np.setdiff1d(np.arange(len(labels)), used)]
         if len(idle):
-            named = ", ".join(idle[:5].tolist()) + (", …" if len(idle) > 5 else "")
-            detail = f"{len(idle)} of {len(labels)} {kind}s have no pick ({named})"
+            detail = f"{len(idle)} of {len(labels)} {kind}s have no pick ({few(idle.tolist())})"
             notices.append(Notice("info", f"{kind}_without_picks", f"{kind}s", detail))
     return notices

@@ -1,0 +1,72 @@
+"""The inversion: from residuals to a model, its terms and its history.
+
+:func:`invert` is the call; :class:`InversionSettings` says what is believed
+and when to stop; :class:`InversionResult` carries the model and everything that
+was left unexplained. :class:`Problem` and :class:`WhitenedSystem` are the parts
+that appraisals build on.
+"""
+
+from rayloom.inversion.assembly import block_prior, build_problem
+from rayloom.inversion.elimination import GroupMeans
+from rayloom.inversion.forward_map import ForwardMap, Prediction, Report
+from rayloom.inversion.groups import ParameterGroup
+from rayloom.inversion.invert import invert
+from rayloom.inversion.outer import run_outer_loop
+from rayloom.inversion.priors import (
+    IndependentPrior,
+    Prior,
+    SpectralPrior,
+    ZeroSumPrior,
+    damping_smoothing_prior,
+    matern_prior,
+)
+from rayloom.inversion.problem import Problem
+from rayloom.inversion.result import Counts, InversionResult
+from rayloom.inversion.robust import Huber, LeastSquares, StudentT, robust_fit
+from rayloom.inversion.rows import DataRows, LeftOutGroup
+from rayloom.inversion.settings import InversionSettings
+from rayloom.inversion.state import (
+    InversionState,
+    Iteration,
+    history_frame,
+    load_state,
+    save_state,
+)
+from rayloom.inversion.system import Solution, WhitenedSystem, resolution_trace, solve
+
+__all__ = [
+    "Counts",
+    "DataRows",
+    "ForwardMap",
+    "GroupMeans",
+    "Huber",
+    "IndependentPrior",
+    "InversionResult",
+    "InversionSettings",
+    "InversionState",
+    "Iteration",
+    "LeastSquares",
+    "LeftOutGroup",
+    "ParameterGroup",
+    "Prediction",
+    "Prior",
+    "Problem",
+    "Report",
+    "Solution",
+    "SpectralPrior",
+    "StudentT",
+    "WhitenedSystem",
+    "ZeroSumPrior",
+    "block_prior",
+    "build_problem",
+    "damping_smoothing_prior",
+    "history_frame",
+    "invert",
+    "load_state",
+    "matern_prior",
+    "resolution_trace",
+    "robust_fit",
+    "run_outer_loop",
+    "save_state",
+    "solve",
+]

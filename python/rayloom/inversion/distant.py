@@ -1,0 +1,64 @@
+"""The forward map of distant events: rays from the one-dimensional Earth into the blocks."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rayloom.forward import Rays, trace_distant
+from rayloom.model import SlownessModel
+
+if TYPE_CHECKING:
+    from rayloom.inversion.settings import InversionSettings
+    from rayloom.residuals import Residuals
+
+
+@dataclass(frozen=True)
+class DistantRays:
+    """Rays of chosen rows of a table of residuals.
+
+    Bent rays are traced anew in every model. Reference and straight rays are
+    traced once; in another model only the times along them change.
+
+    Attributes
+    ----------
+    data : Residuals
+        The table of residuals.
+    data_row : (rays,) int array
+        Its rows that need a ray.
+    settings : InversionSettings
+        Method, quality and threads.
+    """
+
+    data: Residuals
+    data_row: NDArray[np.int64]
+    settings: InversionSettings
+
+    def __call__(
+        self,
+        model: SlownessModel,
+        *,
+        previous: Rays | None,
+        progress: Callable[[int, int], None] | None,
+    ) -> Rays:
+        """Trace the rays, or time the previous ones if their paths are fixed."""
+        if self.settings.method != "bent" and previous is not None:
+            return replace(previous, time_s=previous.predict_s(model.slowness_s_per_km))
+        data, rows = self.data, self.data_row
+        return trace_distant(
+            model,
+            data.earth,
+            data.events,
+            data.stations,
+            pairs=np.column_stack([data.event_index[rows], data.station_index[rows]]),
+            phases=np.asarray(data.phase).astype(str)[rows],
+            method=self.settings.method,
+            quality=self.settings.quality,
+            previous=previous,
+            threads=self.settings.threads,
+            progress=progress,
+        )

@@ -1,0 +1,136 @@
+"""Measures of a traced model that fill a row of the history."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rayloom.inversion.problem import Problem, TracedModel
+from rayloom.inversion.robust import RobustFit
+from rayloom.inversion.state import Iteration
+from rayloom.inversion.step import PlannedStep, TakenStep
+from rayloom.inversion.system import WhitenedSystem, resolution_trace
+
+_PROBE_TOLERANCE = 1e-4
+
+
+@dataclass(frozen=True)
+class Stage:
+    """A traced model with its residuals and the linear system about it."""
+
+    traced: TracedModel
+    fit: RobustFit
+    system: WhitenedSystem
+
+    @classmethod
+    def of(cls, problem: Problem, traced: TracedModel) -> Stage:
+        """Weight the residuals and linearise."""
+        fit = problem.fit(traced.unexplained_s, traced.active)
+        return cls(traced=traced, fit=fit, system=problem.system(traced, fit.weights))
+
+
+def suspected_outliers(fit: RobustFit, *, outlier_std: float) -> NDArray[np.bool_]:
+    """Rows beyond ``outlier_std`` standard deviations, (rows,).
+
+    The standard deviation is the row's uncertainty times the spread of all
+    standardised residuals where that exceeds one: uncertainties that are
+    too small do not make everything an outlier.
+    """
+    return np.abs(np.nan_to_num(fit.standardised)) > outlier_std * fit.scale
+
+
+def measure(
+    problem: Problem,
+    stage: Stage,
+    *,
+    iteration: int,
+    planned: PlannedStep | None,
+    taken: TakenStep | None,
+    seconds: float,
+) -> Iteration:
+    """Fill the row of the history that describes a traced model.
+
+    Parameters
+    ----------
+    problem : Problem
+        The problem.
+    stage : Stage
+        The traced model.
+    iteration : int
+        Its number; 0 is the starting model.
+    planned, taken : PlannedStep and TakenStep, or None
+        How it was reached; None for the starting model.
+    seconds : float
+        Time the iteration took before these measures, s.
+    """
+    traced, fit, settings = stage.traced, stage.fit, problem.settings
+    suspected = suspected_outliers(fit, outlier_std=settings.outlier_std)
+    kept = traced.active & ~suspected
+    precision = fit.weights / problem.rows.uncertainty_s**2
+    chi2 = _squared(stage.system.whiten_rows(traced.unexplained_s))
+    chi2_reference = _squared(stage.system.whiten_rows(problem.rows.residual_s))
+    prior_misfit = _squared(traced.white)
+    return Iteration(
+        iteration=iteration,
+        rms_s=_rms(fit.centred_s[traced.active]),
+        rms_weighted_s=float(np.sqrt(_ratio(chi2, float(np.sum(precision))))),
+        rms_kept_s=_rms(fit.centred_s[kept]),
+        chi2=chi2,
+        chi2_expected=_expected_chi2(problem, stage) if planned is not None else float("nan"),
+        chi2_kept=_squared(fit.standardised[kept]),
+        prior_misfit=prior_misfit,
+        objective=fit.misfit + prior_misfit,
+        variance_reduction_percent=100.0 * (1.0 - _ratio(chi2, chi2_reference)),
+        model_rms_percent=_model_rms_percent(traced),
+        model_change_percent=(
+            100.0 * planned.model_change * taken.length if planned and taken else 0.0
+        ),
+        basin_jumps=int(traced.rays.basin_jumps),
+        data_count=int(np.sum(traced.active)),
+        group_count=stage.system.means.count,
+        downweighted=int(np.sum(traced.active & (fit.weights < 1.0))),
+        suspected_outliers=int(np.sum(suspected)),
+        residual_scale=fit.scale,
+        step_length=taken.length if taken else 0.0,
+        solver_iterations=planned.solver_iterations if planned else 0,
+        solver_converged=planned.solver_converged if planned else True,
+        seconds=seconds,
+        seconds_tracing=traced.seconds,
+    )
+
+
+def _expected_chi2(problem: Problem, stage: Stage) -> float:
+    """(N − N_g) − tr H, tr H by a few probes to about 1 % besides their scatter."""
+    settings = problem.settings
+    if settings.trace_probes == 0:
+        return float("nan")
+    resolved = resolution_trace(
+        stage.system,
+        probes=settings.trace_probes,
+        seed=settings.seed,
+        tolerance=max(_PROBE_TOLERANCE, settings.solver_tolerance),
+        max_iterations=settings.solver_max_iterations,
+    )
+    return float(np.sum(stage.traced.active)) - stage.system.means.count - resolved
+
+
+def _model_rms_percent(traced: TracedModel) -> float:
+    crossed = np.zeros(traced.model.grid.block_count, dtype=bool)
+    crossed[traced.rays.path_lengths.indices] = True
+    volumes = np.where(crossed, traced.model.grid.volumes_km3.ravel(), 0.0)
+    squares = traced.model.perturbation_percent.ravel() ** 2
+    return float(np.sqrt(_ratio(float(volumes @ squares), float(np.sum(volumes)))))
+
+
+def _squared(values: NDArray[np.float64]) -> float:
+    return float(np.sum(values**2))
+
+
+def _rms(values: NDArray[np.float64]) -> float:
+    return float(np.sqrt(np.mean(values**2))) if values.size else 0.0
+
+
+def _ratio(part: float, whole: float) -> float:
+    return part / whole if whole > 0.0 else 0.0

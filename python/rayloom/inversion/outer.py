@@ -1,0 +1,155 @@
+"""The outer loop: trace, weight, solve, step, trace again; and why it stops."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+
+from rayloom.errors import InputError
+from rayloom.inversion.forward_map import Report
+from rayloom.inversion.measure import Stage, measure
+from rayloom.inversion.problem import Problem, TracedModel
+from rayloom.inversion.robust import RobustFit
+from rayloom.inversion.state import InversionState, Iteration
+from rayloom.inversion.step import PlannedStep, plan_step, take_step
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """Where the loop ended.
+
+    Attributes
+    ----------
+    traced : TracedModel
+        The last accepted model.
+    fit : RobustFit
+        Its residuals and weights.
+    state : InversionState
+        Its resumable state with the whole history.
+    stopped_because : str
+        The reason, as a sentence.
+    """
+
+    traced: TracedModel
+    fit: RobustFit
+    state: InversionState
+    stopped_because: str
+
+
+def run_outer_loop(
+    problem: Problem,
+    *,
+    resume: InversionState | None = None,
+    report: Report | None = None,
+    checkpoint: Callable[[InversionState], None] | None = None,
+) -> Outcome:
+    """Iterate until the model settles.
+
+    Parameters
+    ----------
+    problem : Problem
+        The problem.
+    resume : InversionState, optional
+        State to go on from.
+    report : callable, optional
+        Told (stage, done, total).
+    checkpoint : callable, optional
+        Given the state after each accepted model.
+
+    Raises
+    ------
+    InputError
+        If the state to resume belongs to another problem.
+    """
+    settings = problem.settings
+    started = time.perf_counter()
+    stage, state = _first_stage(problem, resume, report, started)
+    if resume is None and checkpoint is not None:
+        checkpoint(state)
+    while True:
+        started = time.perf_counter()
+        if state.iteration >= settings.max_iterations:
+            reason = f"the limit of {settings.max_iterations} iterations was reached"
+            break
+        planned = plan_step(problem, stage.traced, stage.system, stage.fit.weights, report)
+        if _has_converged(problem, planned):
+            reason = (
+                f"converged: another step would change the model by "
+                f"{100.0 * planned.model_change:.1f} % and lower the objective by "
+                f"{100.0 * max(planned.objective_drop, 0.0):.2f} %"
+            )
+            break
+        taken = take_step(problem, stage.traced, planned, report)
+        if taken is None:
+            reason = "no step along the computed direction lowers the objective any more"
+            break
+        stage = Stage.of(problem, taken.traced)
+        row = measure(
+            problem,
+            stage,
+            iteration=state.iteration + 1,
+            planned=planned,
+            taken=taken,
+            seconds=time.perf_counter() - started,
+        )
+        state = _state(stage, (*state.history, row), state.fingerprint)
+        if checkpoint is not None:
+            checkpoint(state)
+    return Outcome(traced=stage.traced, fit=stage.fit, state=state, stopped_because=reason)
+
+
+def _first_stage(
+    problem: Problem, resume: InversionState | None, report: Report | None, started: float
+) -> tuple[Stage, InversionState]:
+    fingerprint = problem.fingerprint()
+    if resume is not None and resume.fingerprint != fingerprint:
+        raise InputError(
+            "the checkpoint belongs to other data, blocks or priors; start afresh or restore "
+            "the settings it was made with",
+            where="resume",
+        )
+    white = problem.starting_unknowns() if resume is None else resume.white
+    model = problem.model_of(white)
+    if model is None:
+        raise InputError(
+            "the starting model differs from its reference by more than a factor of two",
+            where="model",
+        )
+    active = problem.active if resume is None else problem.active & resume.active
+    if np.any(white[: problem.block_prior.size]):
+        traced = problem.trace(
+            white, model, previous=problem.reference_rays, active=active, report=report
+        )
+    else:
+        traced = problem.explain(white, model, problem.reference_rays, active)
+    stage = Stage.of(problem, traced)
+    if resume is not None:
+        return stage, resume
+    row = measure(
+        problem,
+        stage,
+        iteration=0,
+        planned=None,
+        taken=None,
+        seconds=time.perf_counter() - started,
+    )
+    return stage, _state(stage, (row,), fingerprint)
+
+
+def _state(stage: Stage, history: tuple[Iteration, ...], fingerprint: str) -> InversionState:
+    return InversionState(
+        white=stage.traced.white,
+        active=stage.traced.active,
+        history=history,
+        fingerprint=fingerprint,
+    )
+
+
+def _has_converged(problem: Problem, planned: PlannedStep) -> bool:
+    return (
+        planned.model_change < problem.settings.model_tolerance
+        and planned.objective_drop < problem.settings.misfit_tolerance
+    )

@@ -1,0 +1,143 @@
+"""Settings of the inversion."""
+
+from __future__ import annotations
+
+from typing import Annotated, Literal, Self
+
+from pydantic import BaseModel, ConfigDict, Field, model_validator
+
+from rayloom.inversion.robust import Huber, LeastSquares, RobustLoss, StudentT
+
+Positive = Annotated[float, Field(gt=0.0, allow_inf_nan=False)]
+NotNegative = Annotated[float, Field(ge=0.0, allow_inf_nan=False)]
+
+
+class InversionSettings(BaseModel):
+    """What is inverted for, what is believed beforehand, and when to stop."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+    method: Literal["bent", "reference", "straight"] = Field(
+        default="bent",
+        description="Rays: bent (retraced in every model), reference (traced once in the "
+        "one-dimensional model) or straight (chords).",
+    )
+    quality: Literal["standard", "thorough"] = Field(
+        default="standard", description="How hard the tracer looks for the earliest ray."
+    )
+    threads: int | None = Field(
+        default=None, ge=1, description="Threads for rays and products; all cores if not given."
+    )
+
+    prior: Literal["correlated", "damping"] = Field(
+        default="correlated",
+        description="correlated: perturbations have the standard deviation and correlation "
+        "lengths below; damping: classical damping and smoothing.",
+    )
+    prior_std_percent: Positive = Field(
+        default=2.0,
+        description="Expected size of the perturbations: one standard deviation, percent.",
+    )
+    correlation_km: tuple[Positive, Positive] = Field(
+        default=(60.0, 60.0),
+        description="Distances at which the correlation of two perturbations falls to 1/e: "
+        "horizontal and vertical, km.",
+    )
+    damping: Positive = Field(
+        default=50.0,
+        description="For prior = damping: weight of the size of a fractional perturbation "
+        "(50 alone stands for 2 %).",
+    )
+    smoothing_km: tuple[NotNegative, NotNegative] = Field(
+        default=(3000.0, 3000.0),
+        description="For prior = damping: weight of the first differences per km, horizontal "
+        "and vertical, km.",
+    )
+
+    station_terms: bool = Field(
+        default=True, description="Solve for one delay per station and phase (they sum to zero)."
+    )
+    station_term_std_s: Positive | dict[Literal["P", "S"], Positive] = Field(
+        default=0.2,
+        description="Expected size of the station terms, s: one number, or one per wave "
+        "such as { P = 0.2, S = 0.5 }.",
+    )
+    mislocation: bool = Field(
+        default=True, description="Solve for the shift of each event from its catalogue position."
+    )
+    mislocation_std_km: Positive = Field(
+        default=10.0, description="Expected size of each component of that shift, km."
+    )
+    min_picks_per_event: int = Field(
+        default=5,
+        ge=2,
+        description="Fewest picks of an event and phase; smaller groups are left out.",
+    )
+
+    robust: Literal["huber", "student_t", "none"] = Field(
+        default="huber", description="How large residuals lose weight."
+    )
+    huber_k: Positive = Field(
+        default=1.345, description="Standard deviations beyond which Huber weights fall."
+    )
+    student_degrees: Positive = Field(
+        default=4.0, description="Degrees of freedom of Student's t: few mean heavy tails."
+    )
+    outlier_std: Positive = Field(
+        default=4.0,
+        description="Standard deviations beyond which a pick is listed as a suspected outlier.",
+    )
+
+    max_iterations: int = Field(default=6, ge=1, description="Most models solved for.")
+    reweightings: int = Field(
+        default=3,
+        ge=1,
+        description="Most rounds of robust weighting per model, between retracings.",
+    )
+    model_tolerance: Positive = Field(
+        default=0.03,
+        description="Stop once a step would change less than this share of the model …",
+    )
+    misfit_tolerance: Positive = Field(
+        default=0.003, description="… and lower the objective by less than this share."
+    )
+    max_halvings: int = Field(
+        default=3, ge=0, description="How often a step that raises the objective is halved."
+    )
+    solver_tolerance: Positive = Field(
+        default=1e-5, lt=1.0, description="Relative accuracy asked of the least-squares solver."
+    )
+    solver_max_iterations: int = Field(
+        default=3000, ge=1, description="Most steps of the least-squares solver."
+    )
+    trace_probes: int = Field(
+        default=2,
+        ge=0,
+        description="Random probes per iteration for the expected misfit; 0 leaves it out.",
+    )
+    seed: int = Field(default=20, ge=0, description="Seed of the random probes.")
+
+    @model_validator(mode="after")
+    def _outliers_are_downweighted(self) -> Self:
+        if self.robust == "huber" and self.outlier_std <= self.huber_k:
+            raise ValueError(
+                f"outlier_std ({self.outlier_std:g}) must exceed huber_k ({self.huber_k:g})"
+            )
+        return self
+
+    @property
+    def loss(self) -> RobustLoss:
+        """The loss that the settings choose."""
+        if self.robust == "huber":
+            return Huber(self.huber_k)
+        if self.robust == "student_t":
+            return StudentT(self.student_degrees)
+        return LeastSquares()
+
+    def station_term_std_of(self, wave: str) -> float:
+        """Return the expected size of a wave's station terms, s (the other wave's if unset)."""
+        chosen = self.station_term_std_s
+        if not isinstance(chosen, dict):
+            return chosen
+        sizes = {str(key): value for key, value in chosen.items()}
+        return sizes[wave] if wave in sizes else next(iter(sizes.values()), 0.2)

@@ -1,0 +1,167 @@
+"""One step of the outer loop: plan it on the linearised problem, take it on the real one."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rayloom.inversion.forward_map import Report
+from rayloom.inversion.problem import Problem, TracedModel
+from rayloom.inversion.system import WhitenedSystem, solve
+
+_SETTLED_WEIGHT_CHANGE = 1e-3
+_EARLY_ROUND_LOOSENING = 10.0
+_REPORT_EVERY = 20
+
+
+@dataclass(frozen=True)
+class PlannedStep:
+    """The minimum of the linearised objective.
+
+    Attributes
+    ----------
+    white : (unknowns,) array
+        Whitened unknowns of the total model there.
+    scale : float
+        Spread of residuals that its robust weights assume.
+    objective_drop : float
+        Share of the objective that the linearised problem promises to lose.
+    model_change : float
+        Norm of the step over the norm of the new model, in block values.
+    solver_iterations : int
+        Steps of the solver, all rounds of weighting together.
+    solver_converged : bool
+        Whether the last round reached the accuracy asked.
+    """
+
+    white: NDArray[np.float64]
+    scale: float
+    objective_drop: float
+    model_change: float
+    solver_iterations: int
+    solver_converged: bool
+
+
+@dataclass(frozen=True)
+class TakenStep:
+    """A traced model that does not raise the objective, and the share of the step taken."""
+
+    traced: TracedModel
+    length: float
+
+
+def plan_step(
+    problem: Problem,
+    current: TracedModel,
+    system: WhitenedSystem,
+    weights: NDArray[np.float64],
+    report: Report | None = None,
+) -> PlannedStep:
+    """Solve for the total model, weighting anew until the robust weights settle.
+
+    The right-hand side is d − (T_k − T_reference) + A_k m_k, so that the
+    penalty acts on the total model, not on the step.
+
+    Parameters
+    ----------
+    problem : Problem
+        The problem.
+    current : TracedModel
+        Where it is linearised.
+    system : WhitenedSystem
+        Its columns.
+    weights : (rows,) array
+        Robust weights to begin with.
+    report : callable, optional
+        Told ("solving", step, 0).
+
+    References
+    ----------
+    Shaw, P. R. & Orcutt, J. A. (1985). Waveform inversion of seismic refraction
+    data and applications to young Pacific crust. Geophys. J. R. Astr. Soc. 82,
+    375-414 (jumping and creeping).
+    """
+    settings = problem.settings
+    rounds = 1 if settings.robust == "none" else settings.reweightings
+    target = current.unexplained_s + system.seconds(current.white)
+    solver_steps = 0
+
+    def tell(step: int) -> None:
+        if report is not None and step % _REPORT_EVERY == 0:
+            report("solving", solver_steps + step, 0)
+
+    last = rounds == 1
+    for number in range(1, rounds + 1):
+        last = last or number == rounds
+        weighted = system.with_means(problem.means(weights))
+        found = solve(
+            weighted,
+            weighted.whiten_rows(target),
+            tolerance=settings.solver_tolerance * (1.0 if last else _EARLY_ROUND_LOOSENING),
+            max_iterations=settings.solver_max_iterations,
+            step=tell,
+        )
+        solver_steps += found.iterations
+        fit = problem.fit(target - system.seconds(found.white), current.active)
+        if last:
+            break
+        last = float(np.mean(np.abs(fit.weights - weights))) < _SETTLED_WEIGHT_CHANGE
+        weights = fit.weights
+    before = _objective(problem, current, current.active, fit.scale)
+    after = fit.misfit + float(found.white @ found.white)
+    return PlannedStep(
+        white=found.white,
+        scale=fit.scale,
+        objective_drop=(before - after) / before if before > 0.0 else 0.0,
+        model_change=_model_change(problem, current.white, found.white),
+        solver_iterations=solver_steps,
+        solver_converged=found.converged,
+    )
+
+
+def take_step(
+    problem: Problem, current: TracedModel, planned: PlannedStep, report: Report | None = None
+) -> TakenStep | None:
+    """Trace the planned model, halving the step while it raises the objective.
+
+    Returns
+    -------
+    TakenStep or None
+        None if even the shortest step raises it.
+    """
+    length = 1.0
+    for _ in range(problem.settings.max_halvings + 1):
+        white = current.white + length * (planned.white - current.white)
+        model = problem.model_of(white)
+        if model is not None:
+            trial = problem.trace(
+                white,
+                model,
+                previous=current.rays,
+                active=current.active,
+                report=report,
+            )
+            before = _objective(problem, current, trial.active, planned.scale)
+            if _objective(problem, trial, trial.active, planned.scale) <= before:
+                return TakenStep(traced=trial, length=length)
+        length *= 0.5
+    return None
+
+
+def _objective(
+    problem: Problem, traced: TracedModel, active: NDArray[np.bool_], scale: float
+) -> float:
+    fit = problem.fit(traced.unexplained_s, active, scale=scale)
+    return fit.misfit + float(traced.white @ traced.white)
+
+
+def _model_change(problem: Problem, old: NDArray[np.float64], new: NDArray[np.float64]) -> float:
+    """Norm of the change over the norm of the new model, in block values."""
+    blocks = problem.block_prior.size
+    size = float(np.linalg.norm(problem.block_prior.colour(new[:blocks])))
+    change = float(np.linalg.norm(problem.block_prior.colour(new[:blocks] - old[:blocks])))
+    if change == 0.0:
+        return 0.0
+    return change / size if size > 0.0 else float("inf")

@@ -1,0 +1,55 @@
+"""What a run leaves behind: viewer files, tables, figures and the report.
+
+Every file is written to a temporary name and renamed
+(:func:`rayloom.outputs.atomic.replacing`). Figures are matplotlib ``Figure``
+objects; :func:`save_figure` writes them.
+"""
+
+from rayloom.outputs.atomic import replacing, write_text
+from rayloom.outputs.residual_figures import figure_misfit, figure_station_residuals
+from rayloom.outputs.section import figure_section
+from rayloom.outputs.section_line import SectionLine, default_lines
+from rayloom.outputs.settings import OutputSettings, SectionSettings
+from rayloom.outputs.slices import figure_depth_slices
+from rayloom.outputs.style import BlockField, ColourScale, perturbation_field, save_figure
+from rayloom.outputs.tables import (
+    residual_table,
+    write_exclusions_csv,
+    write_history_csv,
+    write_residuals_csv,
+    write_table,
+)
+from rayloom.outputs.vtk import (
+    write_events_vtp,
+    write_model_vts,
+    write_points,
+    write_rays_vtp,
+    write_stations_vtp,
+)
+
+__all__ = [
+    "BlockField",
+    "ColourScale",
+    "OutputSettings",
+    "SectionLine",
+    "SectionSettings",
+    "default_lines",
+    "figure_depth_slices",
+    "figure_misfit",
+    "figure_section",
+    "figure_station_residuals",
+    "perturbation_field",
+    "replacing",
+    "residual_table",
+    "save_figure",
+    "write_events_vtp",
+    "write_exclusions_csv",
+    "write_history_csv",
+    "write_model_vts",
+    "write_points",
+    "write_rays_vtp",
+    "write_residuals_csv",
+    "write_stations_vtp",
+    "write_table",
+    "write_text",
+]

@@ -1,0 +1,21 @@
+"""Residuals: observed minus predicted arrival times, and what was left out.
+
+The main type is :class:`Residuals`; :func:`compute_residuals` makes it from a
+survey, :func:`read_residuals` from residuals that others computed. Latitudes
+turn geocentric here.
+"""
+
+from __future__ import annotations
+
+from rayloom.residuals.assembly import compute_residuals, read_residuals
+from rayloom.residuals.exclusions import Exclusions
+from rayloom.residuals.settings import ResidualSettings
+from rayloom.residuals.table import Residuals
+
+__all__ = [
+    "Exclusions",
+    "ResidualSettings",
+    "Residuals",
+    "compute_residuals",
+    "read_residuals",
+]

@@ -1,0 +1,96 @@
+"""What was left out, pick by pick, with the reason."""
+
+from __future__ import annotations
+
+from collections import Counter
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from rayloom.residuals.files import write_frame
+from rayloom.survey.tables import BoolArray, ColumnTable, TextArray
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+
+def _no_text() -> TextArray:
+    return np.empty(0, dtype=np.str_)
+
+
+@dataclass(frozen=True, eq=False)
+class Exclusions(ColumnTable):
+    """Picks left out, one row each.
+
+    Parameters
+    ----------
+    event, network, station, phase : (n,) str arrays
+        The pick.
+    reason : (n,) str array
+        Code: ``unknown_phase``, ``outside_distance_window``, ``no_arrival``,
+        ``too_few_picks``, ``conflicting_rows`` or ``gross_residual``.
+    detail : (n,) str array
+        The reason in words, with its numbers.
+    """
+
+    event: TextArray = field(default_factory=_no_text)
+    network: TextArray = field(default_factory=_no_text)
+    station: TextArray = field(default_factory=_no_text)
+    phase: TextArray = field(default_factory=_no_text)
+    reason: TextArray = field(default_factory=_no_text)
+    detail: TextArray = field(default_factory=_no_text)
+
+    def counts(self) -> dict[str, int]:
+        """Return how many picks each reason took, most first."""
+        return dict(Counter(self.reason.tolist()).most_common())
+
+    def to_frame(self) -> pd.DataFrame:
+        """Return a data frame with one row per pick left out."""
+        import pandas as pd
+
+        return pd.DataFrame({name: getattr(self, name) for name in self.column_names()})
+
+    def write_csv(self, path: str | Path) -> None:
+        """Write the table as CSV.
+
+        Raises
+        ------
+        FileAccessError
+            If the file cannot be written.
+        """
+        write_frame(self.to_frame(), path)
+
+
+class Selection:
+    """Which rows are still in, and why the others are not.
+
+    Parameters
+    ----------
+    count : int
+        Number of rows.
+    """
+
+    def __init__(self, count: int) -> None:
+        self.kept: BoolArray = np.ones(count, dtype=bool)
+        self.reason: list[str] = [""] * count
+        self.detail: list[str] = [""] * count
+
+    def leave_out(self, rows: BoolArray, reason: str, detail: list[str]) -> None:
+        """Leave out rows that are still in.
+
+        Parameters
+        ----------
+        rows : (n,) bool array
+            The rows; those already out keep their first reason.
+        reason : str
+            Code of the reason.
+        detail : list of str
+            One sentence for each row marked.
+        """
+        for row, text in zip(np.flatnonzero(rows).tolist(), detail, strict=True):
+            if self.kept[row]:
+                self.reason[row] = reason
+                self.detail[row] = text
+                self.kept[row] = False
