@@ -119,7 +119,11 @@ impl Surface {
                         }
                     }
                     let block = blocks.index(cell);
-                    surface.faces.push(SurfaceFace { block, side, corners });
+                    surface.faces.push(SurfaceFace {
+                        block,
+                        side,
+                        corners,
+                    });
                 }
             }
         }
@@ -148,7 +152,10 @@ impl Surface {
         let earliest_s = times.iter().copied().fold(f64::INFINITY, f64::min);
         CornerTimes {
             earliest_s,
-            after_s: times.iter().map(|time| (time - earliest_s) as f32).collect(),
+            after_s: times
+                .iter()
+                .map(|time| (time - earliest_s) as f32)
+                .collect(),
         }
     }
 
@@ -209,13 +216,17 @@ impl Surface {
                 continue;
             }
             start.faces.push((face.block, face.side));
-            for node in 0..search.nodes() * search.nodes() {
-                let at = search.node_position(face.block, face.side, node);
+            let first = start.times.len();
+            start
+                .times
+                .resize(first + search.layout().size(), f32::INFINITY);
+            for place in search.places() {
+                let at = search.node_position(face.block, face.side, place);
                 let time = incoming
                     .at(at)
                     .filter(|arrival| enters(arrival, face.side))
                     .map_or(f64::INFINITY, |arrival| arrival.time_s - wave.earliest_s);
-                start.times.push(time as f32);
+                start.times[first + place] = time as f32;
             }
         }
     }

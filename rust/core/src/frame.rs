@@ -114,12 +114,12 @@ impl SphereChart {
     /// (the series' first neglected terms are below 1e-18).
     #[inline]
     fn sin_cos(&self, angle: f64) -> (f64, f64) {
-        let nearest = (angle * (1.0 / TABLE_STEP)).round();
-        let index = (nearest as i32 + TABLE_HALF) as usize;
+        // Truncation of a positive number rounds without a library call.
+        let index = (angle * (1.0 / TABLE_STEP) + (f64::from(TABLE_HALF) + 0.5)) as usize;
         let Some(&[sine, cosine]) = self.sines.get(index) else {
             return angle.sin_cos();
         };
-        let rest = angle - nearest * TABLE_STEP;
+        let rest = angle - (index as f64 - f64::from(TABLE_HALF)) * TABLE_STEP;
         let square = rest * rest;
         let small_sine = rest * (1.0 + square * (-1.0 / 6.0 + square * (1.0 / 120.0)));
         let small_cosine = 1.0 + square * (-0.5 + square * (1.0 / 24.0 - square * (1.0 / 720.0)));
@@ -193,11 +193,7 @@ impl Chart for SphereChart {
             }
             _ => {
                 let r = self.radius_km - value;
-                quadratic_roots(
-                    dot(step, step),
-                    dot(from, step),
-                    dot(from, from) - r * r,
-                )
+                quadratic_roots(dot(step, step), dot(from, step), dot(from, from) - r * r)
             }
         }
     }

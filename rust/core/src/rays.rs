@@ -153,10 +153,13 @@ pub fn trace_between<C: Chart>(
     check_pairs(pairs, sources.len(), receivers.len())?;
     monitor.set_total(pairs.len() as u64);
     if method == Method::Straight {
-        let rays = chords(blocks, pairs.iter().map(|pair| {
-            let from = sources[pair[0] as usize];
-            Some((from, 0.0, receivers[pair[1] as usize]))
-        }));
+        let rays = chords(
+            blocks,
+            pairs.iter().map(|pair| {
+                let from = sources[pair[0] as usize];
+                Some((from, 0.0, receivers[pair[1] as usize]))
+            }),
+        );
         return Ok(pack(blocks, rays));
     }
     // Reciprocity: search from the side that needs fewer searches.
@@ -165,23 +168,28 @@ pub fn trace_between<C: Chart>(
     let ends = [sources, receivers];
     let lattice = Lattice::new(blocks, quality.coarse_nodes);
     let tracer = Tracer::new(blocks, &lattice, None, quality);
-    let rays = per_group(pairs, near, || tracer.workspace(), |workspace, members| {
-        let goal = ends[near][pairs[members[0]][near] as usize];
-        let points: Vec<Vec3> = members
-            .iter()
-            .map(|&member| ends[far][pairs[member][far] as usize])
-            .collect();
-        let mut rays = if method == Method::Graph {
-            tracer.graph_paths(goal, &points, workspace, monitor)?
-        } else {
-            let beginnings: Vec<_> = points.into_iter().map(Beginning::Point).collect();
-            tracer.trace_to(goal, &beginnings, workspace, monitor)?
-        };
-        if from_sources {
-            rays.iter_mut().flatten().for_each(|ray| ray.path.reverse());
-        }
-        Ok(rays)
-    })?;
+    let rays = per_group(
+        pairs,
+        near,
+        || tracer.workspace(),
+        |workspace, members| {
+            let goal = ends[near][pairs[members[0]][near] as usize];
+            let points: Vec<Vec3> = members
+                .iter()
+                .map(|&member| ends[far][pairs[member][far] as usize])
+                .collect();
+            let mut rays = if method == Method::Graph {
+                tracer.graph_paths(goal, &points, workspace, monitor)?
+            } else {
+                let beginnings: Vec<_> = points.into_iter().map(Beginning::Point).collect();
+                tracer.trace_to(goal, &beginnings, workspace, monitor)?
+            };
+            if from_sources {
+                rays.iter_mut().flatten().for_each(|ray| ray.path.reverse());
+            }
+            Ok(rays)
+        },
+    )?;
     Ok(pack(blocks, rays))
 }
 
@@ -218,20 +226,25 @@ pub fn trace_distant(
         .map(|wave| wave.as_ref().map(|wave| surface.sample(wave)))
         .collect();
     let tracer = Tracer::new(blocks, &lattice, Some(&surface), quality);
-    let rays = per_group(pairs, 1, || tracer.workspace(), |workspace, members| {
-        let beginnings: Vec<_> = members
-            .iter()
-            .map(|&member| {
-                let event = pairs[member][0] as usize;
-                match (&waves[event], &corners[event]) {
-                    (Some(incoming), Some(corners)) => Beginning::Wave { incoming, corners },
-                    _ => Beginning::Nowhere,
-                }
-            })
-            .collect();
-        let station = stations[pairs[members[0]][1] as usize];
-        tracer.trace_to(station, &beginnings, workspace, monitor)
-    })?;
+    let rays = per_group(
+        pairs,
+        1,
+        || tracer.workspace(),
+        |workspace, members| {
+            let beginnings: Vec<_> = members
+                .iter()
+                .map(|&member| {
+                    let event = pairs[member][0] as usize;
+                    match (&waves[event], &corners[event]) {
+                        (Some(incoming), Some(corners)) => Beginning::Wave { incoming, corners },
+                        _ => Beginning::Nowhere,
+                    }
+                })
+                .collect();
+            let station = stations[pairs[members[0]][1] as usize];
+            tracer.trace_to(station, &beginnings, workspace, monitor)
+        },
+    )?;
     Ok(pack(blocks, rays))
 }
 
@@ -250,7 +263,12 @@ pub fn straight_from_entries<C: Chart>(
         return Err(CoreError::invalid(
             "entries, times and receivers",
             "equal lengths",
-            format!("{}, {}, {}", entries.len(), outside_time_s.len(), receivers.len()),
+            format!(
+                "{}, {}, {}",
+                entries.len(),
+                outside_time_s.len(),
+                receivers.len()
+            ),
         ));
     }
     let ends = entries.iter().zip(outside_time_s).zip(receivers);

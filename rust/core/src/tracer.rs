@@ -219,7 +219,14 @@ impl<'a, C: Chart> Tracer<'a, C> {
         if let Some(fine) = &self.fine {
             let better = [0.0, RETRY_SLACK_S].iter().find_map(|extra| {
                 let slack_s = self.quality.slack_s + extra;
-                self.search_again(fine, receiver, beginning, &path, (graph_time, slack_s), workspace)
+                self.search_again(
+                    fine,
+                    receiver,
+                    beginning,
+                    &path,
+                    (graph_time, slack_s),
+                    workspace,
+                )
             });
             if let Some(mut better) = better {
                 workspace.refiner.settle(&mut better);
@@ -249,8 +256,7 @@ impl<'a, C: Chart> Tracer<'a, C> {
             Beginning::Wave { incoming, corners } => {
                 let surface = self.surface?;
                 let entry = surface.best_entry(corners, &workspace.corner_times)?;
-                let mut path =
-                    trace_back(&self.coarse, &workspace.coarse, receiver, entry.point)?;
+                let mut path = trace_back(&self.coarse, &workspace.coarse, receiver, entry.point)?;
                 path.axes[0] = surface.entry_axis(incoming, entry)?;
                 Some(path)
             }

@@ -98,7 +98,11 @@ impl<C: Chart> Refiner<'_, C> {
     /// segment `last` (from or to the path's ends where they are the outermost).
     fn pull_chord(&mut self, path: &mut Path, first: usize, last: usize) -> bool {
         let middle = |segment: usize| lerp(path.points[segment], path.points[segment + 1], 0.5);
-        let from = if first == 0 { path.points[0] } else { middle(first) };
+        let from = if first == 0 {
+            path.points[0]
+        } else {
+            middle(first)
+        };
         let to = if last + 1 == path.len() {
             path.points[last + 1]
         } else {
@@ -108,7 +112,11 @@ impl<C: Chart> Refiner<'_, C> {
         let mut old = 0.0;
         let mut here = chart.position(from);
         for segment in first..=last {
-            let end = if segment == last { to } else { path.points[segment + 1] };
+            let end = if segment == last {
+                to
+            } else {
+                path.points[segment + 1]
+            };
             let next = chart.position(end);
             let slowness = self.blocks.slowness_of(path.blocks[segment]);
             old += slowness * crate::vec3::distance(here, next);

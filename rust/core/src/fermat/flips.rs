@@ -152,12 +152,7 @@ impl<C: Chart> Refiner<'_, C> {
             .minimise(self.blocks, incoming, trial, smoothing_km, iterations);
     }
 
-    fn window_time(
-        &self,
-        path: &Path,
-        range: std::ops::Range<usize>,
-        from_surface: bool,
-    ) -> f64 {
+    fn window_time(&self, path: &Path, range: std::ops::Range<usize>, from_surface: bool) -> f64 {
         let outside = if from_surface {
             self.outside_time(path)
         } else {
@@ -205,9 +200,10 @@ fn crossing_detours<C: Chart>(
 ) -> Vec<Detour> {
     let side = 2 * along + usize::from(up);
     let (before, after) = (path.blocks[point - 1], path.blocks[point]);
-    let (Some(new_before), Some(new_after)) =
-        (blocks.neighbour(before, side), blocks.neighbour(after, side))
-    else {
+    let (Some(new_before), Some(new_after)) = (
+        blocks.neighbour(before, side),
+        blocks.neighbour(after, side),
+    ) else {
         return Vec::new();
     };
     let comes_from = point >= 2 && path.blocks[point - 2] == new_before;
@@ -230,13 +226,21 @@ fn crossing_detours<C: Chart>(
             let edge = if up { edge_range.1 } else { edge_range.0 };
             let mut middle = Vec::with_capacity(4);
             if !join_left {
-                middle.push((before, across(blocks, from, moved, along, edge, before), along as u8));
+                middle.push((
+                    before,
+                    across(blocks, from, moved, along, edge, before),
+                    along as u8,
+                ));
             }
             middle.push((new_before, moved, axis as u8));
             if join_right {
                 middle.push((new_after, to, path.axes[high]));
             } else {
-                middle.push((new_after, across(blocks, moved, to, along, edge, after), along as u8));
+                middle.push((
+                    new_after,
+                    across(blocks, moved, to, along, edge, after),
+                    along as u8,
+                ));
                 middle.push((after, to, path.axes[high]));
             }
             Detour {
@@ -250,12 +254,7 @@ fn crossing_detours<C: Chart>(
 }
 
 /// Courses for an entry point moved over the rim of its face.
-fn entry_detours<C: Chart>(
-    blocks: &Blocks<C>,
-    path: &Path,
-    along: usize,
-    up: bool,
-) -> Vec<Detour> {
+fn entry_detours<C: Chart>(blocks: &Blocks<C>, path: &Path, along: usize, up: bool) -> Vec<Detour> {
     let block = path.blocks[0];
     let axis = usize::from(path.axes[0]);
     let old_entry = path.points[0];
@@ -271,7 +270,11 @@ fn entry_detours<C: Chart>(
         low: 0,
         high: 1,
         middle: vec![
-            (next, across(blocks, entry, path.points[1], along, edge, block), along as u8),
+            (
+                next,
+                across(blocks, entry, path.points[1], along, edge, block),
+                along as u8,
+            ),
             (block, path.points[1], path.axes[1]),
         ],
         entry: Some((entry, axis as u8)),
@@ -290,12 +293,7 @@ fn entry_detours<C: Chart>(
 
 /// Moves the entry of the first block from one side of the model's surface to
 /// the adjoining one.
-fn onto_next_surface<C: Chart>(
-    blocks: &Blocks<C>,
-    path: &Path,
-    along: usize,
-    up: bool,
-) -> Detour {
+fn onto_next_surface<C: Chart>(blocks: &Blocks<C>, path: &Path, along: usize, up: bool) -> Detour {
     let block = path.blocks[0];
     let axis = usize::from(path.axes[0]);
     let mut entry = path.points[0];

@@ -66,8 +66,11 @@ impl Newton {
         };
         self.set_bounds(&problem, path);
         self.positions.clear();
-        self.positions
-            .extend(path.points.iter().map(|&point| blocks.chart().position(point)));
+        self.positions.extend(
+            path.points
+                .iter()
+                .map(|&point| blocks.chart().position(point)),
+        );
         let mut time = problem.time(&self.positions, path.points[0], &path.blocks);
         for _ in 0..iterations {
             if self.differentiate(&problem, path) < GRADIENT_TOLERANCE {
@@ -339,10 +342,5 @@ fn inverse(a: Matrix) -> Matrix {
     } else {
         1.0 / determinant
     };
-    [
-        a[3] * scale,
-        -a[1] * scale,
-        -a[2] * scale,
-        a[0] * scale,
-    ]
+    [a[3] * scale, -a[1] * scale, -a[2] * scale, a[0] * scale]
 }

@@ -101,7 +101,8 @@ impl<'a, C: Chart> CoarseSearch<'a, C> {
             let base = self.lattice.base(cell);
             for (number, node) in self.lattice.surface().iter().enumerate() {
                 let at = self.lattice.node_position(cell, number);
-                let time = self.blocks.chart().distance(at, source) * self.blocks.slowness_of(block);
+                let time =
+                    self.blocks.chart().distance(at, source) * self.blocks.slowness_of(block);
                 if (time as f32) < field.times[base + node.offset] {
                     field.times[base + node.offset] = time as f32;
                     self.announce(cell, number, time as f32, field);

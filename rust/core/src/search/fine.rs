@@ -8,19 +8,23 @@
 //! block on the other: within a block all nodes see each other, so a path never
 //! spends two segments in one block.
 
+use std::collections::HashMap;
+use std::sync::OnceLock;
+
 use crate::blocks::{Blocks, Cell, Side, face_axes};
 use crate::frame::Chart;
 use crate::lattice::Lattice;
 use crate::path::{FREE, Path};
-use crate::relax::{Changed, LANES, relax};
+use crate::relax::{Tabulated, relax_face};
+use crate::search::box_tables::{BoxTables, FaceLayout, Rows, rows_between};
 use crate::search::buckets::BucketQueue;
-use crate::vec3::Vec3;
+use crate::vec3::{Vec3, norm};
 
 const UNKNOWN: u32 = u32::MAX;
 const OUTSIDE: u32 = u32::MAX - 1;
 
-/// Share of a face left free at its rim, so that a node belongs to one face.
-const RIM: f64 = 0.003;
+/// Blocks on the sphere whose mean widths agree within this share have one table.
+const WIDTH_STEP: f64 = 0.002;
 
 /// Where a fine search begins.
 #[derive(Debug, Clone, Copy)]
@@ -37,7 +41,8 @@ pub enum Start<'a> {
 pub struct SurfaceStart {
     /// Block and side of each face.
     pub faces: Vec<(u32, Side)>,
-    /// `n × n` times (s) of each face in turn; infinite where no wave enters.
+    /// Times (s) of each face in turn, one per place of the face's layout;
+    /// infinite where no wave enters.
     pub times: Vec<f32>,
 }
 
@@ -46,9 +51,10 @@ pub struct SurfaceStart {
 pub struct FineSearch<'a, C> {
     blocks: &'a Blocks<C>,
     lattice: &'a Lattice,
-    nodes: usize,
-    lanes: usize,
-    fractions: Vec<f64>,
+    layout: FaceLayout,
+    box_of: Vec<u32>,
+    box_widths_km: Vec<[f64; 3]>,
+    tables: Vec<OnceLock<BoxTables>>,
     interpolation: Vec<(usize, f32)>,
     bucket_width_s: f32,
     face_offsets: [usize; 3],
@@ -75,14 +81,13 @@ pub struct FineField {
     face_stamp: Vec<u32>,
     face_slot: Vec<u32>,
     visited: Vec<BlockSlot>,
-    shapes: Vec<f32>,
     pending: Vec<u64>,
     faces: Vec<FaceSlot>,
     times: Vec<f32>,
     potentials: Vec<f32>,
     queue: BucketQueue,
-    sources: [Vec<Changed>; 6],
-    chosen: Vec<Changed>,
+    sources: [Vec<(u32, f32)>; 6],
+    chosen: [Vec<Tabulated>; 2],
     old: Vec<f32>,
 }
 
@@ -110,19 +115,21 @@ impl<'a, C: Chart> FineSearch<'a, C> {
     /// Prepares searches with `nodes × nodes` nodes on each face; the potential
     /// comes from a coarse search over `lattice`.
     pub fn new(blocks: &'a Blocks<C>, lattice: &'a Lattice, nodes: usize) -> Self {
-        let fractions: Vec<f64> = (0..nodes)
-            .map(|k| RIM + (1.0 - 2.0 * RIM) * k as f64 / (nodes - 1) as f64)
-            .collect();
+        let layout = FaceLayout::new(nodes);
         let steps = lattice.subdivisions();
-        let interpolation = fractions
-            .iter()
-            .map(|&fraction| {
-                let place = fraction * steps as f64;
+        let interpolation = (0..nodes)
+            .map(|index| {
+                let place = layout.fraction(index) * steps as f64;
                 let step = (place as usize).min(steps - 1);
                 (step, (place - step as f64) as f32)
             })
             .collect();
-        let fastest = blocks.slowness().iter().copied().fold(f64::INFINITY, f64::min);
+        let (box_of, box_widths_km) = box_classes(blocks);
+        let fastest = blocks
+            .slowness()
+            .iter()
+            .copied()
+            .fold(f64::INFINITY, f64::min);
         let narrowest = (0..3)
             .flat_map(|axis| blocks.edges(axis).windows(2))
             .map(|pair| pair[1] - pair[0])
@@ -133,9 +140,10 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         Self {
             blocks,
             lattice,
-            nodes,
-            lanes: (nodes * nodes).div_ceil(LANES) * LANES,
-            fractions,
+            layout,
+            box_of,
+            tables: box_widths_km.iter().map(|_| OnceLock::new()).collect(),
+            box_widths_km,
             interpolation,
             bucket_width_s: (0.5 * fastest * narrowest) as f32,
             face_offsets: [0, x_faces, x_faces + y_faces],
@@ -143,23 +151,35 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         }
     }
 
-    /// Nodes along each side of a face.
-    pub fn nodes(&self) -> usize {
-        self.nodes
+    /// Layout of the nodes on a face.
+    pub fn layout(&self) -> FaceLayout {
+        self.layout
     }
 
-    /// Grid coordinates (km) of a node on a face.
-    pub fn node_position(&self, block: u32, side: Side, node: usize) -> Vec3 {
+    /// Grid coordinates (km) of the node at a place on a face.
+    pub fn node_position(&self, block: u32, side: Side, place: usize) -> Vec3 {
         let axis = side / 2;
         let (u, v) = face_axes(axis);
         let mut at = [0.0; 3];
         let (low, high) = self.blocks.range(block, axis);
         at[axis] = if side % 2 == 1 { high } else { low };
-        for (along, k) in [(u, node / self.nodes), (v, node % self.nodes)] {
+        let (row, column) = (place / self.layout.lanes, place % self.layout.lanes);
+        for (along, index) in [(u, row), (v, column)] {
             let (low, high) = self.blocks.range(block, along);
-            at[along] = low + (high - low) * self.fractions[k];
+            at[along] = low + (high - low) * self.layout.fraction(index);
         }
         at
+    }
+
+    /// Places of all nodes on a face.
+    pub fn places(&self) -> impl Iterator<Item = usize> + use<C> {
+        let FaceLayout { count, lanes } = self.layout;
+        (0..count).flat_map(move |row| (0..count).map(move |column| row * lanes + column))
+    }
+
+    fn table(&self, block: u32) -> &BoxTables {
+        let class = self.box_of[block as usize] as usize;
+        self.tables[class].get_or_init(|| BoxTables::new(self.layout, self.box_widths_km[class]))
     }
 
     fn face_id(&self, cell: Cell, side: Side) -> usize {
@@ -172,7 +192,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
     }
 
     fn words(&self) -> usize {
-        (self.nodes * self.nodes).div_ceil(64)
+        self.layout.size().div_ceil(64)
     }
 
     /// Searches from `start` and returns the path from there to `goal` (grid
@@ -202,15 +222,13 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         field.face_slot.resize(self.face_count, 0);
         field.stamp += 1;
         field.visited.clear();
-        field.shapes.clear();
         field.pending.clear();
         field.faces.clear();
         field.queue.reset(0, self.bucket_width_s);
-        field.old.resize(self.lanes, 0.0);
+        field.old.resize(self.layout.size(), 0.0);
     }
 
     fn start_at_point(&self, source: Vec3, bound: Bound<'_>, field: &mut FineField) {
-        let count = self.nodes * self.nodes;
         for block in self.blocks.around(source) {
             let slot = self.block_slot(block, field);
             let slowness = self.blocks.slowness_of(block);
@@ -219,12 +237,11 @@ impl<'a, C: Chart> FineSearch<'a, C> {
                     continue;
                 }
                 let face = self.filled_face(slot, side, bound, field);
-                let times: Vec<f32> = (0..count)
-                    .map(|node| {
-                        let at = self.node_position(block, side, node);
-                        (self.blocks.chart().distance(at, source) * slowness) as f32
-                    })
-                    .collect();
+                let mut times = vec![f32::INFINITY; self.layout.size()];
+                for place in self.places() {
+                    let at = self.node_position(block, side, place);
+                    times[place] = (self.blocks.chart().distance(at, source) * slowness) as f32;
+                }
                 let next = self.neighbour_slot(slot, side, field);
                 self.offer(&times, face, next, side ^ 1, bound, field);
             }
@@ -232,8 +249,8 @@ impl<'a, C: Chart> FineSearch<'a, C> {
     }
 
     fn start_on_surface(&self, surface: &SurfaceStart, bound: Bound<'_>, field: &mut FineField) {
-        let count = self.nodes * self.nodes;
-        for (&(block, side), times) in surface.faces.iter().zip(surface.times.chunks(count)) {
+        let size = self.layout.size();
+        for (&(block, side), times) in surface.faces.iter().zip(surface.times.chunks(size)) {
             let slot = self.block_slot(block, field);
             let face = self.filled_face(slot, side, bound, field);
             self.offer(times, face, slot, side, bound, field);
@@ -254,7 +271,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         let words = self.words();
         let mut earliest = f32::INFINITY;
         for (node, &time) in times.iter().enumerate() {
-            let place = face * self.lanes + node;
+            let place = face * self.layout.size() + node;
             if time >= field.times[place] {
                 continue;
             }
@@ -295,29 +312,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             .pending
             .resize(field.visited.len() * 6 * self.words(), 0);
         field.queue.add_slot();
-        self.add_shape(block, field);
         slot
-    }
-
-    /// Positions of all face nodes of a block relative to its low corner, in
-    /// axes turned by the block's longitude: x, y and z lanes of each side.
-    fn add_shape(&self, block: u32, field: &mut FineField) {
-        let chart = self.blocks.chart();
-        let first = [0, 1, 2].map(|axis| self.blocks.range(block, axis).0);
-        let origin = chart.position([0.0, first[1], first[2]]);
-        let start = field.shapes.len();
-        field.shapes.resize(start + 18 * self.lanes, 1e6);
-        for side in 0..6 {
-            let lanes = &mut field.shapes[start + 3 * side * self.lanes..][..3 * self.lanes];
-            for node in 0..self.nodes * self.nodes {
-                let mut grid = self.node_position(block, side, node);
-                grid[0] -= first[0];
-                let position = chart.position(grid);
-                for axis in 0..3 {
-                    lanes[axis * self.lanes + node] = (position[axis] - origin[axis]) as f32;
-                }
-            }
-        }
     }
 
     fn face(&self, slot: usize, side: Side, bound: Bound<'_>, field: &mut FineField) -> usize {
@@ -341,7 +336,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
                 least_potential: least,
                 filled: false,
             });
-            let length = field.faces.len() * self.lanes;
+            let length = field.faces.len() * self.layout.size();
             if field.times.len() < length {
                 field.times.resize(length, f32::INFINITY);
                 field.potentials.resize(length, f32::INFINITY);
@@ -364,8 +359,9 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             return face;
         }
         field.faces[face].filled = true;
-        let place = face * self.lanes;
-        field.times[place..place + self.lanes].fill(f32::INFINITY);
+        let size = self.layout.size();
+        let place = face * size;
+        field.times[place..place + size].fill(f32::INFINITY);
         let cell = self.blocks.cell(field.visited[slot].block);
         let (start, stride_u, stride_v) = self.lattice.face(cell, side);
         let coarse = |i: usize, j: usize| bound.potential[start + i * stride_u + j * stride_v];
@@ -373,7 +369,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             for (column, &(j, fv)) in self.interpolation.iter().enumerate() {
                 let low = coarse(i, j) + fv * (coarse(i, j + 1) - coarse(i, j));
                 let high = coarse(i + 1, j) + fv * (coarse(i + 1, j + 1) - coarse(i + 1, j));
-                field.potentials[place + row * self.nodes + column] = low + fu * (high - low);
+                field.potentials[place + row * self.layout.lanes + column] = low + fu * (high - low);
             }
         }
         face
@@ -386,7 +382,11 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         }
         let block = field.visited[slot].block;
         let stride = self.blocks.stride(side / 2) as u32;
-        let next = if side % 2 == 1 { block + stride } else { block - stride };
+        let next = if side % 2 == 1 {
+            block + stride
+        } else {
+            block - stride
+        };
         let next_slot = self.block_slot(next, field);
         field.visited[slot].neighbours[side] = next_slot as u32;
         next_slot
@@ -394,8 +394,6 @@ impl<'a, C: Chart> FineSearch<'a, C> {
 
     fn visit(&self, slot: usize, bound: Bound<'_>, field: &mut FineField) {
         let earliest = self.gather_sources(slot, field);
-        let block = field.visited[slot].block;
-        let slowness = self.blocks.slowness_of(block) as f32;
         for side in 0..6 {
             if field.visited[slot].neighbours[side] == OUTSIDE {
                 continue;
@@ -406,11 +404,10 @@ impl<'a, C: Chart> FineSearch<'a, C> {
                 .fold(f32::INFINITY, f32::min);
             let face = self.face(slot, side, bound, field);
             let latest = bound.limit_s - bound.scale * field.faces[face].least_potential;
-            if first > latest {
-                continue;
+            if first <= latest && self.choose_sources(slot, side, latest, field) {
+                let face = self.filled_face(slot, side, bound, field);
+                self.relax_side(slot, side, face, bound, field);
             }
-            let face = self.filled_face(slot, side, bound, field);
-            self.relax_face(slot, side, face, latest, slowness, bound, field);
         }
     }
 
@@ -424,56 +421,76 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             if face == UNKNOWN {
                 continue;
             }
-            let shape = &field.shapes[(slot * 6 + side) * 3 * self.lanes..][..3 * self.lanes];
             for word in 0..words {
                 let mut bits = std::mem::take(&mut field.pending[(slot * 6 + side) * words + word]);
                 while bits != 0 {
-                    let node = word * 64 + bits.trailing_zeros() as usize;
+                    let place = word * 64 + bits.trailing_zeros() as usize;
                     bits &= bits - 1;
-                    let time_s = field.times[face as usize * self.lanes + node];
+                    let time_s = field.times[face as usize * self.layout.size() + place];
                     *earliest = earliest.min(time_s);
-                    let at = [0, 1, 2].map(|axis| shape[axis * self.lanes + node]);
-                    field.sources[side].push(Changed { at, time_s });
+                    field.sources[side].push((place as u32, time_s));
                 }
             }
         }
         earliest
     }
 
-    #[expect(clippy::too_many_arguments, reason = "one step of the visit, split off")]
-    fn relax_face(
+    /// Lists the sources that may reach `side` by `latest`; false if none.
+    fn choose_sources(
+        &self,
+        slot: usize,
+        side: Side,
+        latest: f32,
+        field: &mut FineField,
+    ) -> bool {
+        let block = field.visited[slot].block;
+        let slowness = self.blocks.slowness_of(block) as f32;
+        let table = self.table(block);
+        field.chosen[0].clear();
+        field.chosen[1].clear();
+        for from in (0..6).filter(|&from| from != side) {
+            let chosen = &mut field.chosen[rows_between(from, side) as usize];
+            for &(place, time_s) in &field.sources[from] {
+                let place = place as usize;
+                let node = (place / self.layout.lanes, place % self.layout.lanes);
+                let (start, least_km) = table.rows_from(from, node, side);
+                if time_s + slowness * least_km <= latest {
+                    let start = start as u32;
+                    chosen.push(Tabulated { start, time_s });
+                }
+            }
+        }
+        !(field.chosen[0].is_empty() && field.chosen[1].is_empty())
+    }
+
+    fn relax_side(
         &self,
         slot: usize,
         side: Side,
         face: usize,
-        latest: f32,
-        slowness: f32,
         bound: Bound<'_>,
         field: &mut FineField,
     ) {
-        field.chosen.clear();
-        for other in (0..6).filter(|&other| other != side) {
-            let alive = field.sources[other].iter().filter(|s| s.time_s <= latest);
-            field.chosen.extend(alive);
-        }
-        if field.chosen.is_empty() {
-            return;
-        }
-        let lanes = self.lanes;
-        let shape = &field.shapes[(slot * 6 + side) * 3 * lanes..][..3 * lanes];
-        let (x, rest) = shape.split_at(lanes);
-        let (y, z) = rest.split_at(lanes);
-        let times = &mut field.times[face * lanes..][..lanes];
+        let block = field.visited[slot].block;
+        let slowness = self.blocks.slowness_of(block) as f32;
+        let values = self.table(block).values();
+        let size = self.layout.size();
+        let times = &mut field.times[face * size..][..size];
         field.old.copy_from_slice(times);
-        relax(x, y, z, &field.chosen, slowness, times);
+        for rows in [Rows::Long, Rows::Short] {
+            let chosen = &field.chosen[rows as usize];
+            relax_face((self.layout, rows), values, chosen, slowness, times);
+        }
         let words = self.words();
         let mut alive = [0_u64; 4];
         let mut earliest = f32::INFINITY;
-        let potentials = &field.potentials[face * lanes..][..lanes];
-        for node in 0..self.nodes * self.nodes {
-            let time = times[node];
-            if time < field.old[node] && time + bound.scale * potentials[node] <= bound.limit_s {
-                alive[node / 64] |= 1 << (node % 64);
+        let potentials = &field.potentials[face * size..][..size];
+        for (place, ((&time, &old), &potential)) in
+            times.iter().zip(&field.old).zip(potentials).enumerate()
+        {
+            // Padding has an infinite potential and never lives.
+            if time < old && time + bound.scale * potential <= bound.limit_s {
+                alive[place / 64] |= 1 << (place % 64);
                 earliest = earliest.min(time);
             }
         }
@@ -509,7 +526,8 @@ impl<'a, C: Chart> FineSearch<'a, C> {
                         best = (time, block, None);
                     }
                 }
-                if let Some((time, side, node)) = self.best_node(block, at, (arrived_by, below), field)
+                if let Some((time, side, node)) =
+                    self.best_node(block, at, (arrived_by, below), field)
                     && time < best.0
                 {
                     best = (time, block, Some((side, node)));
@@ -544,7 +562,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
 
     fn node_time(&self, block: u32, side: Side, node: usize, field: &FineField) -> f32 {
         let face = field.face_slot[self.face_id(self.blocks.cell(block), side)] as usize;
-        field.times[face * self.lanes + node]
+        field.times[face * self.layout.size() + node]
     }
 
     /// The best node of a block's faces to come from: not of the side just
@@ -559,12 +577,11 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         if field.block_stamp[block as usize] != field.stamp {
             return None;
         }
-        let slot = field.block_slot[block as usize] as usize;
-        let chart = self.blocks.chart();
-        let first = [0, 1, 2].map(|axis| self.blocks.range(block, axis).0);
-        let origin = chart.position([0.0, first[1], first[2]]);
-        let here = chart.position([at[0] - first[0], at[1], at[2]]);
-        let local = [0, 1, 2].map(|axis| (here[axis] - origin[axis]) as f32);
+        let table = self.table(block);
+        let here = [0, 1, 2].map(|axis| {
+            let (low, high) = self.blocks.range(block, axis);
+            (at[axis] - low) / (high - low) * table.width_km(axis)
+        });
         let slowness = self.blocks.slowness_of(block) as f32;
         let cell = self.blocks.cell(block);
         let mut best: Option<(f32, Side, usize)> = None;
@@ -574,18 +591,50 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             if field.face_stamp[id] != field.stamp || !field.faces[face].filled {
                 continue;
             }
-            let times = &field.times[face * self.lanes..][..self.lanes];
-            let shape = &field.shapes[(slot * 6 + side) * 3 * self.lanes..][..3 * self.lanes];
-            for node in 0..self.nodes * self.nodes {
-                let dx = shape[node] - local[0];
-                let dy = shape[self.lanes + node] - local[1];
-                let dz = shape[2 * self.lanes + node] - local[2];
-                let time = times[node] + slowness * (dx * dx + dy * dy + dz * dz).sqrt();
-                if times[node] < below && best.is_none_or(|known| time < known.0) {
-                    best = Some((time, side, node));
+            let axis = side / 2;
+            let (u, v) = face_axes(axis);
+            let width = [0, 1, 2].map(|axis| table.width_km(axis));
+            let off_plane = here[axis] - if side % 2 == 1 { width[axis] } else { 0.0 };
+            for place in self.places() {
+                let known = field.times[face * self.layout.size() + place];
+                if known >= below {
+                    continue;
+                }
+                let (row, column) = (place / self.layout.lanes, place % self.layout.lanes);
+                let du = here[u] - self.layout.fraction(row) * width[u];
+                let dv = here[v] - self.layout.fraction(column) * width[v];
+                let way = (off_plane * off_plane + du * du + dv * dv).sqrt();
+                let time = known + slowness * way as f32;
+                if best.is_none_or(|known| time < known.0) {
+                    best = Some((time, side, place));
                 }
             }
         }
         best
     }
+}
+
+/// Sorts blocks by their mean widths: the class of each block and the widths
+/// (km) of each class.
+fn box_classes<C: Chart>(blocks: &Blocks<C>) -> (Vec<u32>, Vec<[f64; 3]>) {
+    let mut known: HashMap<[i64; 3], u32> = HashMap::new();
+    let mut widths_km = Vec::new();
+    let box_of = (0..blocks.count() as u32)
+        .map(|block| {
+            let ranges = [0, 1, 2].map(|axis| blocks.range(block, axis));
+            let middle = ranges.map(|(low, high)| 0.5 * (low + high));
+            let tangents = blocks.chart().tangents(middle);
+            let widths = [0, 1, 2]
+                .map(|axis| (ranges[axis].1 - ranges[axis].0) * norm(tangents[axis]));
+            let key = widths.map(|width| {
+                let place = if C::FLAT { width / 1e-6 } else { width.ln() / WIDTH_STEP };
+                place.round() as i64
+            });
+            *known.entry(key).or_insert_with(|| {
+                widths_km.push(widths);
+                (widths_km.len() - 1) as u32
+            })
+        })
+        .collect();
+    (box_of, widths_km)
 }

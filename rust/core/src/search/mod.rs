@@ -3,6 +3,7 @@
 //! ([`fine`]).
 
 pub mod backtrack;
+pub mod box_tables;
 pub mod buckets;
 pub mod coarse;
 pub mod fine;
