@@ -10,7 +10,10 @@ use std::collections::HashMap;
 use crate::blocks::{Blocks, Cell, face_axes};
 use crate::frame::Chart;
 use crate::relax::LANES;
-use crate::vec3::Vec3;
+use crate::vec3::{Vec3, norm};
+
+/// Most values that tables of distances may hold in all (1 MiB).
+const LARGEST_TABLES: usize = 1 << 18;
 
 /// A node on the surface of a block.
 #[derive(Debug, Clone)]
@@ -35,6 +38,7 @@ pub struct Lattice {
     lanes: usize,
     coordinates: Vec<Vec<f64>>,
     shapes: Vec<f32>,
+    distances: Vec<f32>,
     shape_columns: Vec<usize>,
     shape_rows: [Vec<usize>; 2],
     row_counts: [usize; 2],
@@ -60,6 +64,7 @@ impl Lattice {
             lanes,
             coordinates,
             shapes: Vec::new(),
+            distances: Vec::new(),
             shape_columns: shape_classes(blocks.edges(0), true),
             shape_rows: [
                 shape_classes(blocks.edges(1), C::FLAT),
@@ -68,6 +73,7 @@ impl Lattice {
             row_counts: [0; 2],
         };
         lattice.fill_shapes(blocks);
+        lattice.fill_distances();
         lattice
     }
 
@@ -129,6 +135,37 @@ impl Lattice {
         let class = self.shape_class(cell);
         let length = 3 * self.lanes;
         &self.shapes[class * length..][..length]
+    }
+
+    /// Distances (km) between all surface nodes of a block, a row of
+    /// [`Self::lanes`] for each; only where blocks have few enough shapes for
+    /// the tables to stay in a near cache.
+    #[inline]
+    pub fn distances(&self, cell: Cell) -> Option<&[f32]> {
+        if self.distances.is_empty() {
+            return None;
+        }
+        let length = self.surface.len() * self.lanes;
+        let class = self.shape_class(cell);
+        Some(&self.distances[class * length..][..length])
+    }
+
+    fn fill_distances(&mut self) {
+        let classes = self.shapes.len() / (3 * self.lanes);
+        let length = self.surface.len() * self.lanes;
+        if classes * length > LARGEST_TABLES {
+            return;
+        }
+        for shape in self.shapes.chunks(3 * self.lanes) {
+            let (x, rest) = shape.split_at(self.lanes);
+            let (y, z) = rest.split_at(self.lanes);
+            for from in 0..self.surface.len() {
+                self.distances.extend((0..self.lanes).map(|onto| {
+                    let way = [x, y, z].map(|lanes| f64::from(lanes[onto] - lanes[from]));
+                    norm(way) as f32
+                }));
+            }
+        }
     }
 
     fn shape_class(&self, cell: Cell) -> usize {

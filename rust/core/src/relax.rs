@@ -35,10 +35,7 @@ pub struct Tabulated {
 /// Lowers `times[k]` to `source.time_s + slowness · |target_k − source|` where
 /// that is earlier, over all sources. `x`, `y` and `z` hold the targets'
 /// positions (km); all slices have the same length, a multiple of [`LANES`].
-#[multiversion(targets(
-    "x86_64+avx512f+avx512bw+avx512dq+avx512vl+fma",
-    "x86_64+avx2+fma"
-))]
+#[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl+fma", "x86_64+avx2+fma"))]
 pub fn relax(
     x: &[f32],
     y: &[f32],
@@ -69,10 +66,7 @@ pub fn relax(
 }
 
 /// As [`relax`], with the distances (km) of each source in a row of `table`.
-#[multiversion(targets(
-    "x86_64+avx512f+avx512bw+avx512dq+avx512vl+fma",
-    "x86_64+avx2+fma"
-))]
+#[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl+fma", "x86_64+avx2+fma"))]
 pub fn relax_tabulated(table: &[f32], sources: &[Tabulated], slowness: f32, times: &mut [f32]) {
     for (chunk, times) in times.as_chunks_mut::<LANES>().0.iter_mut().enumerate() {
         let mut best = *times;
@@ -165,3 +159,40 @@ face_kernel!(face_12_long, 12, 16, 32);
 face_kernel!(face_12_short, 12, 16, 16);
 face_kernel!(face_16_long, 16, 16, 32);
 face_kernel!(face_16_short, 16, 16, 16);
+
+/// Sets a bit for every place whose time was lowered and which lives still:
+/// time plus scaled potential within the limit. Returns the earliest of their
+/// times. Places with an infinite potential never live.
+#[multiversion(targets("x86_64+avx512f+avx512bw+avx512dq+avx512vl+fma", "x86_64+avx2+fma"))]
+pub fn lowered(
+    times: &[f32],
+    old: &[f32],
+    potentials: &[f32],
+    (scale, limit_s): (f32, f32),
+    alive: &mut [u64; 4],
+) -> f32 {
+    const GROUP: usize = 16;
+    let groups = times
+        .as_chunks::<GROUP>()
+        .0
+        .iter()
+        .zip(old.as_chunks::<GROUP>().0)
+        .zip(potentials.as_chunks::<GROUP>().0);
+    let mut earliest = [f32::INFINITY; GROUP];
+    for (group, ((times, old), potentials)) in groups.enumerate() {
+        let mut bits = 0_u64;
+        for lane in 0..GROUP {
+            let time = times[lane];
+            let lives = time < old[lane] && time + scale * potentials[lane] <= limit_s;
+            bits |= u64::from(lives) << lane;
+            let candidate = if lives { time } else { f32::INFINITY };
+            earliest[lane] = if candidate < earliest[lane] {
+                candidate
+            } else {
+                earliest[lane]
+            };
+        }
+        alive[group * GROUP / 64] |= bits << (group * GROUP % 64);
+    }
+    earliest.into_iter().fold(f32::INFINITY, f32::min)
+}

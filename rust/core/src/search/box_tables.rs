@@ -69,7 +69,110 @@ pub struct BoxTables {
     layout: FaceLayout,
     widths_km: [f64; 3],
     values: Vec<f32>,
-    starts: [[usize; 6]; 6],
+}
+
+/// Where the rows from one node to a face start, and how near they come.
+#[derive(Debug, Clone, Copy, Default)]
+pub struct RowsFrom {
+    /// Index of the first distance among [`BoxTables::values`].
+    pub start: u32,
+    /// Least distance between node and face, as a share of the box's width
+    /// across the face.
+    pub least: f32,
+}
+
+/// [`RowsFrom`] for every place on every side of a box, to every other side;
+/// the same for all boxes.
+#[derive(Debug)]
+pub struct RowIndex {
+    size: usize,
+    rows: Vec<RowsFrom>,
+}
+
+impl RowIndex {
+    /// The index of a layout.
+    #[must_use]
+    pub fn new(layout: FaceLayout) -> Self {
+        let starts = section_starts(layout);
+        let size = layout.size();
+        let mut rows = vec![RowsFrom::default(); 36 * size];
+        for from in 0..6 {
+            for onto in (0..6).filter(|&onto| onto != from) {
+                for row in 0..layout.count {
+                    for column in 0..layout.count {
+                        let place = row * layout.lanes + column;
+                        let mut found = rows_from(layout, from, (row, column), onto);
+                        found.start += starts[from][onto / 2] as u32;
+                        rows[(from * 6 + onto) * size + place] = found;
+                    }
+                }
+            }
+        }
+        Self { size, rows }
+    }
+
+    /// Rows from all places of side `from` to side `onto`.
+    #[must_use]
+    #[inline]
+    pub fn between(&self, from: Side, onto: Side) -> &[RowsFrom] {
+        &self.rows[(from * 6 + onto) * self.size..][..self.size]
+    }
+}
+
+/// Rows from node (`row`, `column`) of side `from` to side `onto`, counted from
+/// the start of their section.
+fn rows_from(
+    layout: FaceLayout,
+    from: Side,
+    (row, column): (usize, usize),
+    onto: Side,
+) -> RowsFrom {
+    let n = layout.count;
+    if from / 2 == onto / 2 {
+        return RowsFrom {
+            start: (row * n * layout.long_row() + (n - 1 - column)) as u32,
+            least: 1.0,
+        };
+    }
+    let (first, _) = face_axes(from / 2);
+    let (away, common) = if first == onto / 2 {
+        (row, column)
+    } else {
+        (column, row)
+    };
+    let away = mirrored(onto, away, n);
+    let shift = n - 1 - common;
+    let start = match rows_between(from, onto) {
+        Rows::Long => away * n * layout.long_row() + shift,
+        Rows::Short => (away * (2 * n - 1) + shift) * layout.lanes,
+    };
+    RowsFrom {
+        start: start as u32,
+        least: layout.fraction(away) as f32,
+    }
+}
+
+/// Where the section from each side to each axis starts in a box's table, in
+/// the order in which [`BoxTables::new`] fills it.
+fn section_starts(layout: FaceLayout) -> [[usize; 3]; 6] {
+    let n = layout.count;
+    let mut starts = [[0; 3]; 6];
+    let mut next = 0;
+    for axis in 0..3 {
+        starts[2 * axis][axis] = next;
+        starts[2 * axis + 1][axis] = next;
+        next += n * n * layout.long_row();
+    }
+    for (from, starts) in starts.iter_mut().enumerate() {
+        for onto in (0..3).filter(|&axis| axis != from / 2) {
+            starts[onto] = next;
+            next += match rows_between(from, 2 * onto) {
+                Rows::Long => n * n * layout.long_row(),
+                Rows::Short => n * (2 * n - 1) * layout.lanes,
+            };
+        }
+    }
+    starts
 }
 
 impl BoxTables {
@@ -80,21 +183,16 @@ impl BoxTables {
             layout,
             widths_km,
             values: Vec::new(),
-            starts: [[0; 6]; 6],
         };
         for axis in 0..3 {
-            let start = tables.add_opposite(axis);
-            tables.starts[2 * axis][2 * axis + 1] = start;
-            tables.starts[2 * axis + 1][2 * axis] = start;
+            tables.add_opposite(axis);
         }
         for from in 0..6 {
-            for onto_axis in (0..3).filter(|&axis| axis != from / 2) {
-                let start = match rows_between(from, 2 * onto_axis) {
-                    Rows::Long => tables.add_shifted_lanes(from, onto_axis),
-                    Rows::Short => tables.add_shifted_rows(from, onto_axis),
-                };
-                tables.starts[from][2 * onto_axis] = start;
-                tables.starts[from][2 * onto_axis + 1] = start;
+            for onto in (0..3).filter(|&axis| axis != from / 2) {
+                match rows_between(from, 2 * onto) {
+                    Rows::Long => tables.add_shifted_lanes(from, onto),
+                    Rows::Short => tables.add_shifted_rows(from, onto),
+                }
             }
         }
         tables
@@ -112,30 +210,6 @@ impl BoxTables {
         self.widths_km[axis]
     }
 
-    /// Where the rows from node (`row`, `column`) of side `from` to side `onto`
-    /// start among [`Self::values`], and the least distance (km) between that
-    /// node and the side.
-    #[must_use]
-    #[inline]
-    pub fn rows_from(&self, from: Side, (row, column): (usize, usize), onto: Side) -> (usize, f32) {
-        let n = self.layout.count;
-        let start = self.starts[from][onto];
-        if from / 2 == onto / 2 {
-            let offset = row * n * self.layout.long_row() + (n - 1 - column);
-            return (start + offset, self.widths_km[from / 2] as f32);
-        }
-        let (first, _) = face_axes(from / 2);
-        let (away, common) = if first == onto / 2 { (row, column) } else { (column, row) };
-        let away = if onto % 2 == 1 { n - 1 - away } else { away };
-        let least = (self.layout.fraction(away) * self.widths_km[onto / 2]) as f32;
-        let shift = n - 1 - common;
-        let offset = match rows_between(from, onto) {
-            Rows::Long => away * n * self.layout.long_row() + shift,
-            Rows::Short => (away * (2 * n - 1) + shift) * self.layout.lanes,
-        };
-        (start + offset, least)
-    }
-
     fn place(&self, axis: usize, index: usize) -> f64 {
         self.layout.fraction(index) * self.widths_km[axis]
     }
@@ -150,8 +224,7 @@ impl BoxTables {
         self.values.push((a * a + b * b + c * c).sqrt() as f32);
     }
 
-    fn add_opposite(&mut self, axis: usize) -> usize {
-        let start = self.values.len();
+    fn add_opposite(&mut self, axis: usize) {
         let (u, v) = face_axes(axis);
         let n = self.layout.count;
         for row in 0..n {
@@ -162,11 +235,9 @@ impl BoxTables {
                 }
             }
         }
-        start
     }
 
-    fn add_shifted_lanes(&mut self, from: Side, onto_axis: usize) -> usize {
-        let start = self.values.len();
+    fn add_shifted_lanes(&mut self, from: Side, onto_axis: usize) {
         let axis = from / 2;
         let common = 3 - axis - onto_axis;
         let n = self.layout.count;
@@ -179,11 +250,9 @@ impl BoxTables {
                 }
             }
         }
-        start
     }
 
-    fn add_shifted_rows(&mut self, from: Side, onto_axis: usize) -> usize {
-        let start = self.values.len();
+    fn add_shifted_rows(&mut self, from: Side, onto_axis: usize) {
         let axis = from / 2;
         let common = 3 - axis - onto_axis;
         let n = self.layout.count;
@@ -197,13 +266,16 @@ impl BoxTables {
                 }
             }
         }
-        start
     }
 }
 
 /// Index along the axis of side `from`, counted from that side.
 fn mirrored(from: Side, index: usize, count: usize) -> usize {
-    if from % 2 == 1 { count - 1 - index } else { index }
+    if from % 2 == 1 {
+        count - 1 - index
+    } else {
+        index
+    }
 }
 
 /// How rows from side `from` to side `onto` are stored.
@@ -212,5 +284,9 @@ fn mirrored(from: Side, index: usize, count: usize) -> usize {
 pub fn rows_between(from: Side, onto: Side) -> Rows {
     let (axis, onto_axis) = (from / 2, onto / 2);
     let common_is_last = axis == onto_axis || face_axes(onto_axis).1 == 3 - axis - onto_axis;
-    if common_is_last { Rows::Long } else { Rows::Short }
+    if common_is_last {
+        Rows::Long
+    } else {
+        Rows::Short
+    }
 }

@@ -10,7 +10,7 @@ use crate::error::Result;
 use crate::frame::Chart;
 use crate::lattice::Lattice;
 use crate::monitor::Monitor;
-use crate::relax::{Changed, relax};
+use crate::relax::{Changed, Tabulated, relax, relax_tabulated};
 use crate::search::buckets::BucketQueue;
 use crate::vec3::Vec3;
 
@@ -27,6 +27,23 @@ pub struct CoarseSearch<'a, C> {
     words: usize,
 }
 
+/// Nodes lowered in one visit, by the displacement of the blocks that share
+/// them.
+#[derive(Debug)]
+struct Handover {
+    nodes: [[u64; 4]; 27],
+    earliest: [f32; 27],
+}
+
+impl Default for Handover {
+    fn default() -> Self {
+        Self {
+            nodes: [[0; 4]; 27],
+            earliest: [f32::INFINITY; 27],
+        }
+    }
+}
+
 /// Arrival times of one search and the memory it works in.
 #[derive(Debug, Default)]
 pub struct CoarseField {
@@ -34,6 +51,8 @@ pub struct CoarseField {
     pending: Vec<u64>,
     queue: BucketQueue,
     changed: Vec<Changed>,
+    tabulated: Vec<Tabulated>,
+    handed: Handover,
     old: Vec<f32>,
     new: Vec<f32>,
 }
@@ -101,28 +120,49 @@ impl<'a, C: Chart> CoarseSearch<'a, C> {
             let base = self.lattice.base(cell);
             for (number, node) in self.lattice.surface().iter().enumerate() {
                 let at = self.lattice.node_position(cell, number);
-                let time =
-                    self.blocks.chart().distance(at, source) * self.blocks.slowness_of(block);
-                if (time as f32) < field.times[base + node.offset] {
-                    field.times[base + node.offset] = time as f32;
-                    self.announce(cell, number, time as f32, field);
+                let way = self.blocks.chart().distance(at, source);
+                let time = (way * self.blocks.slowness_of(block)) as f32;
+                if time < field.times[base + node.offset] {
+                    field.times[base + node.offset] = time;
+                    self.note(number, time, &mut field.handed);
                     field.pending[block as usize * self.words + number / 64] |= 1 << (number % 64);
-                    field.queue.lower(block, time as f32);
+                    field.queue.lower(block, time);
                 }
             }
+            self.hand_over(cell, field);
         }
     }
 
-    /// Marks a node as pending in the other blocks that share it.
+    /// Notes a lowered node for the other blocks that share it.
     #[inline]
-    fn announce(&self, cell: Cell, number: usize, time: f32, field: &mut CoarseField) {
+    fn note(&self, number: usize, time: f32, handed: &mut Handover) {
         for &(code, there) in &self.lattice.surface()[number].shared {
-            let Some(block) = self.displaced(cell, code) else {
+            let code = usize::from(code);
+            handed.nodes[code][usize::from(there) / 64] |= 1 << (there % 64);
+            handed.earliest[code] = handed.earliest[code].min(time);
+        }
+    }
+
+    /// Marks the noted nodes as pending in the blocks around.
+    fn hand_over(&self, cell: Cell, field: &mut CoarseField) {
+        for code in 0..27_u8 {
+            let earliest = &mut field.handed.earliest[usize::from(code)];
+            if !earliest.is_finite() {
                 continue;
-            };
-            let word = block as usize * self.words + usize::from(there) / 64;
-            field.pending[word] |= 1 << (there % 64);
-            field.queue.lower(block, time);
+            }
+            let time = std::mem::replace(earliest, f32::INFINITY);
+            let nodes = std::mem::take(&mut field.handed.nodes[usize::from(code)]);
+            if let Some(block) = self.displaced(cell, code) {
+                let place = block as usize * self.words;
+                for (pending, nodes) in field.pending[place..]
+                    .iter_mut()
+                    .zip(nodes)
+                    .take(self.words)
+                {
+                    *pending |= nodes;
+                }
+                field.queue.lower(block, time);
+            }
         }
     }
 
@@ -144,33 +184,52 @@ impl<'a, C: Chart> CoarseSearch<'a, C> {
         let cell = self.blocks.cell(block);
         let base = self.lattice.base(cell);
         let surface = self.lattice.surface();
-        let (x, y, z) = split_shape(self.lattice.shape(cell), self.lattice.lanes());
         for (time, node) in field.old.iter_mut().zip(surface) {
             *time = field.times[base + node.offset];
         }
         field.new.copy_from_slice(&field.old);
-        field.changed.clear();
-        for word in 0..self.words {
-            let slot = block as usize * self.words + word;
-            let mut bits = std::mem::take(&mut field.pending[slot]);
-            while bits != 0 {
-                let number = word * 64 + bits.trailing_zeros() as usize;
-                bits &= bits - 1;
-                field.changed.push(Changed {
-                    at: [x[number], y[number], z[number]],
-                    time_s: field.old[number],
-                });
-            }
-        }
         let slowness = self.slowness[block as usize];
-        relax(x, y, z, &field.changed, slowness, &mut field.new);
+        if let Some(table) = self.lattice.distances(cell) {
+            let row = self.lattice.lanes() as u32;
+            let CoarseField { tabulated, old, .. } = field;
+            tabulated.clear();
+            for_each_bit(
+                &mut field.pending,
+                block as usize * self.words,
+                self.words,
+                |number| {
+                    tabulated.push(Tabulated {
+                        start: number as u32 * row,
+                        time_s: old[number],
+                    });
+                },
+            );
+            relax_tabulated(table, tabulated, slowness, &mut field.new);
+        } else {
+            let (x, y, z) = split_shape(self.lattice.shape(cell), self.lattice.lanes());
+            let CoarseField { changed, old, .. } = field;
+            changed.clear();
+            for_each_bit(
+                &mut field.pending,
+                block as usize * self.words,
+                self.words,
+                |number| {
+                    changed.push(Changed {
+                        at: [x[number], y[number], z[number]],
+                        time_s: old[number],
+                    });
+                },
+            );
+            relax(x, y, z, changed, slowness, &mut field.new);
+        }
         for (number, node) in surface.iter().enumerate() {
             let time = field.new[number];
             if time < field.old[number] && time <= limit_s {
                 field.times[base + node.offset] = time;
-                self.announce(cell, number, time, field);
+                self.note(number, time, &mut field.handed);
             }
         }
+        self.hand_over(cell, field);
     }
 
     /// The block model searched.
@@ -190,4 +249,16 @@ pub fn split_shape(shape: &[f32], lanes: usize) -> (&[f32], &[f32], &[f32]) {
     let (x, rest) = shape.split_at(lanes);
     let (y, z) = rest.split_at(lanes);
     (x, y, z)
+}
+
+/// Calls `act` with the number of every set bit of a few words, and clears them.
+#[inline]
+fn for_each_bit(words: &mut [u64], first: usize, count: usize, mut act: impl FnMut(usize)) {
+    for (index, word) in words[first..first + count].iter_mut().enumerate() {
+        let mut bits = std::mem::take(word);
+        while bits != 0 {
+            act(index * 64 + bits.trailing_zeros() as usize);
+            bits &= bits - 1;
+        }
+    }
 }

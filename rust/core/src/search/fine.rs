@@ -15,8 +15,8 @@ use crate::blocks::{Blocks, Cell, Side, face_axes};
 use crate::frame::Chart;
 use crate::lattice::Lattice;
 use crate::path::{FREE, Path};
-use crate::relax::{Tabulated, relax_face};
-use crate::search::box_tables::{BoxTables, FaceLayout, Rows, rows_between};
+use crate::relax::{Tabulated, lowered, relax_face};
+use crate::search::box_tables::{BoxTables, FaceLayout, RowIndex, Rows, rows_between};
 use crate::search::buckets::BucketQueue;
 use crate::vec3::{Vec3, norm};
 
@@ -52,6 +52,7 @@ pub struct FineSearch<'a, C> {
     blocks: &'a Blocks<C>,
     lattice: &'a Lattice,
     layout: FaceLayout,
+    rows: RowIndex,
     box_of: Vec<u32>,
     box_widths_km: Vec<[f64; 3]>,
     tables: Vec<OnceLock<BoxTables>>,
@@ -141,6 +142,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             blocks,
             lattice,
             layout,
+            rows: RowIndex::new(layout),
             box_of,
             tables: box_widths_km.iter().map(|_| OnceLock::new()).collect(),
             box_widths_km,
@@ -369,7 +371,8 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             for (column, &(j, fv)) in self.interpolation.iter().enumerate() {
                 let low = coarse(i, j) + fv * (coarse(i, j + 1) - coarse(i, j));
                 let high = coarse(i + 1, j) + fv * (coarse(i + 1, j + 1) - coarse(i + 1, j));
-                field.potentials[place + row * self.layout.lanes + column] = low + fu * (high - low);
+                field.potentials[place + row * self.layout.lanes + column] =
+                    low + fu * (high - low);
             }
         }
         face
@@ -436,26 +439,19 @@ impl<'a, C: Chart> FineSearch<'a, C> {
     }
 
     /// Lists the sources that may reach `side` by `latest`; false if none.
-    fn choose_sources(
-        &self,
-        slot: usize,
-        side: Side,
-        latest: f32,
-        field: &mut FineField,
-    ) -> bool {
+    fn choose_sources(&self, slot: usize, side: Side, latest: f32, field: &mut FineField) -> bool {
         let block = field.visited[slot].block;
         let slowness = self.blocks.slowness_of(block) as f32;
-        let table = self.table(block);
+        let per_width = slowness * self.table(block).width_km(side / 2) as f32;
         field.chosen[0].clear();
         field.chosen[1].clear();
         for from in (0..6).filter(|&from| from != side) {
             let chosen = &mut field.chosen[rows_between(from, side) as usize];
+            let rows = self.rows.between(from, side);
             for &(place, time_s) in &field.sources[from] {
-                let place = place as usize;
-                let node = (place / self.layout.lanes, place % self.layout.lanes);
-                let (start, least_km) = table.rows_from(from, node, side);
-                if time_s + slowness * least_km <= latest {
-                    let start = start as u32;
+                let rows = rows[place as usize];
+                if time_s + per_width * rows.least <= latest {
+                    let start = rows.start;
                     chosen.push(Tabulated { start, time_s });
                 }
             }
@@ -482,18 +478,15 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             relax_face((self.layout, rows), values, chosen, slowness, times);
         }
         let words = self.words();
-        let mut alive = [0_u64; 4];
-        let mut earliest = f32::INFINITY;
         let potentials = &field.potentials[face * size..][..size];
-        for (place, ((&time, &old), &potential)) in
-            times.iter().zip(&field.old).zip(potentials).enumerate()
-        {
-            // Padding has an infinite potential and never lives.
-            if time < old && time + bound.scale * potential <= bound.limit_s {
-                alive[place / 64] |= 1 << (place % 64);
-                earliest = earliest.min(time);
-            }
-        }
+        let mut alive = [0_u64; 4];
+        let earliest = lowered(
+            times,
+            &field.old,
+            potentials,
+            (bound.scale, bound.limit_s),
+            &mut alive,
+        );
         if earliest.is_finite() {
             let next = self.neighbour_slot(slot, side, field);
             let place = (next * 6 + (side ^ 1)) * words;
@@ -624,10 +617,14 @@ fn box_classes<C: Chart>(blocks: &Blocks<C>) -> (Vec<u32>, Vec<[f64; 3]>) {
             let ranges = [0, 1, 2].map(|axis| blocks.range(block, axis));
             let middle = ranges.map(|(low, high)| 0.5 * (low + high));
             let tangents = blocks.chart().tangents(middle);
-            let widths = [0, 1, 2]
-                .map(|axis| (ranges[axis].1 - ranges[axis].0) * norm(tangents[axis]));
+            let widths =
+                [0, 1, 2].map(|axis| (ranges[axis].1 - ranges[axis].0) * norm(tangents[axis]));
             let key = widths.map(|width| {
-                let place = if C::FLAT { width / 1e-6 } else { width.ln() / WIDTH_STEP };
+                let place = if C::FLAT {
+                    width / 1e-6
+                } else {
+                    width.ln() / WIDTH_STEP
+                };
                 place.round() as i64
             });
             *known.entry(key).or_insert_with(|| {
