@@ -161,7 +161,7 @@ def load_state(path: str | Path) -> InversionState:
         If it is not a checkpoint.
     """
     try:
-        with np.load(path, allow_pickle=False) as stored:
+        with Path(path).open("rb") as file, np.load(file, allow_pickle=False) as stored:
             arrays = {name: stored[name] for name in stored.files}
         rows = zip(
             *(arrays[f"history_{field.name}"].tolist() for field in fields(Iteration)),
