@@ -234,11 +234,11 @@ def _data_rows(result: InversionResult) -> list[tuple[str, str]]:
 
 def _exclusions(result: InversionResult) -> ReportTable:
     table = exclusion_table(result.data, result)
-    counts = table.groupby("reason", sort=False).size().sort_values(ascending=False)
-    examples = table.drop_duplicates("reason").set_index("reason")["detail"]
+    counts = table["reason"].value_counts()
+    examples = dict(zip(table["reason"][::-1], table["detail"][::-1], strict=True))
     rows = tuple(
         (str(reason).replace("_", " "), str(count), str(examples[reason]))
-        for reason, count in counts.items()
+        for reason, count in counts.to_dict().items()
     )
     return ReportTable(("reason", "picks", "for instance"), rows, (1,))
 

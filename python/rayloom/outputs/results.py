@@ -130,7 +130,7 @@ def _write_rays(path: Path, result: InversionResult) -> None:
         "residual_after_s": result.residual_after_s[rows],
         "weight": result.weights[rows],
     }
-    write_rays_vtp(path, result.rays, result.model.grid.frame, values=ray_values)
+    write_rays_vtp(path, result.rays, values=ray_values)
 
 
 def write_figures(
