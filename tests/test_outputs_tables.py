@@ -3,7 +3,7 @@ import csv
 import numpy as np
 import pandas as pd
 import pytest
-from scipy.sparse import csr_array
+from scipy.sparse import load_npz, random_array
 
 from rayloom.forward import Rays
 from rayloom.inversion.result import Counts, InversionResult
@@ -14,6 +14,7 @@ from rayloom.outputs import (
     residual_table,
     write_exclusions_csv,
     write_figures,
+    write_linear_system,
     write_model_files,
     write_report,
     write_tables,
@@ -57,7 +58,9 @@ def straight_rays(grid, count):
         grid=grid,
         time_s=np.full(count, 600.0),
         outside_time_s=np.full(count, 580.0),
-        path_lengths=csr_array((count, grid.block_count)),
+        path_lengths=random_array(
+            (count, grid.block_count), density=0.1, rng=np.random.default_rng(2)
+        ).tocsr(),
         traced=np.ones(count, dtype=bool),
         point_offsets=2 * np.arange(count + 1),
         all_points=np.tile(ends, (count, 1)),
@@ -262,3 +265,20 @@ def test_report_without_losses_says_so(result):
     text = render_report(clean)
     assert "Nothing was left out." in text
     assert "<p>None.</p>" in text
+
+
+def test_linear_system_leaves_the_residuals_of_the_last_model(result, tmp_path):
+    write_linear_system(tmp_path / "linear_system", result)
+    lengths_km = load_npz(tmp_path / "linear_system" / "G.npz")
+    tables = {
+        name: pd.read_csv(tmp_path / "linear_system" / f"{name}.csv")
+        for name in ("rows", "d", "blocks")
+    }
+    blocks, rows = tables["blocks"], tables["rows"]
+    change = blocks["slowness_s_per_km"] - blocks["reference_slowness_s_per_km"]
+    left = tables["d"]["d_s"] - lengths_km @ change.to_numpy()
+    np.testing.assert_allclose(left, result.residual_after_s[USED], atol=1e-9)
+    assert rows["residual_row"].tolist() == np.flatnonzero(USED).tolist()
+    assert rows["station"].tolist()[:4] == ["AAA", "BBB", "CCC", "DDD"]
+    places = blocks[["x", "y", "depth_km"]].to_numpy()
+    np.testing.assert_array_equal(result.model.grid.locate(places), blocks["block"])

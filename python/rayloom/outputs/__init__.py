@@ -6,6 +6,7 @@ objects; :func:`save_figure` writes them.
 """
 
 from rayloom.outputs.atomic import replacing, write_text
+from rayloom.outputs.linear_system import block_table, write_linear_system
 from rayloom.outputs.report import render_report, write_report
 from rayloom.outputs.residual_figures import figure_misfit, figure_station_residuals
 from rayloom.outputs.results import (
@@ -44,6 +45,7 @@ __all__ = [
     "SectionLine",
     "SectionSettings",
     "WrittenFigure",
+    "block_table",
     "default_lines",
     "exclusion_table",
     "figure_depth_slices",
@@ -59,6 +61,7 @@ __all__ = [
     "write_exclusions_csv",
     "write_figures",
     "write_history_csv",
+    "write_linear_system",
     "write_mislocations_csv",
     "write_model_files",
     "write_model_vts",
