@@ -195,10 +195,10 @@ def _slices(
         lines=lines,
     )
     return figure, (
-        f"Velocity perturbation of {result.model.wave} waves by layer. Red is slower, blue "
-        "faster than the mean of the region at that depth, which relative residuals cannot "
-        "tell. Grey blocks are crossed by no ray; colour elsewhere does not mean that the "
-        "block is resolved. Black lines: the sections below."
+        f"Velocity perturbation of {result.model.wave} waves by layer, relative to the regional "
+        "mean: red is slower, blue faster. The mean of a layer itself is beyond the reach of "
+        "relative residuals. Grey blocks are crossed by no ray; colour elsewhere does not mean "
+        "that the block is resolved. Black lines: the sections below."
     )
 
 
