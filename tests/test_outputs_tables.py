@@ -67,8 +67,7 @@ def straight_rays(grid, count):
     )
 
 
-@pytest.fixture
-def result():
+def make_data():
     stations = Stations(
         network=np.array(["VH"] * 4),
         station=np.array(["AAA", "BBB", "CCC", "DDD"]),
@@ -84,7 +83,7 @@ def result():
         depth_km=np.array([33.0, 120.0]),
     )
     count = len(EVENT)
-    data = Residuals(
+    return Residuals(
         stations=stations,
         events=events,
         earth=StandInEarth(),
@@ -106,6 +105,10 @@ def result():
             np.array(["Pn is not a phase of distant events"]),
         ),
     )
+
+
+@pytest.fixture
+def result():
     grid = BlockGrid(
         Frame(longitude=12.0, latitude=-31.0),
         np.linspace(-2.0, 2.0, 9),
@@ -120,7 +123,7 @@ def result():
     )
     after = np.where(USED, 0.5 * BEFORE_S, np.nan)
     return InversionResult(
-        data=data,
+        data=make_data(),
         model=model,
         history=(iteration(0, 0.4), iteration(1, 0.1)),
         station_terms_s={"P": np.array([0.1, -0.1, np.nan, 0.0])},

@@ -138,14 +138,9 @@ def figure_depth_slices(
         page = _Page.fitting(len(layers), view.height_over_width)
         figure, panels = page.open(len(layers))
         for number, (axes, layer) in enumerate(zip(panels, layers, strict=True)):
-            is_lowest = number + page.columns >= len(layers)
-            is_first = number % page.columns == 0
-            view.open(axes, left=is_first, bottom=is_lowest, most_ticks=page.most_ticks)
-            axes.set_xlabel(view.axis_titles[0] if is_lowest else "", labelpad=1)
-            axes.set_ylabel(view.axis_titles[1] if is_first else "", labelpad=1)
+            _open_panel(axes, view, page, number=number, count=len(layers))
             _draw_layer(axes, view, field, layer)
             axes.set_title(_layer_title(grid, layer), pad=3)
-            axes.set_title(f"({chr(97 + number)})", loc="left", pad=3, fontweight="bold")
             if where is not None:
                 axes.plot(*where, "^", zorder=4, **STATION_LOOK)
         draw_scale_bar(panels[0], view)
@@ -153,6 +148,14 @@ def figure_depth_slices(
             _mark_line(panels[0], view, line)
         _draw_foot(figure, page, field, has_stations=where is not None)
     return figure
+
+
+def _open_panel(axes: Axes, view: MapView, page: _Page, *, number: int, count: int) -> None:
+    is_first, is_lowest = number % page.columns == 0, number + page.columns >= count
+    view.open(axes, left=is_first, bottom=is_lowest, most_ticks=page.most_ticks)
+    axes.set_xlabel(view.axis_titles[0] if is_lowest else "", labelpad=1)
+    axes.set_ylabel(view.axis_titles[1] if is_first else "", labelpad=1)
+    axes.set_title(f"({chr(97 + number)})", loc="left", pad=3, fontweight="bold")
 
 
 def _layer_title(grid: BlockGrid, layer: int) -> str:
