@@ -148,15 +148,18 @@ def residual_table(
     azimuth_deg: Floats,
     uncertainty_s: float,
     phase: str = "P",
+    *,
+    distance_deg: float | Floats = 60.0,
+    depth_km: float = 30.0,
 ) -> Residuals:
-    """Residuals at 60° distance; only names, azimuths and values matter here."""
+    """Build residuals of which only names, distances, azimuths and values matter."""
     event_count, station_count = int(event.max()) + 1, int(station.max()) + 1
     events = Events(
         event=np.array([f"e{i:03d}" for i in range(event_count)]),
         time=np.full(event_count, "2020-01-01", dtype="datetime64[ns]"),
         latitude_deg=np.zeros(event_count),
         longitude_deg=np.zeros(event_count),
-        depth_km=np.full(event_count, 30.0),
+        depth_km=np.full(event_count, depth_km),
     )
     stations = Stations(
         network=np.full(station_count, "XX"),
@@ -176,7 +179,7 @@ def residual_table(
         wave=np.full(rows, phase),
         residual_s=residual_s,
         uncertainty_s=np.full(rows, uncertainty_s),
-        distance_deg=np.full(rows, 60.0),
+        distance_deg=np.broadcast_to(np.asarray(distance_deg, dtype=np.float64), (rows,)),
         azimuth_deg=azimuth_deg,
         back_azimuth_deg=np.full(rows, 270.0),
         predicted_s=np.full(rows, 608.0),

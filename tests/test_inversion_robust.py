@@ -7,9 +7,14 @@ import pytest
 from scipy.optimize import minimize_scalar
 
 from rayloom.inversion import Huber, LeastSquares, StudentT, robust_fit
-from rayloom.inversion.robust import RobustLoss
+from rayloom.inversion.robust import Rejecting, RobustLoss
 
-LOSSES: list[RobustLoss] = [Huber(1.345), StudentT(4.0), LeastSquares()]
+LOSSES: list[RobustLoss] = [
+    Huber(1.345),
+    StudentT(4.0),
+    LeastSquares(),
+    Rejecting(Huber(1.345), 4.0),
+]
 
 
 @pytest.mark.parametrize("loss", LOSSES, ids=lambda loss: type(loss).__name__)
@@ -59,3 +64,9 @@ def test_structure_in_the_residuals_widens_the_scale_of_the_weights() -> None:
     fit = robust_fit(values, np.full(400, 0.1), group, active, Huber(1.345))
     assert fit.scale == pytest.approx(5.0, rel=0.15)
     assert np.mean(fit.weights < 1.0) < 0.25
+
+
+def test_rejected_rows_have_no_weight_and_a_constant_loss() -> None:
+    loss = Rejecting(Huber(1.345), 4.0)
+    np.testing.assert_array_equal(loss.weights(np.array([0.5, 4.01, -30.0])), [1.0, 0.0, 0.0])
+    assert loss.loss(np.array([4.0])) == loss.loss(np.array([-90.0]))
