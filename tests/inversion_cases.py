@@ -200,3 +200,10 @@ def shuffled(case: Case, order: NDArray[np.int64]) -> Case:
     return replace(
         case, data=case.data.select(order), forward=replace(case.forward, lengths=lengths)
     )
+
+
+def with_gross_errors(case: Case, rows: NDArray[np.int64], size_s: float) -> Case:
+    """Return the same case with some residuals too late."""
+    residual = case.data.residual_s.copy()
+    residual[rows] += size_s
+    return replace(case, data=replace(case.data, residual_s=residual))

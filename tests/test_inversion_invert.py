@@ -20,6 +20,7 @@ from inversion_cases import (
     plain_settings,
     shuffled,
     small_case,
+    with_gross_errors,
 )
 from rayloom.errors import FileAccessError, InputError
 from rayloom.inversion import (
@@ -153,12 +154,6 @@ def test_one_and_two_threads_give_the_same_bits(case: Case) -> None:
             results.append(run(case, InversionSettings(threads=threads)))
     assert same_bits(*results)
     assert results[0].history[-1].chi2_expected == results[1].history[-1].chi2_expected
-
-
-def with_gross_errors(case: Case, rows: Floats, size_s: float) -> Case:
-    residual = case.data.residual_s.copy()
-    residual[rows] += size_s
-    return replace(case, data=replace(case.data, residual_s=residual))
 
 
 def test_gross_errors_are_named_and_hardly_move_the_model() -> None:

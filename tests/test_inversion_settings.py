@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import numpy as np
 import pytest
 from pydantic import ValidationError
 
-from inversion_cases import small_case
+from inversion_cases import small_case, with_gross_errors
 from rayloom.inversion import InversionSettings, invert
 
 
@@ -48,8 +49,7 @@ def test_each_group_of_terms_can_be_left_out(term: str) -> None:
 @pytest.mark.parametrize("robust", ["huber", "student_t", "none"])
 @pytest.mark.parametrize("reject", [True, False])
 def test_every_kind_of_weight_runs(robust: str, reject: bool) -> None:
-    case = small_case(stations=10, events=6)
-    case.data.residual_s[7] += 3.0
+    case = with_gross_errors(small_case(stations=10, events=6), np.array([7]), 3.0)
     settings = InversionSettings.model_validate({"robust": robust, "reject_outliers": reject})
     result = invert(case.data, case.model, settings, forward=case.forward)
     assert result.history[-1].variance_reduction_percent > 60.0
