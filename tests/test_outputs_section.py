@@ -42,7 +42,7 @@ def meshes(axes):
 
 
 def geocentric_rad(latitude_deg):
-    """Geocentric latitude, tan φ' = (1 − f)² tan φ with the flattening of WGS84 (any geodesy textbook)."""
+    """Tan of the geocentric latitude is (1 − f)² tan φ, f of WGS84 (any geodesy textbook)."""
     return np.arctan((1.0 - 1.0 / 298.257223563) ** 2 * np.tan(np.deg2rad(latitude_deg)))
 
 

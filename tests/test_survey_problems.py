@@ -91,6 +91,7 @@ def test_bad_station_cell_is_named(
         ("e1,2019-03-07,1,2,3", "time"),
         ("e1,3019-03-07T04:05:06Z,1,2,3", "time"),
         ("e1,1552,1,2,3", "time"),
+        ("e1,2019-03-07T04:05:06+99:99,1,2,3", "time"),
         ("e1,2019-03-07T04:05:06Z,1,2,33000", "depth_km"),
         ("e1,2019-03-07T04:05:06Z,1,2,-3", "depth_km"),
     ],
@@ -337,3 +338,46 @@ def test_any_bytes_give_stations_or_a_clear_error(tmp_path: Path, content: bytes
         return
     assert len(stations) >= 1
     assert abs(stations.latitude_deg).max() <= 90.0
+
+
+_NASTY = st.sampled_from(
+    (
+        *(
+            "",
+            "-1",
+            "1e400",
+            "nan",
+            "٣",
+            "1_0",
+            "\x00",
+            '"',
+            ",",
+            "e1",
+            "XA",
+            "P",
+            "0.2",
+            "\ufeff",
+        ),
+        *("9999-99-99T99:99:99Z", "2019-03-07T04:15:00+99:99", "2019-03-07T05:15:00+01:00"),
+    )
+)
+
+
+@settings(
+    max_examples=150, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture]
+)
+@given(column=st.integers(0, 5), cell=_NASTY, other=st.integers(0, 5), second=_NASTY)
+def test_any_cells_give_picks_or_a_clear_error(
+    tmp_path: Path, column: int, cell: str, other: int, second: str
+) -> None:
+    good = ["e1", "XA", "ALP", "P", "2019-03-07T04:15:00Z", "0.1"]
+    odd = list(good)
+    odd[column], odd[other] = cell, second
+    text = PICK_HEAD + ",".join(good) + "\n" + ",".join(odd) + "\n"
+    try:
+        picks = picks_of(tmp_path, text)
+    except RayloomError:
+        return
+    assert (picks.uncertainty_s > 0.0).all()
+    assert (picks.event_index == 0).all()
+    assert (picks.station_index == 0).all()

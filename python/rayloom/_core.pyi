@@ -23,6 +23,41 @@ class RadialModel:
         velocity_km_s: NDArray[np.float64],
         radius_km: float,
     ) -> RadialModel: ...
+    def velocity_km_s(
+        self, depth_km: NDArray[np.float64], *, below: bool
+    ) -> NDArray[np.float64]: ...
+    def mean_slowness_s_per_km(
+        self, depth_edges_km: NDArray[np.float64]
+    ) -> NDArray[np.float64]: ...
+
+class LayeredEarth:
+    def __new__(
+        cls,
+        depth_km: NDArray[np.float64],
+        p_velocity_km_s: NDArray[np.float64],
+        s_velocity_km_s: NDArray[np.float64],
+        density_g_cm3: NDArray[np.float64],
+        radius_km: float,
+    ) -> LayeredEarth: ...
+    def mantle(self, wave: str) -> RadialModel: ...
+    def first_arrivals(
+        self,
+        phase: str,
+        distance_rad: NDArray[np.float64],
+        source_depth_km: NDArray[np.float64],
+        receiver_depth_km: NDArray[np.float64],
+    ) -> tuple[NDArray[np.float64], NDArray[np.float64]]: ...
+    def ellipticity_s(
+        self,
+        phase: str,
+        ray_parameter_s: NDArray[np.float64],
+        source_depth_km: NDArray[np.float64],
+        latitude_rad: NDArray[np.float64],
+        azimuth_rad: NDArray[np.float64],
+    ) -> NDArray[np.float64]: ...
+    def ellipticity(self, radius_km: NDArray[np.float64]) -> NDArray[np.float64]: ...
+    @staticmethod
+    def phases() -> list[tuple[str, str]]: ...
 
 class WavefrontTable:
     def __new__(

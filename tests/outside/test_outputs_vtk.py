@@ -3,11 +3,12 @@
 Source: the package ``vtk`` (Kitware), which defines the XML formats read here.
 """
 
-from types import SimpleNamespace
-
 import numpy as np
 import pytest
+from scipy.sparse import csr_array
 
+from rayloom.errors import InputError
+from rayloom.forward import Rays
 from rayloom.model import BlockGrid, Frame, SlownessModel
 from rayloom.outputs.vtk import (
     EVENT_RING,
@@ -135,14 +136,16 @@ def test_flat_model_volumes_are_exact(tmp_path):
     np.testing.assert_allclose(cell_volumes(data), expected, rtol=1e-12)
 
 
-def rays_of(lines):
-    offsets = np.cumsum([0, *(len(line) for line in lines)])
+def rays_of(lines, frame):
     count = len(lines)
-    return SimpleNamespace(
+    grid = BlockGrid(frame, [-1.0, 1.0], [-1.0, 1.0], [0.0, 400.0])
+    return Rays(
+        grid=grid,
         time_s=np.arange(count) + 600.0,
         outside_time_s=np.arange(count) + 550.0,
+        path_lengths=csr_array((count, 1)),
         traced=np.array([len(line) > 0 for line in lines]),
-        point_offsets=offsets,
+        point_offsets=np.cumsum([0, *(len(line) for line in lines)]),
         all_points=np.concatenate(lines),
     )
 
@@ -154,7 +157,7 @@ def test_rays_are_polylines_in_order(tmp_path):
     lines = [rng.random((count, 3)) * scale for count in (4, 0, 7, 2, 5)]
     path = tmp_path / "rays.vtp"
     residual = np.array([0.1, np.nan, -0.2, 0.3, 0.0])
-    write_rays_vtp(path, rays_of(lines), frame, values={"residual_after_s": residual})
+    write_rays_vtp(path, rays_of(lines, frame), values={"residual_after_s": residual})
     data = read(path, "PolyData")
     assert data.GetNumberOfLines() == data.GetNumberOfCells() == 4
     assert cell_array(data, "row").tolist() == [0, 2, 3, 4]
@@ -167,16 +170,23 @@ def test_chosen_rays_only(tmp_path):
     frame = Frame.flat()
     lines = [np.full((3, 3), float(number)) for number in range(6)]
     path = tmp_path / "rays.vtp"
-    write_rays_vtp(path, rays_of(lines), frame, rows=[4, 1])
+    write_rays_vtp(path, rays_of(lines, frame), rows=[4, 1])
     data = read(path, "PolyData")
     assert cell_array(data, "row").tolist() == [4, 1]
     np.testing.assert_array_equal(cell_points(data, 0), np.full((3, 3), 4.0) * [1, 1, -1])
     assert cell_array(data, "time_s").tolist() == [604.0, 601.0]
 
 
+def test_values_of_another_length_are_refused(tmp_path):
+    rays = rays_of([np.zeros((2, 3)), np.ones((2, 3))], Frame.flat())
+    with pytest.raises(InputError, match=r"'weight' has shape \(3,\)"):
+        write_rays_vtp(tmp_path / "rays.vtp", rays, values={"weight": np.ones(3)})
+    assert not list(tmp_path.iterdir())
+
+
 def test_no_ray_at_all_is_still_a_file(tmp_path):
     path = tmp_path / "rays.vtp"
-    write_rays_vtp(path, rays_of([np.zeros((0, 3))]), Frame.flat())
+    write_rays_vtp(path, rays_of([np.zeros((0, 3))], Frame.flat()))
     assert read(path, "PolyData").GetNumberOfCells() == 0
 
 

@@ -7,7 +7,7 @@ The outer loop knows rays only through :class:`ForwardMap` and
 from __future__ import annotations
 
 from collections.abc import Callable
-from typing import Protocol
+from typing import Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -46,7 +46,7 @@ class ForwardMap(Protocol):
         self,
         model: SlownessModel,
         *,
-        previous: Prediction | None,
+        previous: Any,
         progress: Callable[[int, int], None] | None,
     ) -> Prediction:
         """Trace.
@@ -55,8 +55,8 @@ class ForwardMap(Protocol):
         ----------
         model : SlownessModel
             The blocks.
-        previous : Prediction, optional
-            Rays of a similar model to start from.
-        progress : callable, optional
+        previous : Prediction or None
+            What this map returned for a similar model, to start from.
+        progress : callable or None
             Told (done, total).
         """

@@ -102,7 +102,7 @@ def measure(
 
 
 def _expected_chi2(problem: Problem, stage: Stage) -> float:
-    """(N − N_g) − tr H, tr H by a few probes to about 1 % besides their scatter."""
+    """(N − N_g) − tr H over rows with weight, tr H by a few probes to about 1 %."""
     settings = problem.settings
     if settings.trace_probes == 0:
         return float("nan")
@@ -113,7 +113,7 @@ def _expected_chi2(problem: Problem, stage: Stage) -> float:
         tolerance=max(_PROBE_TOLERANCE, settings.solver_tolerance),
         max_iterations=settings.solver_max_iterations,
     )
-    return float(np.sum(stage.traced.active)) - stage.system.means.count - resolved
+    return float(np.sum(stage.fit.weights > 0.0)) - stage.system.means.count - resolved
 
 
 def _model_rms_percent(traced: TracedModel) -> float:

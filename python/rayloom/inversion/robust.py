@@ -1,7 +1,8 @@
 """Robust weights: how far each residual may be trusted.
 
-Main types: :class:`Huber`, :class:`StudentT` and :class:`LeastSquares`, and the
-:class:`RobustFit` of one mean per group under any of them.
+Main types: :class:`Huber`, :class:`StudentT` and :class:`LeastSquares`, each of
+which :class:`Rejecting` may cut off, and the :class:`RobustFit` of one mean per
+group under any of them.
 """
 
 from __future__ import annotations
@@ -82,6 +83,28 @@ class StudentT:
     def loss(self, standardised: NDArray[np.float64]) -> NDArray[np.float64]:
         """(ν + 1) ln(1 + u²/ν)."""
         return (self.degrees + 1.0) * np.log1p(standardised**2 / self.degrees)
+
+
+@dataclass(frozen=True)
+class Rejecting:
+    """Another loss that stays flat ``beyond`` so many standard deviations.
+
+    Rows out there lose all weight. As the scale of the residuals falls from
+    iteration to iteration, rows are turned away only once the model explains
+    the others.
+    """
+
+    inner: RobustLoss
+    beyond: float
+
+    def weights(self, standardised: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Those of the inner loss, 0 beyond."""
+        near = np.abs(standardised) <= self.beyond
+        return np.where(near, self.inner.weights(standardised), 0.0)
+
+    def loss(self, standardised: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Inner loss, constant beyond."""
+        return self.inner.loss(np.clip(standardised, -self.beyond, self.beyond))
 
 
 @dataclass(frozen=True)

@@ -134,7 +134,7 @@ def _ordered(
 ) -> DataRows:
     station = np.asarray(data.stations.labels).astype(str)[data.station_index]
     chosen = np.flatnonzero(kept)
-    keys = (data.residual_s, station, phase, event)
+    keys = (data.uncertainty_s, data.residual_s, station, phase, event)
     order = np.lexsort(tuple(key[chosen] for key in keys))
     row = chosen[order]
     return DataRows(

@@ -6,7 +6,7 @@ from typing import Annotated, Literal, Self
 
 from pydantic import BaseModel, ConfigDict, Field, model_validator
 
-from rayloom.inversion.robust import Huber, LeastSquares, RobustLoss, StudentT
+from rayloom.inversion.robust import Huber, LeastSquares, Rejecting, RobustLoss, StudentT
 
 Positive = Annotated[float, Field(gt=0.0, allow_inf_nan=False)]
 NotNegative = Annotated[float, Field(ge=0.0, allow_inf_nan=False)]
@@ -87,6 +87,10 @@ class InversionSettings(BaseModel):
         default=4.0,
         description="Standard deviations beyond which a pick is listed as a suspected outlier.",
     )
+    reject_outliers: bool = Field(
+        default=True,
+        description="Suspected outliers lose all weight (with robust = none they keep it).",
+    )
 
     max_iterations: int = Field(default=6, ge=1, description="Most models solved for.")
     reweightings: int = Field(
@@ -128,11 +132,11 @@ class InversionSettings(BaseModel):
     @property
     def loss(self) -> RobustLoss:
         """The loss that the settings choose."""
-        if self.robust == "huber":
-            return Huber(self.huber_k)
-        if self.robust == "student_t":
-            return StudentT(self.student_degrees)
-        return LeastSquares()
+        if self.robust == "none":
+            return LeastSquares()
+        loss: RobustLoss
+        loss = Huber(self.huber_k) if self.robust == "huber" else StudentT(self.student_degrees)
+        return Rejecting(loss, self.outlier_std) if self.reject_outliers else loss
 
     def station_term_std_of(self, wave: str) -> float:
         """Return the expected size of a wave's station terms, s (the other wave's if unset)."""

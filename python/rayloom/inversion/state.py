@@ -31,7 +31,8 @@ class Iteration:
         The same over the picks not suspected as outliers, s.
     chi2, chi2_expected : float
         Weighted squared residuals Σ w (r/σ)² and their expectation
-        (N − N_g) − tr H if the uncertainties are right; NaN where not estimated.
+        (N − N_g) − tr H if the uncertainties are right, N and N_g counting rows
+        and groups that have weight; NaN where not estimated.
     chi2_kept : float
         Σ (r/σ)² over the picks not suspected as outliers.
     prior_misfit : float
@@ -161,7 +162,7 @@ def load_state(path: str | Path) -> InversionState:
         If it is not a checkpoint.
     """
     try:
-        with np.load(path, allow_pickle=False) as stored:
+        with Path(path).open("rb") as file, np.load(file, allow_pickle=False) as stored:
             arrays = {name: stored[name] for name in stored.files}
         rows = zip(
             *(arrays[f"history_{field.name}"].tolist() for field in fields(Iteration)),

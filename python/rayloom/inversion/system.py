@@ -131,9 +131,10 @@ def solve(
     *,
     tolerance: float,
     max_iterations: int,
+    damping: float = 1.0,
     step: Callable[[int], None] | None = None,
 ) -> Solution:
-    """Minimise ‖Ã z − d̃‖² + ‖z‖² by LSQR.
+    """Minimise ‖Ã z − d̃‖² + damping² ‖z‖² by LSQR.
 
     Parameters
     ----------
@@ -145,6 +146,8 @@ def solve(
         Relative accuracy of the solver's two stopping rules.
     max_iterations : int
         Most steps.
+    damping : float, optional
+        1 for the prior as it stands; λ for standard deviations divided by λ.
     step : callable, optional
         Told the number of each step.
 
@@ -171,7 +174,7 @@ def solve(
     found = lsqr(
         operator,
         right_hand_side,
-        damp=1.0,
+        damp=damping,
         atol=tolerance,
         btol=tolerance,
         conlim=0.0,

@@ -292,8 +292,11 @@ def _round_values(low: float, high: float, *, most: int, in_degrees: bool = Fals
     """Round numbers inside an interval, not close to its ends."""
     from matplotlib.ticker import MaxNLocator
 
-    steps = [1, 1.5, 3, 4.5, 6, 9, 10] if in_degrees and high - low > 60.0 else [1, 2, 5, 10]
-    values = np.asarray(MaxNLocator(most, steps=steps).tick_values(low, high))
+    if in_degrees and high - low > 50.0:
+        step = next(step for step in (10, 15, 20, 30, 45, 60, 90) if (high - low) / step <= most)
+        values = np.arange(np.ceil(low / step), high / step) * step
+    else:
+        values = np.asarray(MaxNLocator(most, steps=[1, 2, 5, 10]).tick_values(low, high))
     margin = 0.06 * (high - low)
     return values[(values >= low + margin) & (values <= high - margin)]
 
@@ -311,6 +314,44 @@ def _crossings(
             ticks.append(float(position[index] + share * (position[index + 1] - position[index])))
             labels.append(degree_label(float(mark), hands))
     return ticks, labels
+
+
+def draw_line_ends(axes: Axes, view: MapView, across: Floats, up: Floats, name: str) -> None:
+    """Name the ends of a line just beyond them, or inside where they reach the rim.
+
+    Parameters
+    ----------
+    axes : Axes
+        The map.
+    view : MapView
+        Its plane.
+    across, up : array, shape (n,)
+        Paper coordinates of the line.
+    name : str
+        Name of the start; that of the end carries a prime.
+    """
+    from matplotlib.patheffects import withStroke
+
+    low, high = np.asarray(view.limits[0::2]), np.asarray(view.limits[1::2])
+    margin = 0.06 * (high - low)
+    ends = np.column_stack([across, up])[[0, -1]]
+    outward = (ends - ends[::-1]) * [1.0, view.aspect]
+    outward /= np.linalg.norm(outward, axis=1, keepdims=True)
+    for end, direction, label in zip(ends, outward, (name, f"{name}′"), strict=True):
+        place = np.clip(end, low + margin, high - margin)
+        offset = direction * (6.0 if np.array_equal(place, end) else 0.0)
+        axes.annotate(
+            label,
+            tuple(place),
+            xytext=tuple(offset),
+            textcoords="offset points",
+            ha="center",
+            va="center",
+            fontsize=7,
+            fontweight="bold",
+            path_effects=[withStroke(linewidth=1.8, foreground="white")],
+            zorder=6,
+        )
 
 
 def draw_scale_bar(

@@ -234,11 +234,11 @@ def _data_rows(result: InversionResult) -> list[tuple[str, str]]:
 
 def _exclusions(result: InversionResult) -> ReportTable:
     table = exclusion_table(result.data, result)
-    counts = table.groupby("reason", sort=False).size().sort_values(ascending=False)
-    examples = table.drop_duplicates("reason").set_index("reason")["detail"]
+    counts = table["reason"].value_counts()
+    examples = dict(zip(table["reason"][::-1], table["detail"][::-1], strict=True))
     rows = tuple(
         (str(reason).replace("_", " "), str(count), str(examples[reason]))
-        for reason, count in counts.items()
+        for reason, count in counts.to_dict().items()
     )
     return ReportTable(("reason", "picks", "for instance"), rows, (1,))
 
@@ -260,10 +260,16 @@ def _outliers(result: InversionResult) -> ReportTable:
 
 
 def _outlier_remark(count: int) -> str:
-    listed = "They keep a small weight" if count > 1 else "It keeps a small weight"
-    remark = f"{count} pick{'s' if count != 1 else ''} suspected. {listed} in the inversion"
-    shown = f"; the {MOST_OUTLIERS} largest are shown" if count > MOST_OUTLIERS else ""
-    return f"{remark} and deserve a second look{shown}; all are marked in residuals.csv."
+    if count == 1:
+        return (
+            "1 pick is suspected. It keeps a small weight in the inversion and deserves a second "
+            "look; it is marked in residuals.csv."
+        )
+    shown = f"; the {MOST_OUTLIERS} largest are shown here" if count > MOST_OUTLIERS else ""
+    return (
+        f"{count} picks are suspected. They keep a small weight in the inversion and deserve a "
+        f"second look{shown}. All are marked in residuals.csv."
+    )
 
 
 def _signed(value: float, digits: int) -> str:
@@ -294,5 +300,6 @@ def _embedded(figures: Sequence[WrittenFigure]) -> list[dict[str, str]]:
         if path is not None:
             content = base64.b64encode(path.read_bytes()).decode("ascii")
             source = f"data:{_MEDIA[path.suffix]};base64,{content}"
-            found.append({"source": source, "caption": figure.caption})
+            name = path.stem.replace("_", " ")
+            found.append({"source": source, "name": name, "caption": figure.caption})
     return found

@@ -355,8 +355,10 @@ def _histogram_note(
 ) -> str:
     beyond = int(np.sum(np.abs(before) > reach)), int(np.sum(np.abs(after) > reach))
     remarks = []
-    if trusted.sum() < kept.sum():
-        remarks.append(f"RMS without\n{kept.sum() - trusted.sum()} suspected\noutliers")
+    left_out = int(kept.sum() - trusted.sum())
+    if left_out:
+        plural = "s" if left_out > 1 else ""
+        remarks.append(f"RMS without\n{left_out} suspected\noutlier{plural}")
     if any(beyond):
         remarks.append(f"beyond the axis:\n{beyond[0]} before,\n{beyond[1]} after")
     return "\n".join(remarks)

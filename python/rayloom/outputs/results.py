@@ -130,7 +130,7 @@ def _write_rays(path: Path, result: InversionResult) -> None:
         "residual_after_s": result.residual_after_s[rows],
         "weight": result.weights[rows],
     }
-    write_rays_vtp(path, result.rays, result.model.grid.frame, values=ray_values)
+    write_rays_vtp(path, result.rays, values=ray_values)
 
 
 def write_figures(
@@ -195,10 +195,10 @@ def _slices(
         lines=lines,
     )
     return figure, (
-        f"Velocity perturbation of {result.model.wave} waves by layer. Red is slower, blue "
-        "faster than the mean of the region at that depth, which relative residuals cannot "
-        "tell. Grey blocks are crossed by no ray; colour elsewhere does not mean that the "
-        "block is resolved. Black lines: the sections below."
+        f"Velocity perturbation of {result.model.wave} waves by layer, relative to the regional "
+        "mean: red is slower, blue faster. The mean of a layer itself is beyond the reach of "
+        "relative residuals. Grey blocks are crossed by no ray; colour elsewhere does not mean "
+        "that the block is resolved. Black lines: the sections below."
     )
 
 

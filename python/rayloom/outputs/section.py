@@ -9,7 +9,7 @@ import numpy as np
 import numpy.typing as npt
 
 from rayloom.model import BlockGrid, SlownessModel
-from rayloom.outputs.map_view import map_view, places
+from rayloom.outputs.map_view import draw_line_ends, map_view, places
 from rayloom.outputs.section_line import SectionLine
 from rayloom.outputs.style import (
     INK,
@@ -295,28 +295,7 @@ def _draw_index_map(axes: Axes, grid: BlockGrid, line: SectionLine, where: Float
     axes.plot(across, up, color="#b2182b", linewidth=1.2, zorder=4)
     view.open(axes, most_ticks=3)
     axes.tick_params(labelsize=6)
-    _mark_ends(axes, np.column_stack([across, up])[[0, -1]], line.name, view.limits)
-
-
-def _mark_ends(
-    axes: Axes, ends: Floats, name: str, limits: tuple[float, float, float, float]
-) -> None:
-    from matplotlib.patheffects import withStroke
-
-    low, high = np.asarray(limits[0::2]), np.asarray(limits[1::2])
-    margin = 0.06 * (high - low)
-    for (across, up), label in zip(ends, (name, f"{name}′"), strict=True):
-        place = np.clip((across, up), low + margin, high - margin)
-        axes.annotate(
-            label,
-            tuple(place),
-            ha="center",
-            va="center",
-            fontsize=7.5,
-            fontweight="bold",
-            path_effects=[withStroke(linewidth=2, foreground="white")],
-            zorder=5,
-        )
+    draw_line_ends(axes, view, across, up, line.name)
 
 
 def _draw_foot(figure: Figure, sheet: _Sheet, field: BlockField, *, has_stations: bool) -> None:

@@ -13,29 +13,27 @@ class SectionSettings(BaseModel):
     """One vertical section: two end points, or a centre, an azimuth and a length.
 
     Points are (longitude, latitude) in degrees, or (x, y) in km with a flat frame.
-
-    Attributes
-    ----------
-    name : str
-        Letter or short word at the ends of the line.
-    start, end : pair of float, optional
-        End points.
-    centre : pair of float, optional
-        Middle of the line.
-    azimuth_deg : float, optional
-        Azimuth of the line at the centre, clockwise from north.
-    length_km : float, optional
-        Length along the surface.
     """
 
     model_config = ConfigDict(extra="forbid", frozen=True)
 
-    name: str = Field("A", min_length=1, max_length=12)
-    start: Point | None = None
-    end: Point | None = None
-    centre: Point | None = None
-    azimuth_deg: float | None = Field(None, allow_inf_nan=False)
-    length_km: Annotated[float, Field(gt=0, allow_inf_nan=False)] | None = None
+    name: str = Field(
+        "A",
+        min_length=1,
+        max_length=12,
+        description="Letter or short word at the start of the line; the end carries a prime.",
+    )
+    start: Point | None = Field(None, description="Start of the line.")
+    end: Point | None = Field(None, description="End of the line.")
+    centre: Point | None = Field(None, description="Middle of the line.")
+    azimuth_deg: float | None = Field(
+        None,
+        allow_inf_nan=False,
+        description="Direction of the line at the centre, degrees clockwise from north.",
+    )
+    length_km: Annotated[float, Field(gt=0, allow_inf_nan=False)] | None = Field(
+        None, description="Length of the line along the surface, km."
+    )
 
     @model_validator(mode="after")
     def _one_way(self) -> SectionSettings:
@@ -51,33 +49,34 @@ class SectionSettings(BaseModel):
 
 
 class OutputSettings(BaseModel):
-    """Figures and their looks.
-
-    Attributes
-    ----------
-    slice_depths_km : tuple of float, optional
-        Depths of the horizontal slices; chosen from the layers that rays cross
-        when left out.
-    sections : tuple of SectionSettings
-        Vertical sections; when empty, two cross the middle of the model.
-    section_band_km : float
-        Stations nearer to a section than this are drawn above it.
-    colour_limit_percent : float, optional
-        Perturbation at the ends of the colour scale; chosen from the model
-        when left out.
-    figure_formats : tuple of {"png", "pdf", "svg"}
-        Formats of every figure.
-    dpi : int
-        Dots per inch of pixel figures.
-    """
+    """What figures show and how they look."""
 
     model_config = ConfigDict(extra="forbid", frozen=True)
 
-    slice_depths_km: Annotated[tuple[float, ...], Field(min_length=1, max_length=12)] | None = None
-    sections: tuple[SectionSettings, ...] = ()
-    section_band_km: float = Field(50.0, gt=0, allow_inf_nan=False)
-    colour_limit_percent: Annotated[float, Field(gt=0, allow_inf_nan=False)] | None = None
-    figure_formats: Annotated[tuple[Literal["png", "pdf", "svg"], ...], Field(min_length=1)] = (
-        "png",
+    slice_depths_km: Annotated[tuple[float, ...], Field(min_length=1, max_length=12)] | None = (
+        Field(
+            None,
+            description="Depths of the horizontal slices, km; chosen from the layers that rays "
+            "cross if not given.",
+        )
     )
-    dpi: int = Field(200, ge=50, le=1200)
+    sections: tuple[SectionSettings, ...] = Field(
+        (),
+        description="Vertical sections, each with start and end (longitude, latitude) or centre, "
+        "azimuth_deg and length_km; two through the middle of the model if none is given.",
+    )
+    section_band_km: float = Field(
+        50.0,
+        gt=0,
+        allow_inf_nan=False,
+        description="Stations nearer to a section than this are drawn above it, km.",
+    )
+    colour_limit_percent: Annotated[float, Field(gt=0, allow_inf_nan=False)] | None = Field(
+        None,
+        description="Perturbation at both ends of the colour scale, percent; chosen from the "
+        "model if not given.",
+    )
+    figure_formats: Annotated[tuple[Literal["png", "pdf", "svg"], ...], Field(min_length=1)] = (
+        Field(("png",), description="Formats of every figure: png, pdf, svg.")
+    )
+    dpi: int = Field(200, ge=50, le=1200, description="Dots per inch of png figures.")

@@ -11,7 +11,13 @@ import numpy.typing as npt
 
 from rayloom.errors import InputError
 from rayloom.model import BlockGrid, SlownessModel
-from rayloom.outputs.map_view import MapView, draw_scale_bar, map_view, places
+from rayloom.outputs.map_view import (
+    MapView,
+    draw_line_ends,
+    draw_scale_bar,
+    map_view,
+    places,
+)
 from rayloom.outputs.style import (
     COLUMN_WIDTH_IN,
     INK,
@@ -132,14 +138,9 @@ def figure_depth_slices(
         page = _Page.fitting(len(layers), view.height_over_width)
         figure, panels = page.open(len(layers))
         for number, (axes, layer) in enumerate(zip(panels, layers, strict=True)):
-            is_lowest = number + page.columns >= len(layers)
-            is_first = number % page.columns == 0
-            view.open(axes, left=is_first, bottom=is_lowest)
-            axes.set_xlabel(view.axis_titles[0] if is_lowest else "", labelpad=1)
-            axes.set_ylabel(view.axis_titles[1] if is_first else "", labelpad=1)
+            _open_panel(axes, view, page, number=number, count=len(layers))
             _draw_layer(axes, view, field, layer)
             axes.set_title(_layer_title(grid, layer), pad=3)
-            axes.set_title(f"({chr(97 + number)})", loc="left", pad=3, fontweight="bold")
             if where is not None:
                 axes.plot(*where, "^", zorder=4, **STATION_LOOK)
         draw_scale_bar(panels[0], view)
@@ -147,6 +148,14 @@ def figure_depth_slices(
             _mark_line(panels[0], view, line)
         _draw_foot(figure, page, field, has_stations=where is not None)
     return figure
+
+
+def _open_panel(axes: Axes, view: MapView, page: _Page, *, number: int, count: int) -> None:
+    is_first, is_lowest = number % page.columns == 0, number + page.columns >= count
+    view.open(axes, left=is_first, bottom=is_lowest, most_ticks=page.most_ticks)
+    axes.set_xlabel(view.axis_titles[0] if is_lowest else "", labelpad=1)
+    axes.set_ylabel(view.axis_titles[1] if is_first else "", labelpad=1)
+    axes.set_title(f"({chr(97 + number)})", loc="left", pad=3, fontweight="bold")
 
 
 def _layer_title(grid: BlockGrid, layer: int) -> str:
@@ -182,17 +191,7 @@ def _mark_line(axes: Axes, view: MapView, line: SectionLine) -> None:
     across, up = view.place(x, y)
     halo = [withStroke(linewidth=1.8, foreground="white")]
     axes.plot(across, up, color=INK, linewidth=0.8, path_effects=halo, zorder=5)
-    for end, label in ((0, line.name), (-1, f"{line.name}′")):
-        axes.annotate(
-            label,
-            (across[end], up[end]),
-            ha="center",
-            va="center",
-            fontsize=7,
-            fontweight="bold",
-            path_effects=halo,
-            zorder=6,
-        )
+    draw_line_ends(axes, view, across, up, line.name)
 
 
 @dataclass(frozen=True)
@@ -212,6 +211,10 @@ class _Page:
         width = (PAGE_WIDTH_IN - _LEFT - _RIGHT - (wanted - 1) * _GAP) / wanted
         width = min(width, (_TALLEST / rows - _TITLE) / height_over_width)
         return cls(columns, rows, width, width * height_over_width)
+
+    @property
+    def most_ticks(self) -> int:
+        return 6 if self.panel_width >= 1.9 else max(2, int(self.panel_width / 0.45))
 
     @property
     def width(self) -> float:

@@ -109,7 +109,6 @@ def model_fields(model: SlownessModel) -> dict[str, npt.NDArray[Any]]:
 def write_rays_vtp(
     path: str | Path,
     rays: Rays,
-    frame: Frame,
     *,
     rows: npt.ArrayLike | None = None,
     values: Mapping[str, npt.NDArray[Any]] | None = None,
@@ -126,8 +125,6 @@ def write_rays_vtp(
         The file, ending in ``.vtp``.
     rays : Rays
         k rays.
-    frame : Frame
-        The frame of the rays' coordinates.
     rows : array-like of bool (k,) or int (m,), optional
         The rays to write; all when None.
     values : mapping of name to array, shape (k,), optional
@@ -152,6 +149,7 @@ def write_rays_vtp(
     lengths = rays.point_offsets[chosen + 1] - begins
     ends = np.cumsum(lengths)
     index = np.arange(lengths.sum()) + np.repeat(begins - (ends - lengths), lengths)
+    frame = rays.grid.frame
     points = frame.enu_km(rays.all_points[index]).astype(np.float32)
     cells: dict[str, npt.NDArray[Any]] = {
         "row": chosen,

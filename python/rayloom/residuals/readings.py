@@ -18,6 +18,7 @@ from rayloom.survey.tables import (
     FloatArray,
     IndexArray,
     TextArray,
+    TimeArray,
     seconds_between,
 )
 from rayloom.survey.text_table import TextTable, read_text_table
@@ -89,7 +90,7 @@ def read_ready_residuals(
     event, network, station = (reader.text(name) for name in ("event", "network", "station"))
     event_index = find_events(event, events, table.lines, table.problems)
     origin = np.where(event_index >= 0, events.time[event_index], np.datetime64("NaT", "ns"))
-    arrival = origin + _TYPICAL_TRAVEL
+    arrival: TimeArray = np.add(origin, _TYPICAL_TRAVEL)
     readings = Readings(
         event_index,
         find_stations(network, station, arrival, stations, table.lines, table.problems),

@@ -18,7 +18,7 @@ from rayloom.survey.text_table import TextTable
 _TIME: Final = re.compile(
     r"(?P<day>(?P<year>\d{4})-\d\d-\d\d)"
     r"(?:[T ](?P<clock>\d\d:\d\d(?::\d\d(?:\.\d{1,9})?)?)"
-    r"(?P<zone>Z|[+-]\d\d:?\d\d)?)?",
+    r"(?P<zone>Z|[+-](?:0\d|1[0-4]):?[0-5]\d)?)?",
     re.ASCII,
 )
 _FIRST_YEAR: Final = 1700

@@ -9,21 +9,27 @@ const STEPS: usize = 8;
 
 /// Distance between a sampled ray parameter and the critical one beside it,
 /// relative, so that the sample falls on the intended side.
-const NUDGE: f64 = 1e-12;
+const NUDGE: f64 = 1e-13;
 
-/// One branch: rays of falling parameter and their travel to every receiver.
-#[derive(Debug, Clone)]
-pub(super) struct Branch {
+/// Rays on the two sides of a critical ray parameter that land closer than this
+/// belong to one curve, rad. Across a shadow zone they land far apart.
+const JOIN_RAD: f64 = 1e-5;
+
+/// Rays closer than this give their slope by their parameters alone, rad.
+const NARROW_RAD: f64 = 1e-4;
+
+/// Branches that end this close to the window of distance are kept, rad.
+const MARGIN_RAD: f64 = 0.02;
+
+/// Rays of falling parameter, gathered in branches.
+#[derive(Debug, Clone, Default)]
+pub(super) struct Fan {
     /// Ray parameter of each sample, s/rad.
-    pub(super) ray_parameter_s: Vec<f64>,
+    ray_parameter_s: Vec<f64>,
+    /// Whether a sample is the first of its branch.
+    begins: Vec<bool>,
     /// Sample by sample, receiver by receiver.
     travel: Vec<Travel>,
-}
-
-/// The branches of a fan.
-#[derive(Debug, Clone)]
-pub(super) struct Fan {
-    pub(super) branches: Vec<Branch>,
     receiver_count: usize,
 }
 
@@ -40,73 +46,73 @@ impl Fan {
     /// Samples a route for rising receiver radii, leaving out branches that lie
     /// wholly before or beyond the window of distance (rad).
     pub(super) fn new(route: &Route<'_>, receivers_km: &[f64], window_rad: (f64, f64)) -> Self {
-        let critical = route.critical_s(receivers_km);
-        let branches = critical
-            .windows(2)
-            .filter_map(|pair| {
-                let branch = Branch::sample(route, receivers_km, (pair[0], pair[1]), 2)?;
-                branch
-                    .touches(window_rad)
-                    .then(|| Branch::sample(route, receivers_km, (pair[0], pair[1]), STEPS))?
-            })
-            .collect();
-        Self {
-            branches,
+        let mut fan = Self {
             receiver_count: receivers_km.len(),
+            ..Self::default()
+        };
+        for pair in route.critical_s(receivers_km).windows(2) {
+            let range = (pair[0], pair[1]);
+            if route.start(f64::midpoint(range.0, range.1)).is_none() {
+                continue;
+            }
+            let coarse = branch(route, receivers_km, range, 2);
+            if touches(&coarse.1, window_rad) {
+                fan.push(branch(route, receivers_km, range, STEPS));
+            }
         }
+        fan
+    }
+
+    fn push(&mut self, (ray_parameter_s, travel): (Vec<f64>, Vec<Travel>)) {
+        self.begins
+            .extend((0..ray_parameter_s.len()).map(|sample| sample == 0));
+        self.ray_parameter_s.extend(ray_parameter_s);
+        self.travel.extend(travel);
     }
 
     /// Every pair of neighbouring rays that reach a receiver.
     pub(super) fn gaps(&self, receiver: usize) -> impl Iterator<Item = Gap> + '_ {
-        let count = self.receiver_count;
-        self.branches.iter().flat_map(move |branch| {
-            let at = move |sample: usize| branch.travel[sample * count + receiver];
-            (1..branch.ray_parameter_s.len())
-                .map(move |sample| Gap {
-                    from: at(sample - 1),
-                    to: at(sample),
-                    ray_parameter_s: (
-                        branch.ray_parameter_s[sample - 1],
-                        branch.ray_parameter_s[sample],
-                    ),
-                })
-                .filter(|gap| gap.width_rad().abs() > 0.0)
+        let at = move |sample: usize| self.travel[sample * self.receiver_count + receiver];
+        (1..self.ray_parameter_s.len()).filter_map(move |sample| {
+            let gap = Gap {
+                from: at(sample - 1),
+                to: at(sample),
+                ray_parameter_s: (
+                    self.ray_parameter_s[sample - 1],
+                    self.ray_parameter_s[sample],
+                ),
+            };
+            let joined = !self.begins[sample] || gap.bridges();
+            (joined && gap.width_rad().abs() > 0.0).then_some(gap)
         })
     }
 }
 
-impl Branch {
-    /// Samples the ray parameters between two critical ones, denser towards the
-    /// upper, where distance varies as the square root of the parameter.
-    /// `None` if no ray takes the route there.
-    fn sample(
-        route: &Route<'_>,
-        receivers_km: &[f64],
-        (high_s, low_s): (f64, f64),
-        steps: usize,
-    ) -> Option<Self> {
-        let inside = |p: f64| p.clamp(low_s * (1.0 + NUDGE), high_s * (1.0 - NUDGE));
-        let ray_parameter_s: Vec<f64> = (0..=steps)
-            .map(|step| inside(high_s - (high_s - low_s) * (step as f64 / steps as f64).powi(2)))
-            .collect();
-        route.start(ray_parameter_s[steps / 2])?;
-        let count = receivers_km.len();
-        let mut travel = vec![Travel::NONE; (steps + 1) * count];
-        for (p, row) in ray_parameter_s.iter().zip(travel.chunks_exact_mut(count)) {
-            route.travel(*p, receivers_km, row);
-        }
-        Some(Self {
-            ray_parameter_s,
-            travel,
-        })
+/// Samples the ray parameters between two critical ones, denser towards the
+/// upper, where distance varies as the square root of the parameter.
+fn branch(
+    route: &Route<'_>,
+    receivers_km: &[f64],
+    (high_s, low_s): (f64, f64),
+    steps: usize,
+) -> (Vec<f64>, Vec<Travel>) {
+    let inside = |p: f64| p.clamp(low_s * (1.0 + NUDGE), high_s * (1.0 - NUDGE));
+    let ray_parameter_s: Vec<f64> = (0..=steps)
+        .map(|step| inside(high_s - (high_s - low_s) * (step as f64 / steps as f64).powi(2)))
+        .collect();
+    let count = receivers_km.len();
+    let mut travel = vec![Travel::NONE; (steps + 1) * count];
+    for (p, row) in ray_parameter_s.iter().zip(travel.chunks_exact_mut(count)) {
+        route.travel(*p, receivers_km, row);
     }
+    (ray_parameter_s, travel)
+}
 
-    /// Whether any ray lands inside the window, or rays land on both sides.
-    fn touches(&self, (nearest, farthest): (f64, f64)) -> bool {
-        let before = self.travel.iter().any(|ray| ray.angle_rad <= farthest);
-        let beyond = self.travel.iter().any(|ray| ray.angle_rad >= nearest);
-        before && beyond
-    }
+/// Whether any ray lands inside the window, or rays land on both sides.
+fn touches(travel: &[Travel], (nearest, farthest): (f64, f64)) -> bool {
+    let before = |ray: &Travel| ray.angle_rad <= farthest + MARGIN_RAD;
+    let beyond = |ray: &Travel| ray.angle_rad >= nearest - MARGIN_RAD;
+    travel.iter().any(before) && travel.iter().any(beyond)
 }
 
 impl Gap {
@@ -115,9 +121,24 @@ impl Gap {
         self.to.angle_rad - self.from.angle_rad
     }
 
+    /// Whether the two rays lie on the two sides of one critical ray parameter
+    /// across which travel is continuous.
+    fn bridges(&self) -> bool {
+        let (high, low) = self.ray_parameter_s;
+        high - low <= 4.0 * NUDGE * high && self.width_rad().abs() < JOIN_RAD
+    }
+
+    /// Whether a distance lies between the two rays.
+    pub(super) fn holds(&self, distance_rad: f64) -> bool {
+        (self.from.angle_rad - distance_rad) * (self.to.angle_rad - distance_rad) <= 0.0
+    }
+
     /// Time and its first and second derivative by distance on the cubic.
     pub(super) fn curve(&self, distance_rad: f64) -> [f64; 3] {
         let width = self.width_rad();
+        if width.abs() < NARROW_RAD {
+            return self.parabola(distance_rad);
+        }
         let u = (distance_rad - self.from.angle_rad) / width;
         let rise = self.to.time_s - self.from.time_s;
         let (start, end) = (
@@ -131,6 +152,23 @@ impl Gap {
             self.from.time_s + u * (start + u * (b + u * c)),
             (start + u * (2.0 * b + 3.0 * u * c)) / width,
             (2.0 * b + 6.0 * u * c) / (width * width),
+        ]
+    }
+
+    /// The same for rays so close that rounding would spoil the cubic: times
+    /// that follow from the ray parameters alone.
+    fn parabola(&self, distance_rad: f64) -> [f64; 3] {
+        let (start, end) = self.ray_parameter_s;
+        let step = distance_rad - self.from.angle_rad;
+        let bend = if self.bridges() {
+            0.0
+        } else {
+            (end - start) / self.width_rad()
+        };
+        [
+            self.from.time_s + step * (start + 0.5 * bend * step),
+            start + bend * step,
+            bend,
         ]
     }
 }

@@ -59,6 +59,18 @@ impl RadialModel {
         Ok(Self { radius_km, shells })
     }
 
+    /// The part above a depth, which must lie inside the model.
+    pub(super) fn above(&self, depth_km: f64) -> Self {
+        let limit_km = self.radius_km - depth_km;
+        let last = self.shell_index(limit_km, Side::Above);
+        let mut shells = self.shells[..=last].to_vec();
+        shells[last].bottom_km = shells[last].bottom_km.max(limit_km);
+        Self {
+            radius_km: self.radius_km,
+            shells,
+        }
+    }
+
     /// Radius of the sphere at sea level, km.
     #[must_use]
     pub fn radius_km(&self) -> f64 {
@@ -102,6 +114,49 @@ impl RadialModel {
     pub fn velocity_km_s(&self, depth_km: f64, side: Side) -> f64 {
         let radius_km = self.radius_km - depth_km;
         self.shells[self.shell_index(radius_km, side)].velocity_km_s(radius_km)
+    }
+
+    /// Velocities at many depths, km/s.
+    ///
+    /// # Errors
+    /// [`CoreError::Invalid`] unless every depth lies inside the model.
+    pub fn velocities_km_s(&self, depth_km: &[f64], side: Side) -> Result<Vec<f64>> {
+        depth_km
+            .iter()
+            .map(|&depth_km| {
+                self.check_depth("depth", depth_km)?;
+                Ok(self.velocity_km_s(depth_km, side))
+            })
+            .collect()
+    }
+
+    /// Mean of 1/v between each pair of neighbouring depths, exact, s/km.
+    ///
+    /// # Errors
+    /// [`CoreError::Invalid`] unless the depths rise and lie inside the model.
+    pub fn mean_slowness_s_per_km(&self, depth_edges_km: &[f64]) -> Result<Vec<f64>> {
+        for &edge_km in depth_edges_km {
+            self.check_depth("depth edge", edge_km)?;
+        }
+        depth_edges_km
+            .windows(2)
+            .map(|pair| {
+                if pair[0] >= pair[1] {
+                    return Err(CoreError::invalid(
+                        "depth edges",
+                        "rising depths",
+                        format!("{} km before {} km", pair[0], pair[1]),
+                    ));
+                }
+                let (high_km, low_km) = (self.radius_km - pair[0], self.radius_km - pair[1]);
+                let time_s: f64 = self
+                    .shells
+                    .iter()
+                    .map(|shell| shell.vertical_s(low_km, high_km))
+                    .sum();
+                Ok(time_s / (high_km - low_km))
+            })
+            .collect()
     }
 
     /// # Errors

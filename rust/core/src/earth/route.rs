@@ -11,6 +11,7 @@ pub(super) struct Span<'a> {
     /// What the ray reaches, or must not reach if it turns.
     pub(super) lower_km: f64,
     pub(super) turns: bool,
+    pub(super) rises: bool,
 }
 
 /// All stretches of a phase: those that do not depend on the receiver, and the
@@ -34,9 +35,11 @@ impl<'a> Route<'a> {
             upper_km: model.radius_km() - source_depth_km,
             lower_km: model.bottom_km(),
             turns: true,
+            rises: false,
         };
         let last = Span {
             upper_km: model.shells()[0].top_km,
+            rises: true,
             ..down
         };
         Self {

@@ -92,12 +92,6 @@ impl Shell {
         self.intercept_km_s + self.gradient_per_s * radius_km
     }
 
-    /// dv/dr, 1/s.
-    #[must_use]
-    pub fn gradient_per_s(&self) -> f64 {
-        self.gradient_per_s
-    }
-
     /// η = r/v, the ray parameter of a ray that is horizontal at this radius, s/rad.
     #[must_use]
     pub fn horizontal_s(&self, radius_km: f64) -> f64 {
@@ -128,6 +122,22 @@ impl Shell {
         }
         sum.angle_rad *= ray_parameter;
         sum
+    }
+
+    /// ∫ dr/v over the part of the shell that lies between two radii.
+    pub(super) fn vertical_s(&self, low_km: f64, high_km: f64) -> f64 {
+        let (low_km, high_km) = (low_km.max(self.bottom_km), high_km.min(self.top_km));
+        if high_km <= low_km {
+            return 0.0;
+        }
+        let (below, above) = (self.velocity_km_s(low_km), self.velocity_km_s(high_km));
+        let contrast = (above - below) / (above + below);
+        let stretch = if contrast.abs() < 1e-4 {
+            1.0 + contrast * contrast / 3.0
+        } else {
+            contrast.atanh() / contrast
+        };
+        2.0 * (high_km - low_km) * stretch / (above + below)
     }
 
     /// The stretch of ray between two radii, `None` if there is none.
@@ -168,6 +178,29 @@ pub(super) struct Path {
 }
 
 impl Path {
+    /// The ray's parameter, s/rad.
+    pub(super) fn ray_parameter_s(&self) -> f64 {
+        self.ray_parameter
+    }
+
+    /// Radii of the lower end (the turning point if the ray turns) and the upper, km.
+    pub(super) fn ends_km(&self) -> (f64, f64) {
+        (self.start_km, self.start_km + self.length_km)
+    }
+
+    /// dv/dr, 1/s.
+    pub(super) fn gradient_per_s(&self) -> f64 {
+        self.shell.gradient_per_s
+    }
+
+    /// √(r²/v² − p²), the part of the ray's slowness that points upward times
+    /// the radius, s/rad.
+    pub(super) fn steepness_s(&self, radius_km: f64) -> f64 {
+        let horizontal_s = self.shell.horizontal_s(radius_km);
+        let square = (horizontal_s - self.ray_parameter) * (horizontal_s + self.ray_parameter);
+        square.max(0.0).sqrt()
+    }
+
     /// r, v and g with dΔ = p v² g dx and dT = r² g dx.
     #[inline]
     pub(super) fn at(&self, x: f64) -> (f64, f64, f64) {

@@ -1,0 +1,25 @@
+"""One-dimensional Earth: travel times, their corrections, and geodesy.
+
+:class:`ReferenceEarth` is the main type: a radial model with travel times,
+ray parameters and corrections for ellipticity and elevation.
+"""
+
+from rayloom.earth.geodesy import (
+    DistanceAzimuth,
+    distance_azimuth_deg,
+    geocentric_latitude_deg,
+    geographic_latitude_deg,
+)
+from rayloom.earth.model_table import ModelTable
+from rayloom.earth.reference import ReferenceEarth
+from rayloom.earth.time_table import TimeTable
+
+__all__ = [
+    "DistanceAzimuth",
+    "ModelTable",
+    "ReferenceEarth",
+    "TimeTable",
+    "distance_azimuth_deg",
+    "geocentric_latitude_deg",
+    "geographic_latitude_deg",
+]

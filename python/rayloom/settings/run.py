@@ -1,0 +1,117 @@
+"""Everything a person may choose about one run.
+
+The main type is :class:`RunSettings`.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Final
+
+from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+
+from rayloom.forward import ForwardSettings
+from rayloom.inversion import InversionSettings
+from rayloom.model import GridSettings
+from rayloom.outputs import OutputSettings
+from rayloom.residuals import ResidualSettings
+from rayloom.survey import SurveySettings
+
+TRACING_KEYS: Final = ("method", "quality", "threads")
+"""Keys of ``forward`` that the inversion takes over."""
+
+
+class InputSettings(BaseModel):
+    """Tables to read, relative to this folder. Give picks, or residuals if you have them already.
+
+    Attributes
+    ----------
+    stations : path
+        network, station, latitude, longitude, elevation_m.
+    events : path
+        event, time, latitude, longitude, depth_km.
+    picks : path, optional
+        event, network, station, phase, time, uncertainty_s.
+    residuals : path, optional
+        event, network, station, phase, residual_s, uncertainty_s.
+    """
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+    stations: Path
+    events: Path
+    picks: Path | None = None
+    residuals: Path | None = None
+
+    @model_validator(mode="after")
+    def _one_kind_of_data(self) -> InputSettings:
+        if (self.picks is None) == (self.residuals is None):
+            raise ValueError("give either picks or residuals, one of them")
+        return self
+
+
+class EarthSettings(BaseModel):
+    """The one-dimensional Earth that predicts arrival times and fills the blocks.
+
+    Attributes
+    ----------
+    model : str
+        "ak135", "iasp91", or a CSV file with depth_km, vp_km_s and vs_km_s.
+    """
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+    model: str = Field(default="ak135", min_length=1)
+
+
+class RunOutputSettings(OutputSettings):
+    """Figures and files.
+
+    Attributes
+    ----------
+    linear_system : bool
+        Whether the inversion also writes linear_system/: path lengths G in km, data, rows
+        and blocks of its last iteration.
+    """
+
+    linear_system: bool = False
+
+
+class RunSettings(BaseModel):
+    """Settings of one run, a section for each room of the work.
+
+    How rays are traced is chosen in ``forward`` alone; the keys of the same names in the
+    settings of the inversion are filled from there (:meth:`inversion_settings`).
+
+    Attributes
+    ----------
+    inputs, earth, survey, residuals, grid, forward, inversion, outputs : settings
+        In the order of the work.
+    """
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+    inputs: InputSettings
+    earth: EarthSettings = Field(default_factory=EarthSettings)
+    survey: SurveySettings = Field(default_factory=SurveySettings)
+    residuals: ResidualSettings = Field(default_factory=ResidualSettings)
+    grid: GridSettings
+    forward: ForwardSettings = Field(default_factory=ForwardSettings)
+    inversion: InversionSettings = Field(default_factory=InversionSettings)
+    outputs: RunOutputSettings = Field(
+        default_factory=lambda: RunOutputSettings.model_validate({})
+    )
+
+    @field_validator("inversion", mode="before")
+    @classmethod
+    def _tracing_is_chosen_once(cls, given: object) -> object:
+        misplaced = [key for key in TRACING_KEYS if isinstance(given, dict) and key in given]
+        if misplaced:
+            verb = "belongs" if len(misplaced) == 1 else "belong"
+            raise ValueError(f"{' and '.join(misplaced)} {verb} to [forward]")
+        return given
+
+    def inversion_settings(self) -> InversionSettings:
+        """Return the settings of the inversion with the tracing chosen in ``forward``."""
+        chosen = {key: getattr(self.forward, key) for key in TRACING_KEYS}
+        return self.inversion.model_copy(update=chosen)

@@ -1,0 +1,214 @@
+"""The person's tables of a run folder, read and turned into residuals.
+
+The main function is :func:`residuals_from_tables`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass, replace
+from pathlib import Path
+
+import numpy as np
+
+from rayloom.earth import ReferenceEarth
+from rayloom.errors import InputError
+from rayloom.residuals import (
+    Exclusions,
+    Residuals,
+    ResidualSettings,
+    compute_residuals,
+    read_residuals,
+)
+from rayloom.settings import RunSettings
+from rayloom.survey import Notice, SurveySettings, read_events, read_stations, read_survey
+from rayloom.workflow.folder import RunFolder
+from rayloom.workflow.reporting import Reporter
+
+LEFT_OUT_OF_INVERSION = "left_out_of_inversion"
+"""Reason in ``exclusions.csv`` of rows that only the inversion leaves out."""
+
+_SHOWN_PER_KIND = 3
+
+
+@dataclass(frozen=True)
+class Tables:
+    """Where the person's tables are.
+
+    Parameters
+    ----------
+    stations, events : pathlib.Path
+        Tables of stations and events.
+    picks, residuals : pathlib.Path, optional
+        Picks, or residuals where these are ready: one of the two.
+    """
+
+    stations: Path
+    events: Path
+    picks: Path | None = None
+    residuals: Path | None = None
+
+    @classmethod
+    def of(cls, folder: RunFolder, settings: RunSettings) -> Tables:
+        """Return the tables that the settings of a run folder name."""
+        named = settings.inputs
+        return cls(
+            stations=folder.resolve(named.stations),
+            events=folder.resolve(named.events),
+            picks=None if named.picks is None else folder.resolve(named.picks),
+            residuals=None if named.residuals is None else folder.resolve(named.residuals),
+        )
+
+    def files(self) -> dict[str, Path]:
+        """Return the tables by what they hold."""
+        named = {
+            "stations": self.stations,
+            "events": self.events,
+            "picks": self.picks,
+            "residuals": self.residuals,
+        }
+        return {name: path for name, path in named.items() if path is not None}
+
+
+def read_earth(folder: RunFolder, model: str) -> ReferenceEarth:
+    """Return the one-dimensional Earth of that name, or of that CSV file."""
+    if is_table(model):
+        return ReferenceEarth.from_csv(folder.resolve(Path(model)))
+    return ReferenceEarth(model)
+
+
+def is_table(model: str) -> bool:
+    """Tell whether a one-dimensional model is named by its file."""
+    return model.lower().endswith(".csv")
+
+
+def residuals_from_tables(
+    tables: Tables,
+    earth: ReferenceEarth,
+    *,
+    survey: SurveySettings,
+    residuals: ResidualSettings,
+    reporter: Reporter,
+) -> Residuals:
+    """Read the person's tables and compute residuals, or take those that are ready.
+
+    Parameters
+    ----------
+    tables : Tables
+        The files.
+    earth : ReferenceEarth
+        Predicts the arrival times.
+    survey : SurveySettings
+        How tables are read.
+    residuals : ResidualSettings
+        Which picks count.
+    reporter : Reporter
+        Hears what was read and the notices.
+
+    Returns
+    -------
+    Residuals
+        What can be used, and with reasons what cannot.
+
+    Raises
+    ------
+    InputError
+        If anything is wrong with a table, or nothing is left to use.
+    """
+    if tables.residuals is not None:
+        data, notices = _ready(tables, tables.residuals, earth, survey, residuals)
+    else:
+        data, notices = _computed(tables, earth, survey, residuals)
+    reporter.note(
+        f"{len(data.stations)} stations, {len(data.events)} events, "
+        f"{len(data.residual_s)} residuals to use"
+    )
+    for line in exclusion_lines(data):
+        reporter.note(line)
+    for line in notice_lines([*notices, *data.notices]):
+        reporter.note(line)
+    return data
+
+
+def read_back_residuals(
+    folder: RunFolder, earth: ReferenceEarth, settings: RunSettings
+) -> Residuals:
+    """Read ``residuals.csv`` of a run folder, as computed or as edited since.
+
+    Its list of exclusions is that of ``exclusions.csv``.
+
+    Raises
+    ------
+    InputError
+        If anything is wrong with the table.
+    """
+    tables = Tables.of(folder, settings)
+    data = read_residuals(
+        folder.residuals,
+        read_stations(tables.stations),
+        read_events(tables.events),
+        earth,
+        settings.residuals,
+        survey_settings=settings.survey,
+    )
+    return replace(data, excluded=_earlier_exclusions(folder.exclusions))
+
+
+def _earlier_exclusions(path: Path) -> Exclusions:
+    """Read what was left out before the inversion."""
+    import pandas as pd
+
+    if not path.exists():
+        return Exclusions()
+    table = pd.read_csv(path, dtype=str, keep_default_na=False)
+    table = table[table["reason"] != LEFT_OUT_OF_INVERSION]
+    return Exclusions(**{name: table[name].to_numpy(dtype=np.str_) for name in table.columns})
+
+
+def notice_lines(notices: Iterable[Notice]) -> list[str]:
+    """Tell notices in few lines: three of a kind, warnings first."""
+    by_kind: dict[tuple[str, str], list[Notice]] = {}
+    for notice in notices:
+        by_kind.setdefault((notice.severity, notice.what), []).append(notice)
+    lines = []
+    for (severity, _), same in sorted(by_kind.items(), key=lambda item: item[0][0] != "warning"):
+        mark = "warning: " if severity == "warning" else ""
+        lines += [f"{mark}{notice.detail}" for notice in same[:_SHOWN_PER_KIND]]
+        if len(same) > _SHOWN_PER_KIND:
+            lines.append(f"{mark}… and {len(same) - _SHOWN_PER_KIND} more of the kind")
+    return lines
+
+
+def exclusion_lines(data: Residuals) -> list[str]:
+    """Tell how many picks were left out, by reason."""
+    counts = data.excluded.counts()
+    total = sum(counts.values())
+    if not total:
+        return []
+    parts = [f"{count} {reason.replace('_', ' ')}" for reason, count in counts.items()]
+    return [f"left out {total} picks: {', '.join(parts)}"]
+
+
+def _computed(
+    tables: Tables, earth: ReferenceEarth, survey: SurveySettings, residuals: ResidualSettings
+) -> tuple[Residuals, list[Notice]]:
+    if tables.picks is None:
+        raise InputError("neither picks nor residuals are named", where="inputs")
+    read = read_survey(
+        stations=tables.stations, events=tables.events, picks=tables.picks, settings=survey
+    )
+    return compute_residuals(read, earth, residuals), read.notices
+
+
+def _ready(
+    tables: Tables,
+    table: Path,
+    earth: ReferenceEarth,
+    survey: SurveySettings,
+    residuals: ResidualSettings,
+) -> tuple[Residuals, list[Notice]]:
+    notices: list[Notice] = []
+    stations = read_stations(tables.stations, notices=notices)
+    events = read_events(tables.events, notices=notices)
+    data = read_residuals(table, stations, events, earth, residuals, survey_settings=survey)
+    return data, notices

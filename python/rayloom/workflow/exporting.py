@@ -1,0 +1,33 @@
+"""The step ``export``: files for viewers, figures and the report."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+from rayloom.model import SlownessModel
+from rayloom.outputs.report import write_report
+from rayloom.outputs.results import write_figures, write_model_files
+from rayloom.settings import RunSettings
+from rayloom.workflow.data import read_back_residuals, read_earth
+from rayloom.workflow.folder import RunFolder
+from rayloom.workflow.plan import Outcome
+from rayloom.workflow.reporting import Reporter
+from rayloom.workflow.result_file import load_result
+
+
+def export_results(folder: RunFolder, settings: RunSettings, reporter: Reporter) -> Outcome:
+    """Write viewer files, figures and the report of the inversion in a run folder."""
+    earth = read_earth(folder, settings.earth.model)
+    data = read_back_residuals(folder, earth, settings)
+    model = SlownessModel.read_netcdf(folder.file("model.nc"))
+    result = load_result(folder.file("inversion.npz"), data, model)
+    reporter.progress("export", 0, 3)
+    written: list[Path] = write_model_files(folder.path, result)
+    reporter.progress("export", 1, 3)
+    figures = write_figures(folder.figures, result, settings.outputs)
+    reporter.progress("export", 2, 3)
+    report = folder.file("report.html")
+    write_report(report, result, figures=figures)
+    drawn = [path for figure in figures for path in figure.paths]
+    files = [*written, *drawn, report]
+    return Outcome(files={str(path.relative_to(folder.path).as_posix()): path for path in files})

@@ -1,0 +1,158 @@
+"""Making a run folder: tables read, a grid suggested, settings written.
+
+The main function is :func:`initialise`.
+"""
+
+from __future__ import annotations
+
+import os
+import shutil
+import time
+from pathlib import Path
+from typing import Final
+
+import numpy as np
+
+from rayloom.earth import ReferenceEarth
+from rayloom.errors import InputError
+from rayloom.model import suggest_grid
+from rayloom.outputs.atomic import replacing, write_text
+from rayloom.residuals import Residuals, ResidualSettings
+from rayloom.settings import EarthSettings, InputSettings, RunSettings, run_settings_text
+from rayloom.survey import Picks, Survey, SurveySettings
+from rayloom.workflow.data import Tables, is_table, residuals_from_tables
+from rayloom.workflow.folder import RunFolder
+from rayloom.workflow.reporting import Reporter
+
+INPUTS: Final = "inputs"
+"""Folder inside the run folder that holds copied tables."""
+
+_HEADING = """\
+Settings of one run of rayloom. Edit, then: rayloom run {folder}
+Keys left out take their defaults; files are named relative to this folder.
+Depths are km below sea level, times s, angles degrees, perturbations percent of velocity.
+"""
+
+
+def initialise(
+    path: Path,
+    tables: Tables,
+    *,
+    earth: str = "ak135",
+    copy: bool = False,
+    force: bool = False,
+    reporter: Reporter | None = None,
+) -> RunFolder:
+    """Make a run folder.
+
+    Parameters
+    ----------
+    path : pathlib.Path
+        The folder; made if it is not there.
+    tables : Tables
+        The person's files.
+    earth : str
+        Name of the one-dimensional model, or a CSV file.
+    copy : bool
+        Copy the tables into the folder instead of naming them where they are.
+    force : bool
+        Overwrite settings that are there already.
+    reporter : Reporter, optional
+        Hears what was read and why the grid is as it is.
+
+    Returns
+    -------
+    RunFolder
+        The folder with its ``rayloom.toml``.
+
+    Raises
+    ------
+    InputError
+        If settings are there already, or anything is wrong with the tables.
+    FileAccessError
+        If the folder cannot be written.
+    """
+    reporter = reporter or Reporter()
+    folder = RunFolder(path)
+    if folder.settings_file.exists() and not force:
+        raise InputError(
+            f"{folder.settings_file} is there already; run it with: rayloom run {path}, "
+            "or overwrite it with --force"
+        )
+    if (tables.picks is None) == (tables.residuals is None):
+        raise InputError("give either --picks or --residuals, one of them")
+    if path.exists() and not path.is_dir():
+        raise InputError(f"{path} is a file; expected the name of a folder")
+    started = time.monotonic()
+    reporter.begin("init", "reading the tables")
+    settings = _suggested_settings(folder, tables, earth, copy, reporter)
+    if copy:
+        _copy(tables, folder)
+    write_text(
+        folder.settings_file, run_settings_text(settings, heading=_HEADING.format(folder=path))
+    )
+    reporter.finish("init", time.monotonic() - started)
+    return folder
+
+
+def _suggested_settings(
+    folder: RunFolder, tables: Tables, earth: str, copy: bool, reporter: Reporter
+) -> RunSettings:
+    model = ReferenceEarth.from_csv(earth) if is_table(earth) else ReferenceEarth(earth)
+    data = residuals_from_tables(
+        tables, model, survey=SurveySettings(), residuals=ResidualSettings(), reporter=reporter
+    )
+    suggestion = suggest_grid(_usable_part(data), model)
+    for reason in suggestion.reasons:
+        reporter.note(reason)
+    named = {
+        name: _named_in(folder, file, copied_to=INPUTS if copy else None)
+        for name, file in tables.files().items()
+    }
+    return RunSettings(
+        inputs=InputSettings(**named),
+        earth=EarthSettings(model=_earth_named(folder, earth)),
+        grid=suggestion.settings,
+    )
+
+
+def _usable_part(data: Residuals) -> Survey:
+    """Give the picks behind the residuals to use, so that others do not shape the grid."""
+    travel_s = data.predicted_s + data.residual_s
+    origin = data.events.time[data.event_index]
+    picks = Picks(
+        data.event_index,
+        data.station_index,
+        data.phase,
+        origin + np.round(travel_s * 1e9).astype("timedelta64[ns]"),
+        data.uncertainty_s,
+    )
+    return Survey(data.stations, data.events, picks)
+
+
+def _named_in(folder: RunFolder, file: Path, *, copied_to: str | None) -> Path:
+    """Name a file relative to the folder, or absolutely where no relative path exists."""
+    if copied_to is not None:
+        return Path(copied_to) / file.name
+    try:
+        return Path(os.path.relpath(file.resolve(), folder.path.resolve()))
+    except ValueError:
+        return file.resolve()
+
+
+def _earth_named(folder: RunFolder, earth: str) -> str:
+    if not is_table(earth):
+        return earth
+    return _named_in(folder, Path(earth), copied_to=None).as_posix()
+
+
+def _copy(tables: Tables, folder: RunFolder) -> None:
+    files = list(tables.files().values())
+    if len({file.name for file in files}) < len(files):
+        raise InputError("two tables have the same name; rename one, or leave out --copy")
+    for file in files:
+        target = folder.path / INPUTS / file.name
+        if target.exists() and target.samefile(file):
+            continue
+        with replacing(target) as temporary:
+            shutil.copyfile(file, temporary)

@@ -1,0 +1,148 @@
+"""The step ``invert``: residuals in, model and tables out, resumable after every iteration."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from pathlib import Path
+
+import numpy as np
+
+from rayloom.errors import RayloomError
+from rayloom.inversion import (
+    InversionResult,
+    InversionState,
+    invert,
+    load_state,
+    save_state,
+)
+from rayloom.model import BlockGrid, SlownessModel
+from rayloom.outputs import (
+    write_exclusions_csv,
+    write_history_csv,
+    write_linear_system,
+    write_residuals_csv,
+)
+from rayloom.outputs.tables import write_mislocations_csv, write_station_terms_csv, write_table
+from rayloom.residuals import Residuals
+from rayloom.settings import RunSettings
+from rayloom.workflow.data import read_back_residuals, read_earth
+from rayloom.workflow.folder import RunFolder
+from rayloom.workflow.plan import Files, Outcome
+from rayloom.workflow.reporting import Reporter
+from rayloom.workflow.result_file import save_result
+
+
+def run_inversion(
+    folder: RunFolder, settings: RunSettings, reporter: Reporter, *, fingerprint: str
+) -> Outcome:
+    """Invert the residuals of a run folder and write what came of it.
+
+    Parameters
+    ----------
+    folder : RunFolder
+        Where ``residuals.csv`` is.
+    settings : RunSettings
+        The settings.
+    reporter : Reporter
+        Hears each stage and iteration.
+    fingerprint : str
+        Names what the inversion reads and obeys, so that no checkpoint of another is
+        taken up.
+
+    Returns
+    -------
+    Outcome
+        The files written.
+    """
+    earth = read_earth(folder, settings.earth.model)
+    data = read_back_residuals(folder, earth, settings)
+    grid = BlockGrid.from_spec(settings.grid)
+    model = SlownessModel.from_earth(grid, earth, wave=_wave(data, reporter))
+    checkpoint = folder.checkpoints / f"invert_{fingerprint}.npz"
+    resume = _resumable(checkpoint, reporter)
+    result = invert(
+        data,
+        model,
+        settings.inversion_settings(),
+        progress=reporter.progress,
+        checkpoint=_keeper(checkpoint, reporter),
+        resume=resume,
+    )
+    reporter.note(f"stopped: {result.stopped_because}")
+    files = _write(folder, result, linear_system=settings.outputs.linear_system)
+    _clear(folder.checkpoints)
+    return Outcome(
+        files=files,
+        seeds={"trace_probes": settings.inversion.seed},
+        remarks={"stopped_because": result.stopped_because},
+    )
+
+
+def _wave(data: Residuals, reporter: Reporter) -> str:
+    """Choose the wave that is inverted for: P where there is any."""
+    waves = np.unique(data.wave).tolist()
+    if len(waves) > 1:
+        unused = int(np.count_nonzero(data.wave != "P"))
+        reporter.note(f"P residuals are inverted; {unused} S residuals are left aside")
+    return "P" if "P" in waves else "S"
+
+
+def _keeper(checkpoint: Path, reporter: Reporter) -> Callable[[InversionState], None]:
+    checkpoint.parent.mkdir(parents=True, exist_ok=True)
+
+    def keep(state: InversionState) -> None:
+        save_state(checkpoint, state)
+        row = state.history[-1]
+        name = f"iteration {row.iteration}" if row.iteration else "starting model"
+        reporter.note(
+            f"{name}: rms {row.rms_kept_s:.3f} s, variance reduction "
+            f"{row.variance_reduction_percent:.0f} %, model rms {row.model_rms_percent:.2f} %, "
+            f"{row.seconds:.0f} s"
+        )
+
+    return keep
+
+
+def _resumable(checkpoint: Path, reporter: Reporter) -> InversionState | None:
+    if not checkpoint.exists():
+        return None
+    try:
+        state = load_state(checkpoint)
+    except RayloomError:
+        reporter.note("the checkpoint cannot be read; starting afresh")
+        return None
+    reporter.note(f"resuming after iteration {state.iteration}")
+    return state
+
+
+def _write(folder: RunFolder, result: InversionResult, *, linear_system: bool) -> Files:
+    names = (
+        "history.csv",
+        "residuals_after.csv",
+        "exclusions.csv",
+        "suspected_outliers.csv",
+        "station_terms.csv",
+        "mislocations.csv",
+        "model.nc",
+        "inversion.npz",
+    )
+    files = {name: folder.file(name) for name in names}
+    write_history_csv(files["history.csv"], result)
+    write_residuals_csv(files["residuals_after.csv"], result.data, result)
+    write_exclusions_csv(files["exclusions.csv"], result.data, result)
+    write_table(files["suspected_outliers.csv"], result.outlier_frame())
+    write_station_terms_csv(files["station_terms.csv"], result)
+    write_mislocations_csv(files["mislocations.csv"], result)
+    result.model.write_netcdf(files["model.nc"])
+    save_result(files["inversion.npz"], result)
+    if linear_system:
+        written = write_linear_system(folder.linear_system, result)
+        files |= {f"linear_system/{path.name}": path for path in written}
+    return files
+
+
+def _clear(checkpoints: Path) -> None:
+    for leftover in checkpoints.glob("invert_*.npz*"):
+        leftover.unlink(missing_ok=True)
+    if checkpoints.is_dir() and not any(checkpoints.iterdir()):
+        checkpoints.rmdir()

@@ -1,0 +1,100 @@
+"""The steps of a run: residuals, invert, export.
+
+Each says which files it reads, which settings bear on its result, and does its work
+by calling the rooms. :data:`STEPS` lists them in order.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any, Final
+
+from rayloom.outputs import write_exclusions_csv, write_residuals_csv
+from rayloom.settings import RunSettings
+from rayloom.workflow.data import Tables, is_table, read_earth, residuals_from_tables
+from rayloom.workflow.exporting import export_results
+from rayloom.workflow.folder import RunFolder
+from rayloom.workflow.inverting import run_inversion
+from rayloom.workflow.plan import Files, Outcome, Step
+from rayloom.workflow.record import content_hashes, fingerprint
+from rayloom.workflow.reporting import Reporter
+
+STEPS: Final = (
+    Step(
+        name="residuals",
+        inputs=lambda folder, settings: {
+            **Tables.of(folder, settings).files(),
+            **_earth_table(folder, settings),
+        },
+        settings=lambda settings: _sections(settings, "earth", "survey", "residuals"),
+        work=lambda folder, settings, reporter: _residuals(folder, settings, reporter),
+    ),
+    Step(
+        name="invert",
+        inputs=lambda folder, settings: _inversion_inputs(folder, settings),
+        settings=lambda settings: _inversion_settings(settings),
+        work=lambda folder, settings, reporter: run_inversion(
+            folder, settings, reporter, fingerprint=_inversion_fingerprint(folder, settings)
+        ),
+    ),
+    Step(
+        name="export",
+        inputs=lambda folder, _: {
+            name: folder.file(name) for name in ("model.nc", "inversion.npz")
+        },
+        settings=lambda settings: _sections(settings, "outputs"),
+        work=export_results,
+    ),
+)
+"""The steps in the order of the work."""
+
+
+def _residuals(folder: RunFolder, settings: RunSettings, reporter: Reporter) -> Outcome:
+    data = residuals_from_tables(
+        Tables.of(folder, settings),
+        read_earth(folder, settings.earth.model),
+        survey=settings.survey,
+        residuals=settings.residuals,
+        reporter=reporter,
+    )
+    write_residuals_csv(folder.residuals, data)
+    write_exclusions_csv(folder.exclusions, data)
+    files = (folder.residuals, folder.exclusions)
+    return Outcome(files={path.name: path for path in files})
+
+
+def _earth_table(folder: RunFolder, settings: RunSettings) -> Files:
+    model = settings.earth.model
+    return {"earth": folder.resolve(Path(model))} if is_table(model) else {}
+
+
+def _inversion_inputs(folder: RunFolder, settings: RunSettings) -> Files:
+    tables = Tables.of(folder, settings)
+    return {
+        "stations": tables.stations,
+        "events": tables.events,
+        "residuals.csv": folder.residuals,
+        **_earth_table(folder, settings),
+    }
+
+
+def _inversion_fingerprint(folder: RunFolder, settings: RunSettings) -> str:
+    """Name what a checkpoint belongs to; how long to iterate may change in between."""
+    chosen = _inversion_settings(settings)
+    chosen["inversion"].pop("max_iterations")
+    chosen.pop("outputs")
+    return fingerprint(content_hashes(_inversion_inputs(folder, settings)), chosen)
+
+
+def _inversion_settings(settings: RunSettings) -> dict[str, Any]:
+    """Give all that bears on a model; the number of threads does not."""
+    chosen = _sections(settings, "earth", "grid", "forward", "inversion")
+    for section in ("forward", "inversion"):
+        chosen[section].pop("threads", None)
+    chosen["outputs"] = {"linear_system": settings.outputs.linear_system}
+    return chosen
+
+
+def _sections(settings: RunSettings, *names: str) -> dict[str, Any]:
+    whole = settings.model_dump(mode="json", include=set(names))
+    return {name: whole[name] for name in names}

@@ -1,0 +1,87 @@
+"""What a run folder holds, in a few lines for a person."""
+
+from __future__ import annotations
+
+from collections import Counter
+from pathlib import Path
+from typing import Any
+
+from rayloom.workflow.folder import RunFolder
+from rayloom.workflow.record import Provenance
+
+_LABEL_WIDTH = 12
+
+
+def summarise(path: str | Path) -> str:
+    """Tell what the steps done so far have found.
+
+    Parameters
+    ----------
+    path : str or pathlib.Path
+        The run folder.
+
+    Returns
+    -------
+    str
+        A few lines: data, exclusions, misfit, model, files.
+    """
+    folder = RunFolder(Path(path))
+    steps = Provenance(folder.provenance).steps
+    lines: list[tuple[str, str]] = []
+    if "residuals" in steps:
+        lines += _data_lines(folder)
+    if "invert" in steps:
+        lines += _model_lines(folder, steps["invert"].remarks.get("stopped_because", ""))
+    written = [name for step in steps.values() for name in step.outputs]
+    if written:
+        lines.append(("results", f"{folder.path}/  ({_listing(written)})"))
+    return "\n".join(f"{label:<{_LABEL_WIDTH}}{text}" for label, text in lines)
+
+
+def _data_lines(folder: RunFolder) -> list[tuple[str, str]]:
+    import pandas as pd
+
+    used = pd.read_csv(folder.residuals, usecols=["event", "network", "station"], dtype=str)
+    stations = used[["network", "station"]].drop_duplicates()
+    lines = [
+        (
+            "residuals",
+            f"{len(used)} at {len(stations)} stations from {used['event'].nunique()} events",
+        )
+    ]
+    excluded = pd.read_csv(folder.exclusions, dtype=str, keep_default_na=False)
+    if len(excluded):
+        counts = Counter(excluded["reason"].tolist()).most_common()
+        parts = [f"{count} {reason.replace('_', ' ')}" for reason, count in counts]
+        lines.append(
+            ("left out", f"{len(excluded)}: {', '.join(parts)} (listed in exclusions.csv)")
+        )
+    return lines
+
+
+def _model_lines(folder: RunFolder, stopped_because: str) -> list[tuple[str, str]]:
+    import pandas as pd
+
+    history = pd.read_csv(folder.file("history.csv"))
+    first: Any = history.iloc[0]
+    last: Any = history.iloc[-1]
+    suspects = int(last["suspected_outliers"])
+    return [
+        (
+            "misfit",
+            f"rms {first['rms_kept_s']:.3f} s -> {last['rms_kept_s']:.3f} s, variance reduction "
+            f"{last['variance_reduction_percent']:.0f} %, "
+            f"{suspects} suspected outliers (listed in suspected_outliers.csv)",
+        ),
+        (
+            "model",
+            f"{int(last['iteration'])} iterations, perturbation rms "
+            f"{last['model_rms_percent']:.2f} %, relative to the regional mean",
+        ),
+        ("stopped", stopped_because),
+    ]
+
+
+def _listing(names: list[str]) -> str:
+    top = list(dict.fromkeys(name.split("/")[0] + ("/" if "/" in name else "") for name in names))
+    return ", ".join(top)
