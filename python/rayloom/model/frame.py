@@ -8,8 +8,9 @@ from typing import Final, Self
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from rayloom.earth import geocentric_latitude_deg, geographic_latitude_deg
 from rayloom.errors import InputError
-from rayloom.units import EARTH_RADIUS_KM, WGS84_FLATTENING
+from rayloom.units import EARTH_RADIUS_KM
 
 Floats = NDArray[np.float64]
 
@@ -120,7 +121,7 @@ class Frame:
             directions of (0° N, 0° E), (0° N, 90° E) and the north pole.
         """
         self._require_sphere()
-        latitude = _geocentric_rad(self.latitude_deg)
+        latitude = np.radians(geocentric_latitude_deg(self.latitude_deg))
         longitude, azimuth = np.radians([self.longitude_deg, self.azimuth_deg])
         up = _unit_vectors(longitude, latitude)
         east = np.array([-np.sin(longitude), np.cos(longitude), 0.0])
@@ -174,7 +175,8 @@ class Frame:
             If a value is not finite, a latitude is outside −90° … 90°, or the frame is flat.
         """
         longitude, latitude = _geographic(longitude_deg, latitude_deg)
-        local = _unit_vectors(np.radians(longitude), _geocentric_rad(latitude)) @ self.axes.T
+        geocentric = np.radians(geocentric_latitude_deg(latitude))
+        local = _unit_vectors(np.radians(longitude), geocentric) @ self.axes.T
         return _longitude_latitude_deg(local)
 
     def geographic_coordinates(self, x: ArrayLike, y: ArrayLike) -> tuple[Floats, Floats]:
@@ -197,7 +199,7 @@ class Frame:
         """
         earth = self.unit_vectors(x, y) @ self.axes
         longitude, geocentric = _longitude_latitude_deg(earth)
-        return longitude, _geographic_deg(np.radians(geocentric))
+        return longitude, geographic_latitude_deg(geocentric)
 
     def unit_vectors(self, x: ArrayLike, y: ArrayLike) -> Floats:
         """Directions from the Earth's centre, in the frame's own Cartesian axes.
@@ -336,18 +338,6 @@ class Frame:
                 "use Frame(longitude=…, latitude=…) for a place on the Earth",
                 where="frame",
             )
-
-
-def _geocentric_rad(geographic_deg: ArrayLike) -> Floats:
-    latitude = np.radians(np.asarray(geographic_deg, dtype=np.float64))
-    squeeze = (1.0 - WGS84_FLATTENING) ** 2
-    return np.asarray(np.arctan2(squeeze * np.sin(latitude), np.cos(latitude)))
-
-
-def _geographic_deg(geocentric_rad: Floats) -> Floats:
-    squeeze = (1.0 - WGS84_FLATTENING) ** 2
-    tangent = np.arctan2(np.sin(geocentric_rad), squeeze * np.cos(geocentric_rad))
-    return np.asarray(np.degrees(tangent))
 
 
 def _unit_vectors(longitude_rad: ArrayLike, latitude_rad: ArrayLike) -> Floats:
