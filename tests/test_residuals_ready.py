@@ -108,7 +108,10 @@ def test_uncertainty_defaults_quality_and_repeats(tmp_path: Path, earth: Referen
         ),
     )
     np.testing.assert_array_equal(residuals.uncertainty_s, [0.05] * 3 + [0.5] * 3)
-    assert {notice.what for notice in residuals.notices} == {"default_uncertainty", "repeated_rows"}
+    assert {notice.what for notice in residuals.notices} == {
+        "default_uncertainty",
+        "repeated_rows",
+    }
 
 
 def test_unwritable_place_is_told(tmp_path: Path, earth: ReferenceEarth) -> None:
