@@ -114,7 +114,8 @@ def figure_station_residuals(
     residual_after_s : array, shape (k,), optional
         Residuals after an inversion, for a second map on the same scale.
     limit_s : float, optional
-        End of the symmetric colour scale; when None, the largest median before.
+        End of the symmetric colour scale; when None, what 98 % of
+        the medians before stay below, rounded up.
 
     Returns
     -------
@@ -131,7 +132,8 @@ def figure_station_residuals(
     if residual_after_s is not None:
         after = station_medians(data.stations, data.station_index, residual_after_s)
         maps.append(("After inversion", after))
-    limit = limit_s or max(0.1, float(np.ceil(20.0 * np.abs(before.median_s).max()) / 20.0))
+    typical = float(np.quantile(np.abs(before.median_s), 0.98))
+    limit = limit_s or max(0.1, float(np.ceil(20.0 * typical) / 20.0))
     scale = ColourScale(
         "median residual of the station, relative to its events (s)",
         -limit,
@@ -174,7 +176,7 @@ def _map_sheet(view: MapView, count: int) -> tuple[Figure, list[Axes], Axes]:
     left, gap, right, head, foot = 0.52, 0.15, 0.12, 0.26, 0.92
     width = min((PAGE_WIDTH_IN - left - right - gap) / 2, 5.0 / view.height_over_width)
     tall = width * view.height_over_width
-    page_width = max(5.2, left + count * width + (count - 1) * gap + right)
+    page_width = max(6.3, left + count * width + (count - 1) * gap + right)
     page_height = head + tall + foot
     figure = Figure(figsize=(page_width, page_height))
     panels = [

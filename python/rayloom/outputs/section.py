@@ -15,12 +15,12 @@ from rayloom.outputs.style import (
     INK,
     NO_DATA_COLOUR,
     PAGE_WIDTH_IN,
-    STATION_LOOK,
     BlockField,
     draw_colour_bar,
     legend_marks,
     look,
     perturbation_field,
+    station_look,
 )
 
 if TYPE_CHECKING:
@@ -262,7 +262,7 @@ def _draw_strip(axes: Axes, line: SectionLine, where: Floats, band_km: float) ->
     order = np.argsort(along[near])
     distance, height = along[near][order], -where[near, 2][order]
     axes.axhline(0.0, color=INK, linewidth=0.4)
-    axes.plot(distance, height, "^", clip_on=False, zorder=4, **STATION_LOOK)
+    axes.plot(distance, height, "^", clip_on=False, zorder=4, **station_look(distance.size))
     low, high = min(0.0, height.min(initial=0.0)), max(0.5, height.max(initial=0.0))
     axes.set_ylim(low - 0.08 * (high - low), high + 0.12 * (high - low))
     axes.set_ylabel("Elev.\n(km)")
@@ -290,7 +290,8 @@ def _draw_index_map(axes: Axes, grid: BlockGrid, line: SectionLine, where: Float
     view = map_view(grid)
     x, y = line.along(101)
     if where is not None:
-        axes.plot(*view.place(where[:, 0], where[:, 1]), "^", zorder=3, **STATION_LOOK)
+        triangles = station_look(len(where), full_size=2.2)
+        axes.plot(*view.place(where[:, 0], where[:, 1]), "^", zorder=3, **triangles)
     across, up = view.place(x, y)
     axes.plot(across, up, color="#b2182b", linewidth=1.2, zorder=4)
     view.open(axes, most_ticks=3)

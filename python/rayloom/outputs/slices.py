@@ -23,12 +23,12 @@ from rayloom.outputs.style import (
     INK,
     NO_DATA_COLOUR,
     PAGE_WIDTH_IN,
-    STATION_LOOK,
     BlockField,
     draw_colour_bar,
     legend_marks,
     look,
     perturbation_field,
+    station_look,
 )
 
 if TYPE_CHECKING:
@@ -142,7 +142,7 @@ def figure_depth_slices(
             _draw_layer(axes, view, field, layer)
             axes.set_title(_layer_title(grid, layer), pad=3)
             if where is not None:
-                axes.plot(*where, "^", zorder=4, **STATION_LOOK)
+                axes.plot(*where, "^", zorder=4, **station_look(where[0].size))
         draw_scale_bar(panels[0], view)
         for line in lines:
             _mark_line(panels[0], view, line)

@@ -31,13 +31,6 @@ NO_DATA_COLOUR: Final = "#c4c4c4"
 
 INK: Final = "#262626"
 
-STATION_LOOK: Final[dict[str, Any]] = {
-    "markersize": 2.8,
-    "markerfacecolor": "white",
-    "markeredgecolor": INK,
-    "markeredgewidth": 0.45,
-}
-
 _LOOK: Final[dict[Any, Any]] = {
     "font.family": "DejaVu Sans",
     "font.size": 7.0,
@@ -95,6 +88,31 @@ def late_red() -> Colormap:
 
     colours: Colormap = cm.vik
     return colours
+
+
+def station_look(count: int, *, full_size: float = 2.8) -> dict[str, Any]:
+    """Return the look of station triangles, smaller where there are many.
+
+    Parameters
+    ----------
+    count : int
+        Stations drawn.
+    full_size : float
+        Size of up to a hundred, in points.
+
+    Returns
+    -------
+    dict
+        Arguments of matplotlib's ``plot`` after the marker.
+    """
+    shrunk = full_size * min(1.0, (100.0 / max(count, 1)) ** 0.5)
+    size = max(1.3, shrunk)
+    return {
+        "markersize": size,
+        "markerfacecolor": "white",
+        "markeredgecolor": INK,
+        "markeredgewidth": 0.16 * size,
+    }
 
 
 @dataclass(frozen=True)
@@ -217,7 +235,7 @@ def legend_marks(*, has_stations: bool, hidden_label: str) -> list[Any]:
 
     marks: list[Any] = [Patch(facecolor=NO_DATA_COLOUR, label=hidden_label)]
     if has_stations:
-        marks.append(Line2D([], [], linestyle="", marker="^", label="station", **STATION_LOOK))
+        marks.append(Line2D([], [], linestyle="", marker="^", label="station", **station_look(1)))
     return marks
 
 
