@@ -4,8 +4,11 @@
 use super::route::Route;
 use super::shell::Travel;
 
-/// Steps per branch of the travel-time curve.
+/// Steps per branch of the travel-time curve, for each [`SPREAD`] of its rays.
 const STEPS: usize = 8;
+
+/// Relative range of ray parameters that [`STEPS`] suffice for.
+const SPREAD: f64 = 0.02;
 
 /// Distance between a sampled ray parameter and the critical one beside it,
 /// relative, so that the sample falls on the intended side.
@@ -57,7 +60,8 @@ impl Fan {
             }
             let coarse = branch(route, receivers_km, range, 2);
             if touches(&coarse.1, window_rad) {
-                fan.push(branch(route, receivers_km, range, STEPS));
+                let spreads = ((range.0 - range.1) / (SPREAD * range.0)).ceil();
+                fan.push(branch(route, receivers_km, range, STEPS * spreads as usize));
             }
         }
         fan
