@@ -54,8 +54,8 @@ def write_small_survey(folder: Path) -> SurveyFiles:
     latitude_deg, longitude_deg = (
         axis.ravel()
         for axis in np.meshgrid(
-            CENTRE_LATITUDE_DEG + np.array([-1.2, 0.0, 1.2]),
-            CENTRE_LONGITUDE_DEG + np.array([-1.8, -0.6, 0.6, 1.8]),
+            CENTRE_LATITUDE_DEG + np.array([-0.6, 0.0, 0.6]),
+            CENTRE_LONGITUDE_DEG + np.array([-0.9, -0.3, 0.3, 0.9]),
             indexing="ij",
         )
     )

@@ -42,7 +42,7 @@ def replace_in(path: Path, old: str, new: str, *, count: int = 1) -> None:
 
 
 def text_in_a_number(files: SurveyFiles) -> None:
-    replace_in(files.stations, "-32.2000", "south")
+    replace_in(files.stations, "-31.6000", "south")
 
 
 def missing_column(files: SurveyFiles) -> None:
@@ -94,11 +94,25 @@ def test_a_wrong_table_is_named_with_its_place(
 
 def test_a_station_400_km_outside_is_warned_of(files: SurveyFiles) -> None:
     with files.stations.open("a", encoding="utf-8") as stream:
-        stream.write("XX,FAR,-31.0,18.2,100\n")
+        stream.write("XX,FAR,-31.0,17.2,100\n")
     result = initialise(files)
     assert result.exit_code == 0
-    assert "XX.FAR" in result.stderr
+    assert "warning: station XX.FAR lies" in result.stderr
     assert "from its nearest neighbour" in result.stderr
+
+
+def test_a_station_outside_the_blocks_is_left_out_with_the_reason(files: SurveyFiles) -> None:
+    replace_in(files.stations, "S11,-30.4000,12.9000", "S11,-31.0000,23.0000")
+    folder = write_run_folder(files.picks.parent / "run", files)
+    settings = folder / "rayloom.toml"
+    replace_in(
+        settings, "max_iterations = 2", "max_iterations = 1\n[residuals]\nmax_residual_s = 900"
+    )
+    result = call("run", folder)
+    assert result.exit_code == 0
+    assert "10 rays missing: station outside the blocks" in result.stderr
+    listed = (folder / "exclusions.csv").read_text(encoding="utf-8").splitlines()
+    assert sum("XX,S11" in line for line in listed) == 10
 
 
 def test_an_event_at_10_degrees_is_left_out_with_the_reason(files: SurveyFiles) -> None:

@@ -67,6 +67,36 @@ def _file_option(name: str, columns: str, *, required: bool = False) -> Callable
 
 
 @main.command()
+@click.argument(
+    "folder",
+    metavar="[DIR]",
+    type=click.Path(file_okay=False, path_type=Path),
+    default=Path("rayloom_demo"),
+)
+@_quiet_option
+@click.pass_context
+def demo(ctx: click.Context, folder: Path, quiet: bool) -> None:
+    """Run the whole job on an invented survey.
+
+    The survey is that of a volcanic highland. Its times are computed through a known
+    structure (a tilted slow column, a fast body) on blocks finer than and unlike those
+    inverted, with noise, mislocated events and gross errors; the answer is then printed
+    beside the truth. DIR is ./rayloom_demo unless given.
+
+    Writes:  DIR/survey/ (stations.csv, events.csv, picks.csv, truth.json) and all that
+             'rayloom run' writes
+    Example: rayloom demo highland_demo
+    """
+    from rayloom.cli.console import listening
+    from rayloom.cli.demonstration import demonstrate
+
+    ctx.meta[FOLDER] = folder
+    with listening(quiet=quiet) as reporter:
+        text = demonstrate(folder, reporter)
+    click.echo(text)
+
+
+@main.command()
 @_folder_argument
 @_file_option(
     "--stations", "CSV: network, station, latitude, longitude, elevation_m.", required=True
@@ -216,33 +246,3 @@ def export(ctx: click.Context, folder: Path, again: bool, quiet: bool) -> None:
     Example: rayloom export highland
     """
     _one_step(ctx, "export", folder, again=again, quiet=quiet)
-
-
-@main.command()
-@click.argument(
-    "folder",
-    metavar="[DIR]",
-    type=click.Path(file_okay=False, path_type=Path),
-    default=Path("rayloom_demo"),
-)
-@_quiet_option
-@click.pass_context
-def demo(ctx: click.Context, folder: Path, quiet: bool) -> None:
-    """Run the whole job on an invented survey.
-
-    The survey is that of a volcanic highland. Its times are computed through a known
-    structure (a tilted slow column, a fast body) on blocks finer than and unlike those
-    inverted, with noise, mislocated events and gross errors; the answer is then printed
-    beside the truth. DIR is ./rayloom_demo unless given.
-
-    Writes:  DIR/survey/ (stations.csv, events.csv, picks.csv, truth.json) and all that
-             'rayloom run' writes
-    Example: rayloom demo highland_demo
-    """
-    from rayloom.cli.console import listening
-    from rayloom.cli.demonstration import demonstrate
-
-    ctx.meta[FOLDER] = folder
-    with listening(quiet=quiet) as reporter:
-        text = demonstrate(folder, reporter)
-    click.echo(text)

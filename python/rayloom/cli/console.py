@@ -27,6 +27,9 @@ from rayloom.workflow import Reporter
 LINE_EVERY_S = 5.0
 """Least time between two plain progress lines, in seconds."""
 
+LINE_EVERY_SHARE = 0.1
+"""The same as a share of the time that the step has taken, so that long jobs say less."""
+
 
 @contextmanager
 def listening(*, quiet: bool = False) -> Iterator[Reporter]:
@@ -63,11 +66,11 @@ class LineReporter(Reporter):
 
     def __init__(self, line_every_s: float = LINE_EVERY_S) -> None:
         self._line_every_s = line_every_s
-        self._last_line = time.monotonic()
+        self._began = self._last_line = time.monotonic()
 
     def begin(self, step: str, reason: str) -> None:
         """Write that a step begins."""
-        self._last_line = time.monotonic()
+        self._began = self._last_line = time.monotonic()
         _line(f"{step}: {reason}")
 
     def note(self, text: str) -> None:
@@ -77,7 +80,8 @@ class LineReporter(Reporter):
     def progress(self, label: str, done: int, total: int) -> None:
         """Write a progress line unless the last one is young."""
         now = time.monotonic()
-        if now - self._last_line >= self._line_every_s:
+        pause = max(self._line_every_s, LINE_EVERY_SHARE * (now - self._began))
+        if now - self._last_line >= pause:
             self._last_line = now
             _line(f"  {label}: {_share(done, total)}")
 

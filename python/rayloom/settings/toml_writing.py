@@ -18,7 +18,6 @@ from tomlkit.items import Array, Item, Table
 from rayloom.settings.documentation import key_descriptions, summary
 
 _WIDTH = 88
-_PER_LINE = 10
 
 
 def settings_text(
@@ -52,9 +51,6 @@ def settings_text(
     for name in type(settings).model_fields:
         section: BaseModel = getattr(settings, name)
         document.add(tomlkit.nl())
-        if comments:
-            for line in _wrapped(f"{summary(type(section))}"):
-                document.add(tomlkit.comment(line))
         without = (hidden or {}).get(name, ())
         document.add(name, _table(section, comments=comments, without=without))
     return tomlkit.dumps(document)
@@ -63,6 +59,9 @@ def settings_text(
 def _table(settings: BaseModel, *, comments: bool, without: Collection[str] = ()) -> Table:
     table = tomlkit.table()
     described = key_descriptions(type(settings)) if comments else {}
+    if comments:
+        _remark(table, summary(type(settings)))
+    told = ""
     groups: list[tuple[str, Any]] = []
     for name, field in type(settings).model_fields.items():
         if name in without:
@@ -71,8 +70,10 @@ def _table(settings: BaseModel, *, comments: bool, without: Collection[str] = ()
         if isinstance(value, BaseModel) or (_holds_tables(field) and value):
             groups.append((name, value))
             continue
-        for line in _wrapped(_comment(described.get(name, ""), field, value)):
-            table.add(tomlkit.comment(line))
+        comment = _comment(described.get(name, ""), field, value)
+        if comment != told:
+            _remark(table, comment)
+            told = comment
         if value is None:
             table.add(tomlkit.comment(f"{name} ="))
         else:
@@ -102,12 +103,17 @@ def _holds_tables(field: FieldInfo) -> bool:
 
 
 def _comment(description: str, field: FieldInfo, value: object) -> str:
+    description = _sentence(description)
     if not description or field.is_required():
         return description
     default = field.get_default(call_default_factory=True)
     if value is None or default is None or default == value or isinstance(default, BaseModel):
         return description
     return f"{description.rstrip('.')} (default: {_item(default).as_string()})."
+
+
+def _sentence(text: str) -> str:
+    return text[:1].upper() + text[1:] + ("" if text.endswith((".", "…")) else ".") if text else ""
 
 
 def _item(value: Any) -> Item:
@@ -129,14 +135,23 @@ def _item(value: Any) -> Item:
 def _array(items: list[Item]) -> Array:
     """Set out a list on one line, or a long one on several."""
     array = tomlkit.array()
-    if sum(len(item.as_string()) + 2 for item in items) <= _WIDTH:
+    lines: list[list[Item]] = [[]]
+    width = 0
+    for item in items:
+        width += len(item.as_string()) + 2
+        if width > _WIDTH:
+            lines.append([])
+            width = len(item.as_string()) + 2
+        lines[-1].append(item)
+    if len(lines) == 1:
         array.extend(items)
         return array
-    for first in range(0, len(items), _PER_LINE):
-        array.add_line(*items[first : first + _PER_LINE])
+    for line in lines:
+        array.add_line(*line)
     array.add_line(indent="")
     return array
 
 
-def _wrapped(text: str) -> list[str]:
-    return textwrap.wrap(text, _WIDTH)
+def _remark(table: Table, text: str) -> None:
+    for line in textwrap.wrap(text, _WIDTH):
+        table.add(tomlkit.comment(line))

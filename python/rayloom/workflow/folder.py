@@ -70,7 +70,7 @@ class RunFolder:
 
     def resolve(self, named: Path) -> Path:
         """Return where a file named in the settings is."""
-        return named if named.is_absolute() else self.path / named
+        return named if named.is_absolute() else (self.path / named).resolve()
 
     def read_settings(self) -> RunSettings:
         """Read ``rayloom.toml``.

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from pathlib import Path
 
 import numpy as np
 
 from rayloom.errors import RayloomError
+from rayloom.forward import Rays
 from rayloom.inversion import (
     InversionResult,
     InversionState,
@@ -60,14 +60,18 @@ def run_inversion(
     model = SlownessModel.from_earth(grid, earth, wave=_wave(data, reporter))
     checkpoint = folder.checkpoints / f"invert_{fingerprint}.npz"
     resume = _resumable(checkpoint, reporter)
+    log = _IterationLog(checkpoint, reporter, 0 if resume is None else resume.iteration + 1)
     result = invert(
         data,
         model,
         settings.inversion_settings(),
-        progress=reporter.progress,
-        checkpoint=_keeper(checkpoint, reporter),
+        progress=log.progress,
+        checkpoint=log.keep,
         resume=resume,
     )
+    if isinstance(result.rays, Rays):
+        for problem, count in result.rays.problems.items():
+            reporter.note(f"{count} rays missing: {problem}")
     reporter.note(f"stopped: {result.stopped_because}")
     files = _write(folder, result, linear_system=settings.outputs.linear_system)
     _clear(folder.checkpoints)
@@ -87,20 +91,40 @@ def _wave(data: Residuals, reporter: Reporter) -> str:
     return "P" if "P" in waves else "S"
 
 
-def _keeper(checkpoint: Path, reporter: Reporter) -> Callable[[InversionState], None]:
-    checkpoint.parent.mkdir(parents=True, exist_ok=True)
+class _IterationLog:
+    """Keeps every accepted model as a checkpoint and tells how the iterations go.
 
-    def keep(state: InversionState) -> None:
-        save_state(checkpoint, state)
+    Parameters
+    ----------
+    checkpoint : pathlib.Path
+        The file to keep the state in.
+    reporter : Reporter
+        Hears it.
+    iteration : int
+        Number of the iteration at work.
+    """
+
+    def __init__(self, checkpoint: Path, reporter: Reporter, iteration: int) -> None:
+        self._checkpoint = checkpoint
+        self._reporter = reporter
+        self._iteration = iteration
+        checkpoint.parent.mkdir(parents=True, exist_ok=True)
+
+    def progress(self, stage: str, done: int, total: int) -> None:
+        """Hear that a stage moves on."""
+        name = f"iteration {self._iteration}" if self._iteration else "starting model"
+        self._reporter.progress(f"{name}, {stage}", done, total)
+
+    def keep(self, state: InversionState) -> None:
+        """Keep an accepted model."""
+        save_state(self._checkpoint, state)
         row = state.history[-1]
+        self._iteration = row.iteration + 1
         name = f"iteration {row.iteration}" if row.iteration else "starting model"
-        reporter.note(
+        self._reporter.note(
             f"{name}: rms {row.rms_kept_s:.3f} s, variance reduction "
-            f"{row.variance_reduction_percent:.0f} %, model rms {row.model_rms_percent:.2f} %, "
-            f"{row.seconds:.0f} s"
+            f"{row.variance_reduction_percent:.0f} %, model rms {row.model_rms_percent:.2f} %"
         )
-
-    return keep
 
 
 def _resumable(checkpoint: Path, reporter: Reporter) -> InversionState | None:
