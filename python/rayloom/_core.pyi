@@ -1,7 +1,9 @@
 from collections.abc import Callable
+from typing import final
 
 import numpy as np
 from numpy.typing import NDArray
+from typing_extensions import disjoint_base
 
 class SparseProducts:
     def __new__(
@@ -16,6 +18,7 @@ class SparseProducts:
     def times(self, x: NDArray[np.float64]) -> NDArray[np.float64]: ...
     def transposed_times(self, y: NDArray[np.float64]) -> NDArray[np.float64]: ...
 
+@final
 class RadialModel:
     def __new__(
         cls,
@@ -30,6 +33,7 @@ class RadialModel:
         self, depth_edges_km: NDArray[np.float64]
     ) -> NDArray[np.float64]: ...
 
+@final
 class LayeredEarth:
     def __new__(
         cls,
@@ -59,6 +63,7 @@ class LayeredEarth:
     @staticmethod
     def phases() -> list[tuple[str, str]]: ...
 
+@final
 class WavefrontTable:
     def __new__(
         cls,
