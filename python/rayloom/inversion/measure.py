@@ -7,10 +7,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from rayloom.inversion.forward_map import Report
 from rayloom.inversion.problem import Problem, TracedModel
 from rayloom.inversion.robust import RobustFit
 from rayloom.inversion.state import Iteration
-from rayloom.inversion.step import PlannedStep, TakenStep
+from rayloom.inversion.step import PlannedStep, TakenStep, plan_step
 from rayloom.inversion.system import WhitenedSystem, resolution_trace
 
 _PROBE_TOLERANCE = 1e-4
@@ -18,17 +19,37 @@ _PROBE_TOLERANCE = 1e-4
 
 @dataclass(frozen=True)
 class Stage:
-    """A traced model with its residuals and the linear system about it."""
+    """A traced model with its residuals and the linear system about it.
+
+    Attributes
+    ----------
+    traced : TracedModel
+        The model and its rays.
+    rejecting : bool
+        Whether suspected outliers have lost all weight.
+    fit : RobustFit
+        Residuals and robust weights.
+    system : WhitenedSystem
+        The problem linearised, under those weights.
+    """
 
     traced: TracedModel
+    rejecting: bool
     fit: RobustFit
     system: WhitenedSystem
 
     @classmethod
-    def of(cls, problem: Problem, traced: TracedModel) -> Stage:
+    def of(cls, problem: Problem, traced: TracedModel, *, rejecting: bool) -> Stage:
         """Weight the residuals and linearise."""
-        fit = problem.fit(traced.unexplained_s, traced.active)
-        return cls(traced=traced, fit=fit, system=problem.system(traced, fit.weights))
+        loss = problem.settings.loss(rejecting=rejecting)
+        fit = problem.fit(traced.unexplained_s, traced.active, loss)
+        system = problem.system(traced, fit.weights)
+        return cls(traced=traced, rejecting=rejecting, fit=fit, system=system)
+
+    def plan(self, problem: Problem, report: Report | None) -> PlannedStep:
+        """Plan the next step from here."""
+        loss = problem.settings.loss(rejecting=self.rejecting)
+        return plan_step(problem, self.traced, self.system, loss, report)
 
 
 def suspected_outliers(fit: RobustFit, *, outlier_std: float) -> NDArray[np.bool_]:

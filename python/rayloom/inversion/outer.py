@@ -14,7 +14,10 @@ from rayloom.inversion.measure import Stage, measure
 from rayloom.inversion.problem import Problem, TracedModel
 from rayloom.inversion.robust import RobustFit
 from rayloom.inversion.state import InversionState, Iteration
-from rayloom.inversion.step import PlannedStep, plan_step, take_step
+from rayloom.inversion.step import PlannedStep, take_step
+
+_NEARLY_SETTLED_DROP = 0.1
+"""Share of the objective still to be lost at which suspected outliers are rejected."""
 
 
 @dataclass(frozen=True)
@@ -74,8 +77,11 @@ def run_outer_loop(
         if state.iteration >= settings.max_iterations:
             reason = f"the limit of {settings.max_iterations} iterations was reached"
             break
-        planned = plan_step(problem, stage.traced, stage.system, stage.fit.weights, report)
-        if _has_converged(problem, planned):
+        planned = stage.plan(problem, report)
+        if _time_to_reject(problem, stage, planned):
+            stage = Stage.of(problem, stage.traced, rejecting=True)
+            planned = stage.plan(problem, report)
+        elif _has_converged(problem, planned):
             reason = (
                 f"converged: another step would change the model by "
                 f"{100.0 * planned.model_change:.1f} % and lower the objective by "
@@ -86,7 +92,7 @@ def run_outer_loop(
         if taken is None:
             reason = "no step along the computed direction lowers the objective any more"
             break
-        stage = Stage.of(problem, taken.traced)
+        stage = Stage.of(problem, taken.traced, rejecting=stage.rejecting)
         row = measure(
             problem,
             stage,
@@ -125,7 +131,8 @@ def _first_stage(
         )
     else:
         traced = problem.explain(white, model, problem.reference_rays, active)
-    stage = Stage.of(problem, traced)
+    rejecting = resume is not None and resume.rejecting
+    stage = Stage.of(problem, traced, rejecting=rejecting)
     if resume is not None:
         return stage, resume
     row = measure(
@@ -143,8 +150,18 @@ def _state(stage: Stage, history: tuple[Iteration, ...], fingerprint: str) -> In
     return InversionState(
         white=stage.traced.white,
         active=stage.traced.active,
+        rejecting=stage.rejecting,
         history=history,
         fingerprint=fingerprint,
+    )
+
+
+def _time_to_reject(problem: Problem, stage: Stage, planned: PlannedStep) -> bool:
+    """Outliers are told from structure only once the model has nearly settled."""
+    return (
+        problem.settings.rejects_outliers
+        and not stage.rejecting
+        and planned.objective_drop < _NEARLY_SETTLED_DROP
     )
 
 

@@ -17,7 +17,7 @@ from rayloom.inversion.elimination import GroupMeans
 from rayloom.inversion.forward_map import ForwardMap, Prediction, Report
 from rayloom.inversion.groups import ParameterGroup, block_matrix
 from rayloom.inversion.priors import SpectralPrior
-from rayloom.inversion.robust import RobustFit, robust_fit
+from rayloom.inversion.robust import RobustFit, RobustLoss, robust_fit
 from rayloom.inversion.rows import DataRows, LeftOutGroup
 from rayloom.inversion.settings import InversionSettings
 from rayloom.inversion.system import WhitenedSystem
@@ -162,14 +162,13 @@ class Problem:
         self,
         residual_s: NDArray[np.float64],
         active: NDArray[np.bool_],
+        loss: RobustLoss,
         *,
         scale: float | None = None,
     ) -> RobustFit:
         """Measure residuals from the robust means of their groups."""
         rows = self.rows
-        return robust_fit(
-            residual_s, rows.uncertainty_s, rows.group, active, self.settings.loss, scale=scale
-        )
+        return robust_fit(residual_s, rows.uncertainty_s, rows.group, active, loss, scale=scale)
 
     def means(self, weights: NDArray[np.float64]) -> GroupMeans:
         """Projection that eliminates the group means under robust weights."""

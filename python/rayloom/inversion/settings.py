@@ -89,7 +89,8 @@ class InversionSettings(BaseModel):
     )
     reject_outliers: bool = Field(
         default=True,
-        description="Suspected outliers lose all weight (with robust = none they keep it).",
+        description="Suspected outliers lose all weight once the model has nearly settled "
+        "(with robust = none they keep it).",
     )
 
     max_iterations: int = Field(default=6, ge=1, description="Most models solved for.")
@@ -129,14 +130,24 @@ class InversionSettings(BaseModel):
             )
         return self
 
-    @property
-    def loss(self) -> RobustLoss:
-        """The loss that the settings choose."""
+    def loss(self, *, rejecting: bool) -> RobustLoss:
+        """Return the loss that the settings choose.
+
+        Parameters
+        ----------
+        rejecting : bool
+            Whether suspected outliers lose all weight.
+        """
         if self.robust == "none":
             return LeastSquares()
         loss: RobustLoss
         loss = Huber(self.huber_k) if self.robust == "huber" else StudentT(self.student_degrees)
-        return Rejecting(loss, self.outlier_std) if self.reject_outliers else loss
+        return Rejecting(loss, self.outlier_std) if rejecting else loss
+
+    @property
+    def rejects_outliers(self) -> bool:
+        """Whether suspected outliers lose all weight in the end."""
+        return self.reject_outliers and self.robust != "none"
 
     def station_term_std_of(self, wave: str) -> float:
         """Return the expected size of a wave's station terms, s (the other wave's if unset)."""

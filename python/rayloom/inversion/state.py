@@ -107,6 +107,8 @@ class InversionState:
         Whitened unknowns of all parameter groups.
     active : (rows,) bool array
         Rows that still have a ray.
+    rejecting : bool
+        Whether suspected outliers have lost all weight.
     history : tuple of Iteration
         Rows so far; the last one describes this state.
     fingerprint : str
@@ -115,6 +117,7 @@ class InversionState:
 
     white: NDArray[np.float64]
     active: NDArray[np.bool_]
+    rejecting: bool
     history: tuple[Iteration, ...]
     fingerprint: str
 
@@ -136,6 +139,7 @@ def save_state(path: str | Path, state: InversionState) -> None:
     arrays = {
         "white": state.white,
         "active": state.active,
+        "rejecting": np.array(state.rejecting),
         "fingerprint": np.array(state.fingerprint),
     }
     for field in fields(Iteration):
@@ -171,6 +175,7 @@ def load_state(path: str | Path) -> InversionState:
         return InversionState(
             white=arrays["white"],
             active=arrays["active"],
+            rejecting=bool(arrays["rejecting"]),
             history=tuple(Iteration(*row) for row in rows),
             fingerprint=str(arrays["fingerprint"]),
         )

@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from rayloom.inversion.forward_map import Report
 from rayloom.inversion.problem import Problem, TracedModel
+from rayloom.inversion.robust import RobustLoss
 from rayloom.inversion.system import WhitenedSystem, solve
 
 _SETTLED_WEIGHT_CHANGE = 1e-3
@@ -24,6 +25,8 @@ class PlannedStep:
     ----------
     white : (unknowns,) array
         Whitened unknowns of the total model there.
+    loss : RobustLoss
+        Loss of the residuals.
     scale : float
         Spread of residuals that its robust weights assume.
     objective_drop : float
@@ -37,6 +40,7 @@ class PlannedStep:
     """
 
     white: NDArray[np.float64]
+    loss: RobustLoss
     scale: float
     objective_drop: float
     model_change: float
@@ -56,7 +60,7 @@ def plan_step(
     problem: Problem,
     current: TracedModel,
     system: WhitenedSystem,
-    weights: NDArray[np.float64],
+    loss: RobustLoss,
     report: Report | None = None,
 ) -> PlannedStep:
     """Solve for the total model, weighting anew until the robust weights settle.
@@ -72,8 +76,8 @@ def plan_step(
         Where it is linearised.
     system : WhitenedSystem
         Its columns.
-    weights : (rows,) array
-        Robust weights to begin with.
+    loss : RobustLoss
+        Loss of the residuals.
     report : callable, optional
         Told ("solving", step, 0).
 
@@ -86,6 +90,7 @@ def plan_step(
     settings = problem.settings
     rounds = 1 if settings.robust == "none" else settings.reweightings
     target = current.unexplained_s + system.seconds(current.white)
+    weights = problem.fit(current.unexplained_s, current.active, loss).weights
     solver_steps = 0
 
     def tell(step: int) -> None:
@@ -104,15 +109,16 @@ def plan_step(
             step=tell,
         )
         solver_steps += found.iterations
-        fit = problem.fit(target - system.seconds(found.white), current.active)
+        fit = problem.fit(target - system.seconds(found.white), current.active, loss)
         if last:
             break
         last = float(np.mean(np.abs(fit.weights - weights))) < _SETTLED_WEIGHT_CHANGE
         weights = fit.weights
-    before = _objective(problem, current, current.active, fit.scale)
+    before = _objective(problem, current, current.active, loss, fit.scale)
     after = fit.misfit + float(found.white @ found.white)
     return PlannedStep(
         white=found.white,
+        loss=loss,
         scale=fit.scale,
         objective_drop=(before - after) / before if before > 0.0 else 0.0,
         model_change=_model_change(problem, current.white, found.white),
@@ -143,17 +149,21 @@ def take_step(
                 active=current.active,
                 report=report,
             )
-            before = _objective(problem, current, trial.active, planned.scale)
-            if _objective(problem, trial, trial.active, planned.scale) <= before:
+            measure = (trial.active, planned.loss, planned.scale)
+            if _objective(problem, trial, *measure) <= _objective(problem, current, *measure):
                 return TakenStep(traced=trial, length=length)
         length *= 0.5
     return None
 
 
 def _objective(
-    problem: Problem, traced: TracedModel, active: NDArray[np.bool_], scale: float
+    problem: Problem,
+    traced: TracedModel,
+    active: NDArray[np.bool_],
+    loss: RobustLoss,
+    scale: float,
 ) -> float:
-    fit = problem.fit(traced.unexplained_s, active, scale=scale)
+    fit = problem.fit(traced.unexplained_s, active, loss, scale=scale)
     return fit.misfit + float(traced.white @ traced.white)
 
 
