@@ -153,7 +153,7 @@ def test_probes_estimate_the_trace_of_the_influence_matrix() -> None:
 def test_misfit_and_penalty_have_their_expectations() -> None:
     """E‖r̃‖² = N − N_g − tr H given the noise; E(misfit + penalty) = N − N_g over truths.
 
-    Linear Gaussian theory (textbook); simulated with 400 truths and noises,
+    Linear Gaussian theory (textbook); simulated with 250 truths and noises,
     compared within four standard errors of the simulated means.
     """
     small = small_system()
@@ -161,7 +161,7 @@ def test_misfit_and_penalty_have_their_expectations() -> None:
     in_use = small.root_weights > 0.0
     degrees = int(in_use.sum()) - GROUPS
     misfit, total = [], []
-    for _ in range(400):
+    for _ in range(250):
         truth = random.standard_normal(small.system.shape[1])
         noise = small.system.means.project(np.where(in_use, random.standard_normal(ROWS), 0.0))
         data = small.system.times(truth) + noise
@@ -169,10 +169,10 @@ def test_misfit_and_penalty_have_their_expectations() -> None:
         left = data - small.system.times(found.white)
         misfit.append(left @ left)
         total.append(left @ left + found.white @ found.white)
-    standard_error = np.std(total) / np.sqrt(400)
+    standard_error = np.std(total) / np.sqrt(250)
     assert abs(np.mean(total) - degrees) <= 4.0 * standard_error
     expected = degrees - np.trace(dense_influence(small))
-    assert abs(np.mean(misfit) - expected) <= 4.0 * np.std(misfit) / np.sqrt(400)
+    assert abs(np.mean(misfit) - expected) <= 4.0 * np.std(misfit) / np.sqrt(250)
 
 
 def test_products_have_the_same_bits_on_any_number_of_threads() -> None:

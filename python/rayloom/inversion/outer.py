@@ -67,26 +67,21 @@ def run_outer_loop(
     InputError
         If the state to resume belongs to another problem.
     """
-    settings = problem.settings
     started = time.perf_counter()
     stage, state = _first_stage(problem, resume, report, started)
     if resume is None and checkpoint is not None:
         checkpoint(state)
     while True:
         started = time.perf_counter()
-        if state.iteration >= settings.max_iterations:
-            reason = f"the limit of {settings.max_iterations} iterations was reached"
+        reason = _reason_to_stop(problem, stage, state)
+        if reason:
             break
         planned = stage.plan(problem, report)
         if _time_to_reject(problem, stage, planned):
             stage = Stage.of(problem, stage.traced, rejecting=True)
             planned = stage.plan(problem, report)
-        elif _has_converged(problem, planned):
-            reason = (
-                f"converged: another step would change the model by "
-                f"{100.0 * planned.model_change:.1f} % and lower the objective by "
-                f"{100.0 * max(planned.objective_drop, 0.0):.2f} %"
-            )
+        elif _is_small(problem, planned.model_change, planned.objective_drop):
+            reason = _nothing_to_gain(planned)
             break
         taken = take_step(problem, stage.traced, planned, report)
         if taken is None:
@@ -165,8 +160,33 @@ def _time_to_reject(problem: Problem, stage: Stage, planned: PlannedStep) -> boo
     )
 
 
-def _has_converged(problem: Problem, planned: PlannedStep) -> bool:
+def _reason_to_stop(problem: Problem, stage: Stage, state: InversionState) -> str:
+    """Return why the last step was the last one, or nothing."""
+    limit = problem.settings.max_iterations
+    if state.iteration >= limit:
+        return f"the limit of {limit} iterations was reached"
+    outliers_pending = problem.settings.rejects_outliers and not stage.rejecting
+    if state.iteration == 0 or outliers_pending:
+        return ""
+    before, last = state.history[-2:]
+    drop = 1.0 - last.objective / before.objective
+    if not _is_small(problem, last.model_change_percent / 100.0, drop):
+        return ""
     return (
-        planned.model_change < problem.settings.model_tolerance
-        and planned.objective_drop < problem.settings.misfit_tolerance
+        f"converged: the last step changed the model by {last.model_change_percent:.1f} % "
+        f"and lowered the objective by {100.0 * drop:.2f} %"
+    )
+
+
+def _nothing_to_gain(planned: PlannedStep) -> str:
+    return (
+        f"converged: another step would change the model by {100.0 * planned.model_change:.1f} % "
+        f"and lower the objective by {100.0 * max(planned.objective_drop, 0.0):.2f} %"
+    )
+
+
+def _is_small(problem: Problem, model_change: float, objective_drop: float) -> bool:
+    return (
+        model_change < problem.settings.model_tolerance
+        and objective_drop < problem.settings.misfit_tolerance
     )

@@ -101,10 +101,10 @@ class InversionSettings(BaseModel):
     )
     model_tolerance: Positive = Field(
         default=0.03,
-        description="Stop once a step would change less than this share of the model …",
+        description="Stop once a step changes less than this share of the model …",
     )
     misfit_tolerance: Positive = Field(
-        default=0.003, description="… and lower the objective by less than this share."
+        default=0.005, description="… and lowers the objective by less than this share."
     )
     max_halvings: int = Field(
         default=3, ge=0, description="How often a step that raises the objective is halved."

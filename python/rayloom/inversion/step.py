@@ -2,15 +2,15 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from rayloom.inversion.forward_map import Report
 from rayloom.inversion.problem import Problem, TracedModel
-from rayloom.inversion.robust import RobustLoss
-from rayloom.inversion.system import WhitenedSystem, solve
+from rayloom.inversion.robust import RobustFit, RobustLoss
+from rayloom.inversion.system import Solution, WhitenedSystem, solve
 
 _SETTLED_WEIGHT_CHANGE = 1e-3
 _EARLY_ROUND_LOOSENING = 10.0
@@ -87,44 +87,60 @@ def plan_step(
     data and applications to young Pacific crust. Geophys. J. R. Astr. Soc. 82,
     375-414 (jumping and creeping).
     """
-    settings = problem.settings
-    rounds = 1 if settings.robust == "none" else settings.reweightings
     target = current.unexplained_s + system.seconds(current.white)
     weights = problem.fit(current.unexplained_s, current.active, loss).weights
-    solver_steps = 0
-
-    def tell(step: int) -> None:
-        if report is not None and step % _REPORT_EVERY == 0:
-            report("solving", solver_steps + step, 0)
-
-    last = rounds == 1
-    for number in range(1, rounds + 1):
-        last = last or number == rounds
-        weighted = system.with_means(problem.means(weights))
-        found = solve(
-            weighted,
-            weighted.whiten_rows(target),
-            tolerance=settings.solver_tolerance * (1.0 if last else _EARLY_ROUND_LOOSENING),
-            max_iterations=settings.solver_max_iterations,
-            step=tell,
-        )
-        solver_steps += found.iterations
-        fit = problem.fit(target - system.seconds(found.white), current.active, loss)
-        if last:
-            break
-        last = float(np.mean(np.abs(fit.weights - weights))) < _SETTLED_WEIGHT_CHANGE
-        weights = fit.weights
+    solution, fit = _solve_in_rounds(
+        problem, system, target, weights, active=current.active, loss=loss, report=report
+    )
     before = _objective(problem, current, current.active, loss, fit.scale)
-    after = fit.misfit + float(found.white @ found.white)
+    after = fit.misfit + float(solution.white @ solution.white)
     return PlannedStep(
-        white=found.white,
+        white=solution.white,
         loss=loss,
         scale=fit.scale,
         objective_drop=(before - after) / before if before > 0.0 else 0.0,
-        model_change=_model_change(problem, current.white, found.white),
-        solver_iterations=solver_steps,
-        solver_converged=found.converged,
+        model_change=_model_change(problem, current.white, solution.white),
+        solver_iterations=solution.iterations,
+        solver_converged=solution.converged,
     )
+
+
+def _solve_in_rounds(
+    problem: Problem,
+    system: WhitenedSystem,
+    target_s: NDArray[np.float64],
+    weights: NDArray[np.float64],
+    *,
+    active: NDArray[np.bool_],
+    loss: RobustLoss,
+    report: Report | None,
+) -> tuple[Solution, RobustFit]:
+    """Solve and weight by turns; all but the last round are solved loosely."""
+    settings = problem.settings
+    steps = 0
+
+    def tell(step: int) -> None:
+        if report is not None and step % _REPORT_EVERY == 0:
+            report("solving", steps + step, 0)
+
+    left = 1 if settings.robust == "none" else settings.reweightings
+    while True:
+        left -= 1
+        weighted = system.with_means(problem.means(weights))
+        found = solve(
+            weighted,
+            weighted.whiten_rows(target_s),
+            tolerance=settings.solver_tolerance * (_EARLY_ROUND_LOOSENING if left else 1.0),
+            max_iterations=settings.solver_max_iterations,
+            step=tell,
+        )
+        steps += found.iterations
+        fit = problem.fit(target_s - system.seconds(found.white), active, loss)
+        if not left:
+            return replace(found, iterations=steps), fit
+        if float(np.mean(np.abs(fit.weights - weights))) < _SETTLED_WEIGHT_CHANGE:
+            left = 1
+        weights = fit.weights
 
 
 def take_step(

@@ -156,23 +156,8 @@ def solve(
     Paige, C. C. & Saunders, M. A. (1982). LSQR: an algorithm for sparse linear
     equations and sparse least squares. ACM Trans. Math. Softw. 8, 43-71.
     """
-    count = 0
-
-    def times(white: NDArray[np.float64]) -> NDArray[np.float64]:
-        nonlocal count
-        count += 1
-        if step is not None:
-            step(count)
-        return system.times(white.ravel())
-
-    operator = LinearOperator(
-        shape=system.shape,
-        matvec=times,
-        rmatvec=lambda rows: system.transposed_times(rows.ravel()),
-        dtype=np.float64,
-    )
     found = lsqr(
-        operator,
+        _linear_operator(system, step),
         right_hand_side,
         damp=damping,
         atol=tolerance,
@@ -186,6 +171,24 @@ def solve(
         iterations=int(found[2]),
         converged=stop not in (3, 6, 7),
         reason=_SOLVER_REASONS[stop],
+    )
+
+
+def _linear_operator(system: WhitenedSystem, step: Callable[[int], None] | None) -> LinearOperator:
+    count = 0
+
+    def times(white: NDArray[np.float64]) -> NDArray[np.float64]:
+        nonlocal count
+        count += 1
+        if step is not None:
+            step(count)
+        return system.times(white.ravel())
+
+    return LinearOperator(
+        shape=system.shape,
+        matvec=times,
+        rmatvec=lambda rows: system.transposed_times(rows.ravel()),
+        dtype=np.float64,
     )
 
 
