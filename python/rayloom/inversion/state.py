@@ -107,19 +107,19 @@ class InversionState:
         Whitened unknowns of all parameter groups.
     active : (rows,) bool array
         Rows that still have a ray.
-    rejecting : bool
-        Whether suspected outliers have lost all weight.
     history : tuple of Iteration
         Rows so far; the last one describes this state.
     fingerprint : str
         Digest of the data, the blocks and the priors that the state belongs to.
+    rejecting : bool
+        Whether suspected outliers have lost all weight.
     """
 
     white: NDArray[np.float64]
     active: NDArray[np.bool_]
-    rejecting: bool
     history: tuple[Iteration, ...]
     fingerprint: str
+    rejecting: bool = False
 
     @property
     def iteration(self) -> int:
