@@ -32,7 +32,9 @@ class Iteration:
     chi2, chi2_expected : float
         Weighted squared residuals Σ w (r/σ)² and their expectation
         (N − N_g) − tr H if the uncertainties are right, N and N_g counting rows
-        and groups that have weight; NaN where not estimated.
+        and groups that have weight; NaN where not estimated. Huber weights
+        lower chi2 even for Gaussian errors, at most to the share
+        2Φ(k) − 1 (0.82 for k = 1.345) of its expectation.
     chi2_kept : float
         Σ (r/σ)² over the picks not suspected as outliers.
     prior_misfit : float
