@@ -158,6 +158,22 @@ impl<C: Chart> Blocks<C> {
         }
     }
 
+    /// Geometric mean of the mean widths (km) along the three axes.
+    pub fn mean_width_km(&self) -> f64 {
+        let product: f64 = (0..3)
+            .map(|axis| {
+                let edges = &self.edges[axis];
+                (edges[edges.len() - 1] - edges[0]) / self.size(axis) as f64
+            })
+            .product();
+        product.cbrt()
+    }
+
+    /// Mean time (s) through a block.
+    pub fn mean_transit_s(&self) -> f64 {
+        self.slowness.iter().sum::<f64>() / self.count() as f64 * self.mean_width_km()
+    }
+
     /// True if the point (grid coordinates) lies in the model or on its surface.
     pub fn contains(&self, point: Vec3) -> bool {
         (0..3).all(|axis| {

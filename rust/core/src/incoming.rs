@@ -25,7 +25,7 @@ pub fn enters(arrival: &Arrival, side: usize) -> bool {
     const TOP: usize = 4;
     let upward = arrival.gradient[2] < 0.0;
     let along = arrival.gradient[side / 2];
-    let inward = if side % 2 == 0 {
+    let inward = if side.is_multiple_of(2) {
         along > 0.0
     } else {
         along < 0.0

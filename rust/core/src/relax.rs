@@ -112,6 +112,10 @@ pub fn relax_face(
 pub const FACE_COUNTS: [usize; 5] = [6, 8, 10, 12, 16];
 
 /// All rows of a face stay in registers while the sources pass.
+#[expect(
+    clippy::inline_always,
+    reason = "inlining carries the instruction set of the caller"
+)]
 #[inline(always)]
 fn face_rows<const COUNT: usize, const ROW: usize, const STRIDE: usize>(
     table: &[f32],

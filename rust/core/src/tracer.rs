@@ -16,10 +16,11 @@ use crate::search::coarse::{CoarseField, CoarseSearch};
 use crate::search::fine::{Bound, FineField, FineSearch, Start, SurfaceStart};
 use crate::vec3::Vec3;
 
-/// Added to the slack of a fine search that found nothing (s).
-const RETRY_SLACK_S: f64 = 0.2;
-/// A wave may enter a face earlier than at its corners by about this (s).
-const FACE_SAG_S: f32 = 0.02;
+/// Added to the slack of a fine search that found nothing (block transits).
+const RETRY_SLACK: f64 = 0.1;
+/// A wave may enter a face earlier than at its corners by about this (block
+/// transits).
+const FACE_SAG: f64 = 0.01;
 
 /// How finely to search and how hard to refine.
 #[derive(Debug, Clone, Copy)]
@@ -32,8 +33,9 @@ pub struct Quality {
     pub fine_nodes: usize,
     /// Relative excess of the fine graph's times over true ones.
     pub fine_bias: f64,
-    /// How much later (s) than the present ray a fine path may be.
-    pub slack_s: f64,
+    /// How much later than the present ray a fine path may be, as a share of the
+    /// mean time through a block.
+    pub slack: f64,
     /// Refinement before the fine search.
     pub first: Effort,
     /// Refinement after the fine search.
@@ -48,9 +50,9 @@ impl Quality {
             coarse_nodes: 2,
             fine_nodes: 8,
             fine_bias: 0.0033,
-            slack_s: 0.15,
+            slack: 0.08,
             first: effort(0, 0),
-            last: effort(0, 2),
+            last: effort(2, 10),
         }
     }
 
@@ -61,9 +63,9 @@ impl Quality {
             coarse_nodes: 3,
             fine_nodes: 12,
             fine_bias: 0.0016,
-            slack_s: 0.05,
-            first: effort(2, 2),
-            last: effort(0, 2),
+            slack: 0.05,
+            first: effort(2, 4),
+            last: effort(3, 20),
         }
     }
 }
@@ -72,7 +74,7 @@ fn effort(chord_rounds: usize, flip_rounds: usize) -> Effort {
     Effort {
         chord_rounds,
         flip_rounds,
-        flip_patience_s: 0.03,
+        flip_patience: 0.16,
     }
 }
 
@@ -108,6 +110,7 @@ pub struct Tracer<'a, C> {
     fine: Option<FineSearch<'a, C>>,
     surface: Option<&'a Surface>,
     quality: Quality,
+    transit_s: f64,
 }
 
 /// Memory of one thread.
@@ -134,6 +137,7 @@ impl<'a, C: Chart> Tracer<'a, C> {
                 .then(|| FineSearch::new(blocks, lattice, quality.fine_nodes)),
             surface,
             quality,
+            transit_s: blocks.mean_transit_s(),
         }
     }
 
@@ -217,8 +221,8 @@ impl<'a, C: Chart> Tracer<'a, C> {
         let graph_time = path.time(self.blocks);
         workspace.refiner.refine(&mut path, self.quality.first);
         if let Some(fine) = &self.fine {
-            let better = [0.0, RETRY_SLACK_S].iter().find_map(|extra| {
-                let slack_s = self.quality.slack_s + extra;
+            let better = [0.0, RETRY_SLACK].iter().find_map(|extra| {
+                let slack_s = (self.quality.slack + extra) * self.transit_s;
                 self.search_again(
                     fine,
                     receiver,
@@ -288,7 +292,7 @@ impl<'a, C: Chart> Tracer<'a, C> {
                     fine,
                     incoming,
                     corners,
-                    (coarse, scale, limit_s as f32 + FACE_SAG_S),
+                    (coarse, scale, (limit_s + FACE_SAG * self.transit_s) as f32),
                     &mut workspace.start,
                 );
                 Start::Surface(&workspace.start)

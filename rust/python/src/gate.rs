@@ -83,17 +83,15 @@ fn watch(
 
 /// True while the work goes on.
 fn wait(finished: &Mutex<mpsc::Receiver<()>>) -> bool {
-    finished.lock().is_ok_and(|receiver| {
-        receiver.recv_timeout(POLL) == Err(mpsc::RecvTimeoutError::Timeout)
-    })
+    finished
+        .lock()
+        .is_ok_and(|receiver| receiver.recv_timeout(POLL) == Err(mpsc::RecvTimeoutError::Timeout))
 }
 
 /// A pool of `threads` threads, or of one per core.
 pub fn rayon_pool(threads: Option<usize>) -> PyResult<rayon::ThreadPool> {
     if threads == Some(0) {
-        return Err(PyValueError::new_err(
-            "threads: expected at least 1, got 0",
-        ));
+        return Err(PyValueError::new_err("threads: expected at least 1, got 0"));
     }
     rayon::ThreadPoolBuilder::new()
         .num_threads(threads.unwrap_or(0))

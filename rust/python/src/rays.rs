@@ -1,8 +1,6 @@
 //! Rays of whole data sets, as numpy arrays.
 
-use numpy::{
-    IntoPyArray, PyArray1, PyArray2, PyArrayMethods, PyReadonlyArray1, PyReadonlyArray2,
-};
+use numpy::{IntoPyArray, PyArray1, PyArray2, PyArrayMethods, PyReadonlyArray1, PyReadonlyArray2};
 use pyo3::exceptions::PyValueError;
 use pyo3::prelude::*;
 use rayloom_core::blocks::Blocks;
@@ -93,7 +91,10 @@ impl RayArrays {
 /// Rays between points inside a model.
 #[pyfunction]
 #[pyo3(signature = (model, sources_km, receivers_km, pairs, *, method, quality, coarse_nodes=None, threads=None, progress=None))]
-#[expect(clippy::too_many_arguments, reason = "keyword arguments of a Python call")]
+#[expect(
+    clippy::too_many_arguments,
+    reason = "keyword arguments of a Python call"
+)]
 fn trace_between(
     py: Python<'_>,
     model: &BlockModel,
@@ -130,7 +131,10 @@ fn trace_between(
 /// the radial model brings their waves to the blocks.
 #[pyfunction]
 #[pyo3(signature = (model, radial, epicentres_km, source_depths_km, stations_km, pairs, *, quality, coarse_nodes=None, threads=None, progress=None))]
-#[expect(clippy::too_many_arguments, reason = "keyword arguments of a Python call")]
+#[expect(
+    clippy::too_many_arguments,
+    reason = "keyword arguments of a Python call"
+)]
 fn trace_distant(
     py: Python<'_>,
     model: &BlockModel,

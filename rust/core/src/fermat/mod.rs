@@ -28,9 +28,9 @@ pub struct Effort {
     pub chord_rounds: usize,
     /// Rounds of edge flips.
     pub flip_rounds: usize,
-    /// A flip is given up if it is later by more than this (s) before its
-    /// crossing points are optimised.
-    pub flip_patience_s: f64,
+    /// A flip is given up if it is later by more than this share of the mean time
+    /// through a block, before its crossing points are optimised.
+    pub flip_patience: f64,
 }
 
 /// Refines paths in one block model, reusing its memory from ray to ray.
@@ -38,6 +38,7 @@ pub struct Refiner<'a, C> {
     blocks: &'a Blocks<C>,
     incoming: Option<&'a dyn Incoming>,
     scale_km: f64,
+    transit_s: f64,
     newton: Newton,
     trial: Path,
     memory: FlipMemory,
@@ -47,16 +48,11 @@ impl<'a, C: Chart> Refiner<'a, C> {
     /// A refiner for paths from fixed points, or, after
     /// [`Self::set_incoming`], from the model's surface.
     pub fn new(blocks: &'a Blocks<C>) -> Self {
-        let widths: f64 = (0..3)
-            .map(|axis| {
-                let edges = blocks.edges(axis);
-                (edges[edges.len() - 1] - edges[0]) / blocks.size(axis) as f64
-            })
-            .product();
         Self {
             blocks,
             incoming: None,
-            scale_km: widths.cbrt(),
+            scale_km: blocks.mean_width_km(),
+            transit_s: blocks.mean_transit_s(),
             newton: Newton::default(),
             trial: Path::default(),
             memory: FlipMemory::default(),
@@ -112,7 +108,7 @@ impl<'a, C: Chart> Refiner<'a, C> {
         }
         self.memory.clear();
         for _ in 0..effort.flip_rounds {
-            if self.flip_round(path, effort.flip_patience_s) == 0 {
+            if self.flip_round(path, effort.flip_patience * self.transit_s) == 0 {
                 break;
             }
             path.cut_loops(self.blocks);

@@ -1,6 +1,6 @@
 //! Newton's method on the crossing points of one block sequence: [`Newton`].
 //!
-//! T = Σ s_i √(|x_{i+1} − x_i|² + ε²) + T_outside(x_0), two unknowns per
+//! `T = Σ s_i √(|x_{i+1} − x_i|² + ε²) + T_outside(x_0)`, two unknowns per
 //! crossing, each kept on its face. The Hessian is block tridiagonal with 2 × 2
 //! blocks and factorised by the block form of Thomas's algorithm. Bounds are
 //! kept by an active set and projection. The outside wave and the sphere bend so
