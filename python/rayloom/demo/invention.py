@@ -30,6 +30,7 @@ from rayloom.demo.structure import (
 )
 from rayloom.demo.times import Progress, standard_time_s, structure_delay_s
 from rayloom.earth import ReferenceEarth
+from rayloom.forward.settings import DistantMethod
 from rayloom.model import SlownessModel
 from rayloom.survey import Stations
 
@@ -60,7 +61,7 @@ class Scenario:
     station_count: int = len(PLACES)
     event_count: int = 120
     spacing_km: float = TRUTH_SPACING_KM
-    method: str = "bent"
+    method: DistantMethod = "bent"
 
 
 @dataclass(frozen=True)

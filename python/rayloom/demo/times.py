@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from rayloom.earth import ReferenceEarth, distance_azimuth_deg, geocentric_latitude_deg
 from rayloom.forward import trace_distant
+from rayloom.forward.settings import DistantMethod
 from rayloom.model import SlownessModel
 from rayloom.survey import Events, Stations
 from rayloom.units import M_PER_KM
@@ -63,7 +64,7 @@ def structure_delay_s(
     stations: Stations,
     pairs: Integers,
     *,
-    method: str = "bent",
+    method: DistantMethod = "bent",
     threads: int | None = None,
     progress: Progress | None = None,
 ) -> Floats:
