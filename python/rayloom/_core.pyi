@@ -3,8 +3,20 @@ from typing import final
 
 import numpy as np
 from numpy.typing import NDArray
-from typing_extensions import disjoint_base
 
+__all__ = [
+    "BlockModel",
+    "LayeredEarth",
+    "RadialModel",
+    "RayArrays",
+    "SparseProducts",
+    "WavefrontTable",
+    "straight_from_entries",
+    "trace_between",
+    "trace_distant",
+]
+
+@final
 class SparseProducts:
     def __new__(
         cls,
@@ -79,6 +91,7 @@ class WavefrontTable:
         self, distance_rad: NDArray[np.float64], depth_km: NDArray[np.float64]
     ) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]]: ...
 
+@final
 class BlockModel:
     def __new__(
         cls,
@@ -90,6 +103,7 @@ class BlockModel:
         radius_km: float | None = None,
     ) -> BlockModel: ...
 
+@final
 class RayArrays:
     @property
     def traced(self) -> NDArray[np.bool_]: ...
