@@ -14,7 +14,7 @@ from typing import Any, TypeVar
 import click
 
 from rayloom import __version__
-from rayloom.cli.guard import FOLDER, GuardedGroup
+from rayloom.cli.guard import FOLDER, RESUME, GuardedGroup
 
 Command = TypeVar("Command", bound=Callable[..., Any])
 
@@ -91,6 +91,7 @@ def demo(ctx: click.Context, folder: Path, quiet: bool) -> None:
     from rayloom.cli.demonstration import demonstrate
 
     ctx.meta[FOLDER] = folder
+    ctx.meta[RESUME] = "demo"
     with listening(quiet=quiet) as reporter:
         text = demonstrate(folder, reporter)
     click.echo(text)
@@ -188,7 +189,7 @@ def _one_step(ctx: click.Context, name: str, folder: Path, *, again: bool, quiet
         done = run_step(folder, name, again=again, reporter=reporter)
     if not done:
         click.echo(f"{name}: up to date (do it again with --again).")
-    click.echo(summarise(folder))
+    click.echo(summarise(folder, upto=name))
 
 
 @main.command()

@@ -139,6 +139,7 @@ class BarReporter(Reporter):
     def _clear(self) -> None:
         if self._task is not None:
             self._bars.remove_task(self._task)
+            self._bars.refresh()
             self._task = None
 
 

@@ -40,7 +40,11 @@ def demonstrate(folder: Path, reporter: Reporter) -> str:
     """
     survey = folder / _SURVEY
     truth_file = survey / "truth.json"
-    if folder.exists() and not truth_file.exists() and any(folder.iterdir()):
+    if (
+        folder.exists()
+        and any(path.name != _SURVEY for path in folder.iterdir())
+        and (not truth_file.exists())
+    ):
         raise InputError(
             f"{folder} is not empty and holds no demo; name a new folder: rayloom demo DIR"
         )

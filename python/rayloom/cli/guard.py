@@ -20,6 +20,9 @@ from rayloom.errors import RayloomError
 FOLDER = "rayloom.folder"
 """Key of the run folder at work in the context's shared notes."""
 
+RESUME = "rayloom.resume"
+"""Key of the command that takes up an interrupted job, where it is not ``run``."""
+
 PERSONS_MISTAKE = 2
 PROGRAMS_ERROR = 1
 INTERRUPTED = 130
@@ -41,7 +44,7 @@ class GuardedGroup(TaughtGroup):
             _say("Error: not enough memory; make the blocks of [grid] larger or use fewer picks")
             ctx.exit(PERSONS_MISTAKE)
         except KeyboardInterrupt:
-            _say(_how_to_resume(ctx.meta.get(FOLDER)))
+            _say(_how_to_resume(ctx.meta.get(FOLDER), ctx.meta.get(RESUME, "run")))
             ctx.exit(INTERRUPTED)
         except Exception as error:
             _say(_own_error(error, ctx.meta.get(FOLDER)))
@@ -52,12 +55,12 @@ def _say(text: str) -> None:
     click.echo(text, err=True)
 
 
-def _how_to_resume(folder: Path | None) -> str:
+def _how_to_resume(folder: Path | None, command: str) -> str:
     if folder is None or not (folder / "rayloom.toml").exists():
         return "Stopped; nothing half-written was left."
     return (
         "Stopped; what was finished is kept and nothing is half-written. "
-        f"Resume with: rayloom run {folder}"
+        f"Resume with: rayloom {command} {folder}"
     )
 
 

@@ -172,17 +172,18 @@ def _state_arrays(state: InversionState) -> dict[str, Any]:
         for field in fields(Iteration)
     }
     return history | {
-        "state_white": state.white,
-        "state_active": state.active,
-        "state_fingerprint": np.array(state.fingerprint),
+        f"state_{field.name}": np.array(getattr(state, field.name))
+        for field in fields(InversionState)
+        if field.name != "history"
     }
 
 
 def _state(arrays: dict[str, Any]) -> InversionState:
     columns = (arrays[f"history_{field.name}"].tolist() for field in fields(Iteration))
-    return InversionState(
-        white=arrays["state_white"],
-        active=arrays["state_active"],
-        history=tuple(Iteration(*row) for row in zip(*columns, strict=True)),
-        fingerprint=str(arrays["state_fingerprint"]),
-    )
+    history = tuple(Iteration(*row) for row in zip(*columns, strict=True))
+    stored = {
+        name.removeprefix("state_"): values if values.ndim else values.item()
+        for name, values in arrays.items()
+        if name.startswith("state_")
+    }
+    return InversionState(history=history, **stored)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections import Counter
 from pathlib import Path
 from typing import Any
@@ -9,16 +10,20 @@ from typing import Any
 from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.record import Provenance
 
+_ORDER = ("residuals", "invert", "export")
 _LABEL_WIDTH = 12
+_LOOK_FIRST = ("report.html", "figures/", "model.nc", "model.vts", "rays.vtp")
 
 
-def summarise(path: str | Path) -> str:
+def summarise(path: str | Path, *, upto: str = "export") -> str:
     """Tell what the steps done so far have found.
 
     Parameters
     ----------
     path : str or pathlib.Path
         The run folder.
+    upto : {"residuals", "invert", "export"}
+        The last step to tell of.
 
     Returns
     -------
@@ -26,7 +31,9 @@ def summarise(path: str | Path) -> str:
         A few lines: data, exclusions, misfit, model, files.
     """
     folder = RunFolder(Path(path))
-    steps = Provenance(folder.provenance).steps
+    told = _ORDER[: _ORDER.index(upto) + 1]
+    done = Provenance(folder.provenance).steps
+    steps = {name: done[name] for name in told if name in done}
     lines: list[tuple[str, str]] = []
     if "residuals" in steps:
         lines += _data_lines(folder)
@@ -34,7 +41,7 @@ def summarise(path: str | Path) -> str:
         lines += _model_lines(folder, steps["invert"].remarks.get("stopped_because", ""))
     written = [name for step in steps.values() for name in step.outputs]
     if written:
-        lines.append(("results", f"{folder.path}/  ({_listing(written)})"))
+        lines.append(("results", f"in {folder.path}: {_listing(written)}"))
     return "\n".join(f"{label:<{_LABEL_WIDTH}}{text}" for label, text in lines)
 
 
@@ -66,13 +73,17 @@ def _model_lines(folder: RunFolder, stopped_because: str) -> list[tuple[str, str
     first: Any = history.iloc[0]
     last: Any = history.iloc[-1]
     suspects = int(last["suspected_outliers"])
+    chi2 = f"chi2 {last['chi2']:.0f}"
+    if math.isfinite(last["chi2_expected"]):
+        chi2 += f" ({last['chi2_expected']:.0f} expected if the uncertainties are right)"
     return [
         (
             "misfit",
-            f"rms {first['rms_kept_s']:.3f} s -> {last['rms_kept_s']:.3f} s, variance reduction "
-            f"{last['variance_reduction_percent']:.0f} %, "
-            f"{suspects} suspected outliers (listed in suspected_outliers.csv)",
+            f"rms {first['rms_kept_s']:.3f} s -> {last['rms_kept_s']:.3f} s without suspected "
+            f"outliers, variance reduction {last['variance_reduction_percent']:.0f} %; "
+            f"{suspects} suspected (listed in suspected_outliers.csv)",
         ),
+        ("", chi2),
         (
             "model",
             f"{int(last['iteration'])} iterations, perturbation rms "
@@ -83,5 +94,8 @@ def _model_lines(folder: RunFolder, stopped_because: str) -> list[tuple[str, str
 
 
 def _listing(names: list[str]) -> str:
-    top = list(dict.fromkeys(name.split("/")[0] + ("/" if "/" in name else "") for name in names))
-    return ", ".join(top)
+    """Name what a person looks at first, and count the rest."""
+    top = {name.split("/")[0] + ("/" if "/" in name else "") for name in names}
+    first = [name for name in _LOOK_FIRST if name in top] or sorted(top)
+    rest = len(top) - len(first)
+    return ", ".join(first) + (f" and {rest} more" if rest else "")
