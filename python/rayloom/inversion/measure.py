@@ -115,6 +115,7 @@ def measure(
         suspected_outliers=int(np.sum(suspected)),
         residual_scale=fit.scale,
         step_length=taken.length if taken else 0.0,
+        step_gain=taken.gain if taken else 0.0,
         solver_iterations=planned.solver_iterations if planned else 0,
         solver_converged=planned.solver_converged if planned else True,
         seconds=seconds,

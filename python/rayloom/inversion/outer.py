@@ -14,7 +14,7 @@ from rayloom.inversion.measure import Stage, measure
 from rayloom.inversion.problem import Problem, TracedModel
 from rayloom.inversion.robust import RobustFit
 from rayloom.inversion.state import InversionState, Iteration
-from rayloom.inversion.step import PlannedStep, take_step
+from rayloom.inversion.step import PlannedStep, next_length, take_step
 
 _NEARLY_SETTLED_DROP = 0.1
 """Share of the objective still to be lost at which suspected outliers are rejected."""
@@ -83,7 +83,9 @@ def run_outer_loop(
         elif _is_small(problem, planned.model_change, planned.objective_drop):
             reason = _nothing_to_gain(planned)
             break
-        taken = take_step(problem, stage.traced, planned, report)
+        last = state.history[-1]
+        length = next_length(last.step_length, last.step_gain) if last.iteration else 1.0
+        taken = take_step(problem, stage.traced, planned, length=length, report=report)
         if taken is None:
             reason = "no step along the computed direction lowers the objective any more"
             break

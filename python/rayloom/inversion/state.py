@@ -58,6 +58,8 @@ class Iteration:
         Spread of standardised residuals that the robust weights assume.
     step_length : float
         Share of the computed step that was taken.
+    step_gain : float
+        Fall of the objective over the fall that the linearised problem promised.
     solver_iterations : int
         Steps of the least-squares solver, all rounds of weighting together.
     solver_converged : bool
@@ -85,6 +87,7 @@ class Iteration:
     suspected_outliers: int
     residual_scale: float
     step_length: float
+    step_gain: float
     solver_iterations: int
     solver_converged: bool
     seconds: float

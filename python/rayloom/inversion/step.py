@@ -15,6 +15,9 @@ from rayloom.inversion.system import Solution, WhitenedSystem, solve
 _SETTLED_WEIGHT_CHANGE = 1e-3
 _EARLY_ROUND_LOOSENING = 10.0
 _REPORT_EVERY = 20
+_POOR_GAIN = 0.5
+_GOOD_GAIN = 0.8
+_SHORTEST_FIRST_TRY = 0.25
 
 
 @dataclass(frozen=True)
@@ -50,10 +53,22 @@ class PlannedStep:
 
 @dataclass(frozen=True)
 class TakenStep:
-    """A traced model that does not raise the objective, and the share of the step taken."""
+    """A traced model that does not raise the objective.
+
+    Attributes
+    ----------
+    traced : TracedModel
+        The model and its rays.
+    length : float
+        Share of the planned step that was taken.
+    gain : float
+        Fall of the objective over the fall that the linearised problem promised
+        for that share.
+    """
 
     traced: TracedModel
     length: float
+    gain: float
 
 
 def plan_step(
@@ -144,32 +159,64 @@ def _solve_in_rounds(
 
 
 def take_step(
-    problem: Problem, current: TracedModel, planned: PlannedStep, report: Report | None = None
+    problem: Problem,
+    current: TracedModel,
+    planned: PlannedStep,
+    *,
+    length: float = 1.0,
+    report: Report | None = None,
 ) -> TakenStep | None:
     """Trace the planned model, halving the step while it raises the objective.
+
+    Parameters
+    ----------
+    problem, current, planned
+        Where to step from, and where to.
+    length : float, optional
+        Share of the planned step to try first.
+    report : callable, optional
+        Told ("tracing", done, total).
 
     Returns
     -------
     TakenStep or None
         None if even the shortest step raises it.
     """
-    length = 1.0
     for _ in range(problem.settings.max_halvings + 1):
         white = current.white + length * (planned.white - current.white)
         model = problem.model_of(white)
         if model is not None:
             trial = problem.trace(
-                white,
-                model,
-                previous=current.rays,
-                active=current.active,
-                report=report,
+                white, model, previous=current.rays, active=current.active, report=report
             )
             measure = (trial.active, planned.loss, planned.scale)
-            if _objective(problem, trial, *measure) <= _objective(problem, current, *measure):
-                return TakenStep(traced=trial, length=length)
+            before = _objective(problem, current, *measure)
+            fall = before - _objective(problem, trial, *measure)
+            if fall >= 0.0:
+                promised = length * (2.0 - length) * planned.objective_drop * before
+                gain = fall / promised if promised > 0.0 else 1.0
+                return TakenStep(traced=trial, length=length, gain=gain)
         length *= 0.5
     return None
+
+
+def next_length(last_length: float, last_gain: float) -> float:
+    """Share of the next planned step to try first, after what the last one gained.
+
+    Where rays move so much that the linearised problem promises far more than
+    it keeps, full steps run from one set of rays to another and back; shorter
+    ones settle between them.
+
+    References
+    ----------
+    Conn, A. R., Gould, N. I. M. & Toint, P. L. (2000). Trust-region methods.
+    SIAM (the rule for changing the radius).
+    """
+    if last_gain < _POOR_GAIN:
+        return max(0.5 * last_length, _SHORTEST_FIRST_TRY)
+    if last_gain > _GOOD_GAIN:
+        return min(2.0 * last_length, 1.0)
+    return last_length
 
 
 def _objective(
