@@ -8,23 +8,18 @@
 //! block on the other: within a block all nodes see each other, so a path never
 //! spends two segments in one block.
 
-use std::collections::HashMap;
-use std::sync::OnceLock;
-
 use crate::blocks::{Blocks, Cell, Side, face_axes};
 use crate::frame::Chart;
 use crate::lattice::Lattice;
-use crate::path::{FREE, Path};
+use crate::path::Path;
 use crate::relax::{Tabulated, lowered, relax_face};
 use crate::search::box_tables::{BoxTables, FaceLayout, RowIndex, Rows, rows_between};
+use crate::search::boxes::BoxSet;
 use crate::search::buckets::BucketQueue;
-use crate::vec3::{Vec3, norm};
+use crate::vec3::Vec3;
 
 const UNKNOWN: u32 = u32::MAX;
 const OUTSIDE: u32 = u32::MAX - 1;
-
-/// Blocks on the sphere whose mean widths agree within this share have one table.
-const WIDTH_STEP: f64 = 0.002;
 
 /// Where a fine search begins.
 #[derive(Debug, Clone, Copy)]
@@ -49,13 +44,11 @@ pub struct SurfaceStart {
 /// The fine graph of one block model.
 #[derive(Debug)]
 pub struct FineSearch<'a, C> {
-    blocks: &'a Blocks<C>,
+    pub(super) blocks: &'a Blocks<C>,
     lattice: &'a Lattice,
     layout: FaceLayout,
     rows: RowIndex,
-    box_of: Vec<u32>,
-    box_widths_km: Vec<[f64; 3]>,
-    tables: Vec<OnceLock<BoxTables>>,
+    boxes: BoxSet,
     interpolation: Vec<(usize, f32)>,
     bucket_width_s: f32,
     face_offsets: [usize; 3],
@@ -110,6 +103,13 @@ impl FineField {
     pub fn block_count(&self) -> usize {
         self.visited.len()
     }
+
+    /// Times (s) at the places of a face, if the last search filled it.
+    pub(super) fn times_on(&self, face_id: usize, size: usize) -> Option<&[f32]> {
+        let face = *self.face_slot.get(face_id)? as usize;
+        let filled = self.face_stamp[face_id] == self.stamp && self.faces[face].filled;
+        filled.then(|| &self.times[face * size..][..size])
+    }
 }
 
 impl<'a, C: Chart> FineSearch<'a, C> {
@@ -125,7 +125,6 @@ impl<'a, C: Chart> FineSearch<'a, C> {
                 (step, (place - step as f64) as f32)
             })
             .collect();
-        let (box_of, box_widths_km) = box_classes(blocks);
         let fastest = blocks
             .slowness()
             .iter()
@@ -143,9 +142,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             lattice,
             layout,
             rows: RowIndex::new(layout),
-            box_of,
-            tables: box_widths_km.iter().map(|_| OnceLock::new()).collect(),
-            box_widths_km,
+            boxes: BoxSet::new(blocks, layout),
             interpolation,
             bucket_width_s: (0.5 * fastest * narrowest) as f32,
             face_offsets: [0, x_faces, x_faces + y_faces],
@@ -179,12 +176,11 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         (0..count).flat_map(move |row| (0..count).map(move |column| row * lanes + column))
     }
 
-    fn table(&self, block: u32) -> &BoxTables {
-        let class = self.box_of[block as usize] as usize;
-        self.tables[class].get_or_init(|| BoxTables::new(self.layout, self.box_widths_km[class]))
+    pub(super) fn table(&self, block: u32) -> &BoxTables {
+        self.boxes.table(block)
     }
 
-    fn face_id(&self, cell: Cell, side: Side) -> usize {
+    pub(super) fn face_id(&self, cell: Cell, side: Side) -> usize {
         let axis = side / 2;
         let mut at = cell;
         at[axis] += side % 2;
@@ -497,141 +493,4 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             field.queue.lower(next as u32, earliest);
         }
     }
-
-    fn trace_back(&self, start: Start<'_>, goal: Vec3, field: &FineField) -> Option<Path> {
-        let home = match start {
-            Start::Point(source) => self.blocks.around(source),
-            Start::Surface(_) => Vec::new(),
-        };
-        let mut path = Path::default();
-        path.start(goal, FREE);
-        let mut candidates = self.blocks.around(goal);
-        let mut at = goal;
-        let mut arrived_by = None;
-        let mut below = f32::INFINITY;
-        loop {
-            let mut best = (f32::INFINITY, 0, None);
-            for &block in &candidates {
-                if let (Start::Point(source), true) = (start, home.contains(&block)) {
-                    let way = self.blocks.chart().distance(at, source);
-                    let time = (way * self.blocks.slowness_of(block)) as f32;
-                    if time <= best.0 {
-                        best = (time, block, None);
-                    }
-                }
-                if let Some((time, side, node)) =
-                    self.best_node(block, at, (arrived_by, below), field)
-                    && time < best.0
-                {
-                    best = (time, block, Some((side, node)));
-                }
-            }
-            let (time, block, step) = best;
-            if !time.is_finite() {
-                return None;
-            }
-            match (step, start) {
-                (None, Start::Point(source)) => {
-                    path.push(block, source, FREE);
-                    path.reverse();
-                    return Some(path);
-                }
-                (None, Start::Surface(_)) => return None,
-                (Some((side, node)), _) => {
-                    at = self.node_position(block, side, node);
-                    below = self.node_time(block, side, node, field);
-                    path.push(block, at, (side / 2) as u8);
-                    let Some(next) = self.blocks.neighbour(block, side) else {
-                        path.reverse();
-                        return Some(path);
-                    };
-                    candidates.clear();
-                    candidates.push(next);
-                    arrived_by = Some(side ^ 1);
-                }
-            }
-        }
-    }
-
-    fn node_time(&self, block: u32, side: Side, node: usize, field: &FineField) -> f32 {
-        let face = field.face_slot[self.face_id(self.blocks.cell(block), side)] as usize;
-        field.times[face * self.layout.size() + node]
-    }
-
-    /// The best node of a block's faces to come from: not of the side just
-    /// left, and earlier than the present node.
-    fn best_node(
-        &self,
-        block: u32,
-        at: Vec3,
-        (except, below): (Option<Side>, f32),
-        field: &FineField,
-    ) -> Option<(f32, Side, usize)> {
-        if field.block_stamp[block as usize] != field.stamp {
-            return None;
-        }
-        let table = self.table(block);
-        let here = [0, 1, 2].map(|axis| {
-            let (low, high) = self.blocks.range(block, axis);
-            (at[axis] - low) / (high - low) * table.width_km(axis)
-        });
-        let slowness = self.blocks.slowness_of(block) as f32;
-        let cell = self.blocks.cell(block);
-        let mut best: Option<(f32, Side, usize)> = None;
-        for side in (0..6).filter(|&side| Some(side) != except) {
-            let id = self.face_id(cell, side);
-            let face = field.face_slot[id] as usize;
-            if field.face_stamp[id] != field.stamp || !field.faces[face].filled {
-                continue;
-            }
-            let axis = side / 2;
-            let (u, v) = face_axes(axis);
-            let width = [0, 1, 2].map(|axis| table.width_km(axis));
-            let off_plane = here[axis] - if side % 2 == 1 { width[axis] } else { 0.0 };
-            for place in self.places() {
-                let known = field.times[face * self.layout.size() + place];
-                if known >= below {
-                    continue;
-                }
-                let (row, column) = (place / self.layout.lanes, place % self.layout.lanes);
-                let du = here[u] - self.layout.fraction(row) * width[u];
-                let dv = here[v] - self.layout.fraction(column) * width[v];
-                let way = (off_plane * off_plane + du * du + dv * dv).sqrt();
-                let time = known + slowness * way as f32;
-                if best.is_none_or(|known| time < known.0) {
-                    best = Some((time, side, place));
-                }
-            }
-        }
-        best
-    }
-}
-
-/// Sorts blocks by their mean widths: the class of each block and the widths
-/// (km) of each class.
-fn box_classes<C: Chart>(blocks: &Blocks<C>) -> (Vec<u32>, Vec<[f64; 3]>) {
-    let mut known: HashMap<[i64; 3], u32> = HashMap::new();
-    let mut widths_km = Vec::new();
-    let box_of = (0..blocks.count() as u32)
-        .map(|block| {
-            let ranges = [0, 1, 2].map(|axis| blocks.range(block, axis));
-            let middle = ranges.map(|(low, high)| 0.5 * (low + high));
-            let tangents = blocks.chart().tangents(middle);
-            let widths =
-                [0, 1, 2].map(|axis| (ranges[axis].1 - ranges[axis].0) * norm(tangents[axis]));
-            let key = widths.map(|width| {
-                let place = if C::FLAT {
-                    width / 1e-6
-                } else {
-                    width.ln() / WIDTH_STEP
-                };
-                place.round() as i64
-            });
-            *known.entry(key).or_insert_with(|| {
-                widths_km.push(widths);
-                (widths_km.len() - 1) as u32
-            })
-        })
-        .collect();
-    (box_of, widths_km)
 }

@@ -4,6 +4,8 @@
 
 pub mod backtrack;
 pub mod box_tables;
+pub mod boxes;
 pub mod buckets;
 pub mod coarse;
 pub mod fine;
+mod fine_backtrack;
