@@ -1,0 +1,110 @@
+"""The box of blocks against the one-dimensional Earth it is filled with."""
+
+import numpy as np
+import pytest
+
+import rayloom as rl
+from rayloom.earth import distance_azimuth_deg, geocentric_latitude_deg
+from rayloom.survey import Events, Stations
+
+
+@pytest.fixture(scope="module")
+def earth():
+    return rl.ReferenceEarth("ak135")
+
+
+def _network(random, count=5):
+    return Stations(
+        network=np.array(["QX"] * count),
+        station=np.array([f"S{k}" for k in range(count)]),
+        latitude_deg=random.uniform(-41.2, -38.8, count),
+        longitude_deg=random.uniform(64.6, 67.4, count),
+        elevation_m=random.uniform(0.0, 3000.0, count),
+    )
+
+
+def _events(random, frame, count=5):
+    """Events at 32° to 85° in all directions."""
+    azimuth = np.radians(random.uniform(0.0, 360.0, count))
+    arc = np.radians(random.uniform(32.0, 85.0, count))
+    x = np.degrees(np.arctan2(np.sin(arc) * np.sin(azimuth), np.cos(arc)))
+    y = np.degrees(np.arcsin(np.sin(arc) * np.cos(azimuth)))
+    longitude, latitude = frame.geographic_coordinates(x, y)
+    return Events(
+        event=np.array([f"E{k}" for k in range(count)]),
+        time=np.array(["2024-03-01"] * count, dtype="datetime64[ns]"),
+        latitude_deg=latitude,
+        longitude_deg=longitude,
+        depth_km=random.uniform(5.0, 500.0, count),
+    )
+
+
+def test_the_reference_model_gives_back_the_times_of_the_one_dimensional_earth(earth):
+    """First arrivals of ak135 (Kennett, Engdahl & Buland 1995) through the earth room.
+
+    Blocks stand for the layers inside the box, so times agree to the blocks' averaging
+    and the tracer's error at its standard quality.
+    """
+    random = np.random.default_rng(20)
+    frame = rl.Frame(longitude=66.0, latitude=-40.0, azimuth_deg=25.0)
+    depth_edges = np.unique(np.r_[-4.0, np.arange(0.0, 301.0, 20.0), 35.0, 210.0])
+    edges_deg = np.arange(-4.2, 4.21, 0.3)
+    grid = rl.BlockGrid(frame, edges_deg, edges_deg, depth_edges)
+    model = rl.SlownessModel.from_earth(grid, earth)
+    stations, events = _network(random), _events(random, frame)
+    rays = rl.trace_distant(model, earth, events, stations)
+    event, station = np.indices((5, 5)).reshape(2, -1)
+    path = distance_azimuth_deg(
+        geocentric_latitude_deg(events.latitude_deg)[event],
+        events.longitude_deg[event],
+        geocentric_latitude_deg(stations.latitude_deg)[station],
+        stations.longitude_deg[station],
+    )
+    exact = earth.travel_time(
+        "P", path.distance_deg, events.depth_km[event], stations.depth_km[station]
+    )
+    difference = (rays.time_s - exact).reshape(5, 5)
+    assert rays.traced.all()
+    assert difference.min() > -0.002
+    assert difference.max() < 0.06
+    relative = difference - difference.mean(axis=1, keepdims=True)
+    assert relative.std() < 0.012
+
+
+def test_entries_lie_on_the_base_or_the_sides_and_times_add_up(earth):
+    """Entry rule of the design: never through the top; |G s + outside − t| ≤ 1e-5 s."""
+    random = np.random.default_rng(21)
+    frame = rl.Frame(longitude=66.0, latitude=-40.0)
+    edges_deg = np.arange(-3.2, 3.21, 0.4)
+    grid = rl.BlockGrid(frame, edges_deg, edges_deg, np.arange(-5.0, 316.0, 20.0))
+    model = rl.SlownessModel.from_earth(grid, earth)
+    model = model.with_slowness(model.reference * random.uniform(0.97, 1.03, grid.shape))
+    stations, events = _network(random), _events(random, frame)
+    for method in ("bent", "reference", "straight"):
+        rays = rl.trace_distant(model, earth, events, stations, method=method)
+        kept = rays.traced
+        assert kept.sum() >= 20
+        x, y, depth = rays.entry[kept].T
+        on_base = np.isclose(depth, grid.depth_edges_km[-1])
+        on_side = np.isclose(np.abs(x), 3.2) | np.isclose(np.abs(y), 3.2)
+        assert (on_base | on_side).all()
+        assert (depth > grid.depth_edges_km[0] + 1.0).all()
+        np.testing.assert_allclose(
+            rays.predict_s(model.slowness_s_per_km)[kept], rays.time_s[kept], atol=1e-5
+        )
+
+
+def test_no_bent_ray_is_later_than_the_reference_ray(earth):
+    """Fermat's principle, to the tracer's error."""
+    random = np.random.default_rng(22)
+    frame = rl.Frame(longitude=66.0, latitude=-40.0)
+    edges_deg = np.arange(-3.2, 3.21, 0.4)
+    grid = rl.BlockGrid(frame, edges_deg, edges_deg, np.arange(-5.0, 316.0, 20.0))
+    model = rl.SlownessModel.from_earth(grid, earth)
+    model = model.with_slowness(model.reference * random.uniform(0.95, 1.05, grid.shape))
+    stations, events = _network(random), _events(random, frame)
+    bent = rl.trace_distant(model, earth, events, stations, method="bent", quality="thorough")
+    fixed = rl.trace_distant(model, earth, events, stations, method="reference")
+    both = bent.traced & fixed.traced
+    assert (bent.time_s[both] <= fixed.time_s[both] + 0.01).all()
+    assert (fixed.time_s[both] - bent.time_s[both]).mean() > 0.02
