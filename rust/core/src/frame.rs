@@ -84,6 +84,8 @@ pub struct SphereChart {
 
 /// Spacing (rad) of the table of sines; a short series covers the rest.
 const TABLE_STEP: f64 = 0.004;
+/// Sines below this belong to the plane of the frame's equator.
+const EQUATOR: f64 = 1e-12;
 /// Entries on each side of zero: a little more than a half turn.
 const TABLE_HALF: i32 = 800;
 
@@ -179,6 +181,10 @@ impl Chart for SphereChart {
             }
             1 => {
                 let (sin_y, _) = self.sin_cos(value * self.per_radius);
+                if sin_y.abs() < EQUATOR {
+                    // The cone is a plane; squaring would double its only root.
+                    return [-from[2] / step[2], f64::NAN];
+                }
                 let square = sin_y * sin_y;
                 let roots = quadratic_roots(
                     step[2] * step[2] - square * dot(step, step),

@@ -29,7 +29,7 @@ fn dijkstra<C: Chart>(blocks: &Blocks<C>, lattice: &Lattice, source: Vec3) -> Ve
     }
     let mut times = vec![f64::INFINITY; lattice.node_count()];
     let mut heap = BinaryHeap::new();
-    let mut offer = |times: &mut Vec<f64>, heap: &mut BinaryHeap<_>, node: usize, time: f64| {
+    let offer = |times: &mut Vec<f64>, heap: &mut BinaryHeap<_>, node: usize, time: f64| {
         if time < times[node] {
             times[node] = time;
             heap.push(Reverse((time.to_bits(), node)));
