@@ -16,8 +16,8 @@ from rayloom.inversion.robust import RobustFit
 from rayloom.inversion.state import InversionState, Iteration
 from rayloom.inversion.step import PlannedStep, next_length, take_step
 
-_NEARLY_SETTLED_DROP = 0.1
-"""Share of the objective still to be lost at which suspected outliers are rejected."""
+_NEARLY_SETTLED_DROP = 0.12
+"""Share of the objective lost by a step at which suspected outliers are rejected."""
 
 
 @dataclass(frozen=True)
@@ -77,7 +77,7 @@ def run_outer_loop(
         if reason:
             break
         planned = stage.plan(problem, report)
-        if _time_to_reject(problem, stage, planned):
+        if _time_to_reject(problem, stage, state, planned):
             stage = Stage.of(problem, stage.traced, rejecting=True)
             planned = stage.plan(problem, report)
         elif _is_small(problem, planned.model_change, planned.objective_drop):
@@ -153,13 +153,20 @@ def _state(stage: Stage, history: tuple[Iteration, ...], fingerprint: str) -> In
     )
 
 
-def _time_to_reject(problem: Problem, stage: Stage, planned: PlannedStep) -> bool:
+def _time_to_reject(
+    problem: Problem, stage: Stage, state: InversionState, planned: PlannedStep
+) -> bool:
     """Outliers are told from structure only once the model has nearly settled."""
-    return (
-        problem.settings.rejects_outliers
-        and not stage.rejecting
-        and planned.objective_drop < _NEARLY_SETTLED_DROP
-    )
+    if not problem.settings.rejects_outliers or stage.rejecting:
+        return False
+    settled = state.iteration > 1 and _last_drop(state) < _NEARLY_SETTLED_DROP
+    return settled or planned.objective_drop < _NEARLY_SETTLED_DROP
+
+
+def _last_drop(state: InversionState) -> float:
+    """Share of the objective that the last step took off."""
+    before, last = state.history[-2:]
+    return 1.0 - last.objective / before.objective if before.objective > 0.0 else 0.0
 
 
 def _reason_to_stop(problem: Problem, stage: Stage, state: InversionState) -> str:
@@ -170,8 +177,7 @@ def _reason_to_stop(problem: Problem, stage: Stage, state: InversionState) -> st
     outliers_pending = problem.settings.rejects_outliers and not stage.rejecting
     if state.iteration == 0 or outliers_pending:
         return ""
-    before, last = state.history[-2:]
-    drop = 1.0 - last.objective / before.objective
+    last, drop = state.history[-1], _last_drop(state)
     if not _is_small(problem, last.model_change_percent / 100.0, drop):
         return ""
     return (
