@@ -64,12 +64,17 @@ def reference():
     return SlownessModel.from_earth(grid, ReferenceEarth("ak135"))
 
 
+def many_rays(grid):
+    """Return the ray length of 40 rays per cell of 50 km in every block."""
+    return 40.0 / 50.0**2 * np.broadcast_to(grid.volumes_km3, grid.shape)
+
+
 def painted(reference, column=SLOW_COLUMN, sign=1.0):
     """Return a model with half the column, half the root and rays everywhere."""
     positions = block_positions(reference.grid)
     percent = 0.5 * sign * (column.percent(*positions) + FAST_ROOT.percent(*positions))
     model = reference.with_slowness(reference.reference / (1.0 + percent / 100.0))
-    return model.with_fields(hits=np.full(reference.grid.shape, 50.0))
+    return model.with_fields(ray_length_km=many_rays(reference.grid))
 
 
 def verdict(truth, model, *, residual_s=None, suspected=None):
@@ -119,7 +124,7 @@ def test_a_reversed_sign_fails(truth, reference):
 
 
 def test_an_empty_model_fails(truth, reference):
-    model = reference.with_fields(hits=np.full(reference.grid.shape, 50.0))
+    model = reference.with_fields(ray_length_km=many_rays(reference.grid))
     result = verdict(truth, model)
     assert result.slow.found is None
     assert not result.passed
@@ -128,12 +133,36 @@ def test_an_empty_model_fails(truth, reference):
 
 def test_blocks_without_rays_and_the_crust_do_not_count(truth, reference):
     slowness = painted(reference).slowness_s_per_km.copy()
-    slowness[0, 0, -1] *= 1.5
+    slowness[:2, :2, -2:] *= 1.5
     slowness[15, 15, 0] *= 1.5
-    hits = np.full(reference.grid.shape, 50.0)
-    hits[0, 0, -1] = 2.0
-    model = reference.with_slowness(slowness).with_fields(hits=hits)
-    assert verdict(truth, model).passed
+    length_km = many_rays(reference.grid).copy()
+    length_km[:5, :5, -5:] = 0.0
+    model = reference.with_slowness(slowness)
+    assert verdict(truth, model.with_fields(ray_length_km=length_km)).passed
+    everywhere = model.with_fields(ray_length_km=many_rays(reference.grid))
+    assert not verdict(truth, everywhere).passed
+
+
+def test_few_rays_in_one_block_do_not_tear_a_body(truth, reference):
+    """Blocks that rays avoid belong to the body as long as their surroundings are crossed."""
+    model = painted(reference)
+    length_km = many_rays(reference.grid).copy()
+    length_km[15, 14:16, 8:11] = 0.0
+    whole, torn = (
+        verdict(truth, model.with_fields(ray_length_km=length))
+        for length in (many_rays(reference.grid), length_km)
+    )
+    assert torn.slow.found == whole.slow.found
+
+
+def test_layer_means_do_not_matter(truth, reference):
+    """A uniform layer is invisible to relative times, so that it must not sway the verdict."""
+    model = painted(reference)
+    layers = 1.0 + 0.012 * np.linspace(1.0, -1.0, reference.grid.shape[2])
+    shifted = reference.with_slowness(model.slowness_s_per_km * layers)
+    shifted = shifted.with_fields(ray_length_km=many_rays(reference.grid))
+    assert verdict(truth, shifted).slow.horizontal_error_km < 8.0
+    assert abs(verdict(truth, shifted).slow.depth_error_km) < 12.0
 
 
 @pytest.mark.parametrize(("factor", "passed"), [(0.8, False), (1.0, True), (1.3, False)])
@@ -156,7 +185,7 @@ def test_suspected_picks_are_left_out_and_compared(truth, reference):
 
 
 def test_wrong_arguments_are_refused(truth, reference):
-    with pytest.raises(InputError, match="hits"):
+    with pytest.raises(InputError, match="ray_length_km"):
         verdict(truth, reference)
     with pytest.raises(InputError, match="per pick"):
         verdict(truth, painted(reference), residual_s=np.zeros(3))

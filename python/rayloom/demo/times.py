@@ -85,7 +85,7 @@ def structure_delay_s(
     threads : int, optional
         Number of threads; all by default.
     progress : callable, optional
-        Called with rays done and rays in all, both models counted.
+        Called with rays done and rays in all; bent rays are traced in both models.
 
     Returns
     -------
@@ -93,24 +93,30 @@ def structure_delay_s(
         Delays in seconds, late positive; NaN where no ray exists.
     """
     count = len(pairs)
-
-    def traced(slowness_model: SlownessModel, before: int) -> Floats:
-        def report(done: int, _total: int) -> None:
-            if progress is not None:
-                progress(before + done, 2 * count)
-
-        rays = trace_distant(
-            slowness_model,
-            earth,
-            events,
-            stations,
-            pairs=pairs,
-            phases=PHASE,
-            method=method,
-            threads=threads,
-            progress=report,
+    models = [model]
+    if method == "bent":
+        models.append(model.with_slowness(model.reference))
+    rays = []
+    for number, traced in enumerate(models):
+        rays.append(
+            trace_distant(
+                traced,
+                earth,
+                events,
+                stations,
+                pairs=pairs,
+                phases=PHASE,
+                method=method,
+                threads=threads,
+                progress=_part(progress, number * count, len(models) * count),
+            )
         )
-        return np.asarray(rays.time_s)
+    reference_s = rays[1].time_s if method == "bent" else rays[0].predict_s(model.reference)
+    return np.asarray(rays[0].time_s - reference_s)
 
-    reference = model.with_slowness(model.reference)
-    return np.asarray(traced(model, 0) - traced(reference, count))
+
+def _part(progress: Progress | None, before: int, total: int) -> Progress | None:
+    """Report one part of the work as part of the whole."""
+    if progress is None:
+        return None
+    return lambda done, _part_total: progress(before + done, total)

@@ -9,17 +9,20 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from rayloom.demo.bodies import Body, strongest_body
+from rayloom.demo.coverage import covered_blocks, relative_to_layers
 from rayloom.demo.truth import DemoTruth
 from rayloom.errors import InputError
-from rayloom.model import SlownessModel
+from rayloom.model import BlockGrid, SlownessModel
 
 Flags = NDArray[np.bool_]
+Floats = NDArray[np.float64]
 
 HORIZONTAL_BAR_KM: Final = 30.0
 DEPTH_BAR_KM: Final = 40.0
 NOISE_RATIO_BAR: Final = (0.9, 1.2)
 CRUST_KM: Final = 35.0
-"""Base of the crust of ak135 (Kennett, Engdahl & Buland 1995)."""
+"""Base of the crust of ak135 (Kennett, Engdahl & Buland 1995): above it station
+terms and blocks cannot be told apart."""
 
 
 @dataclass(frozen=True)
@@ -114,7 +117,7 @@ def judge(
     residual_s: ArrayLike,
     uncertainty_s: ArrayLike,
     suspected: ArrayLike,
-    minimum_hits: int = 10,
+    minimum_rays: float = 10.0,
 ) -> DemoVerdict:
     """Compare a model and its fit with the truth.
 
@@ -123,7 +126,7 @@ def judge(
     truth : DemoTruth
         From :func:`write_survey`.
     model : SlownessModel
-        Any model of the highland; its field ``hits`` says which blocks count.
+        Any model of the highland; its field ``ray_length_km`` says which blocks count.
     pick_keys : (k,) array of str
         "EVENT NET.STA" of each pick used, to match the outliers.
     residual_s : (k,) array
@@ -132,8 +135,8 @@ def judge(
         Uncertainty of each pick, in seconds.
     suspected : (k,) bool array
         Picks that the inversion marked as outliers.
-    minimum_hits : int
-        Rays a block needs to belong to a body.
+    minimum_rays : float
+        Rays per cell of 50 km that a block's surroundings need for it to belong to a body.
 
     Returns
     -------
@@ -143,15 +146,17 @@ def judge(
     Raises
     ------
     InputError
-        If the model has no field ``hits`` or the arrays differ in length.
+        If the model has no field ``ray_length_km`` or the arrays differ in length.
 
     Notes
     -----
-    A body is found without looking at the truth: among the blocks below the
-    crust with enough rays, the strongest perturbation of its sign and all that
-    reach half of it and connect with it; centroid weighted by perturbation
-    times volume (:func:`rayloom.demo.bodies.strongest_body`). The truth only
-    says what to compare with.
+    A body is found without looking at the truth: perturbations are taken
+    relative to the median of their layer, since relative times do not see
+    layer means; among the covered blocks below the crust, the strongest one of
+    its sign and all that reach half of it and connect with it make the body;
+    its centroid is weighted by perturbation times volume
+    (:mod:`rayloom.demo.coverage`, :func:`rayloom.demo.bodies.strongest_body`).
+    The truth only says what to compare with.
     """
     keys = np.asarray(pick_keys, dtype=np.str_)
     residual = np.asarray(residual_s, dtype=np.float64)
@@ -159,12 +164,13 @@ def judge(
     marked = np.asarray(suspected, dtype=np.bool_)
     if not keys.shape == residual.shape == uncertainty.shape == marked.shape:
         raise InputError("expected one key, residual, uncertainty and mark per pick")
-    usable = _usable(model, minimum_hits)
+    usable = _usable(model, minimum_rays)
+    percent = relative_to_layers(model.perturbation_percent, usable)
     true_outlier = np.isin(keys, [f"{o.event} {o.network}.{o.station}" for o in truth.outliers])
     fitted = residual[~marked] / uncertainty[~marked]
     return DemoVerdict(
-        slow=_compare("slow column", truth.slow, model, usable, -1),
-        fast=_compare("fast root", truth.fast, model, usable, +1),
+        slow=_compare("slow column", truth.slow, model.grid, percent, usable, -1),
+        fast=_compare("fast root", truth.fast, model.grid, percent, usable, +1),
         noise_ratio=float(np.sqrt(np.mean(fitted**2))),
         picks_fitted=int(fitted.size),
         outliers_named=int(np.sum(true_outlier & marked)),
@@ -173,18 +179,21 @@ def judge(
     )
 
 
-def _usable(model: SlownessModel, minimum_hits: int) -> Flags:
-    """Blocks below the crust with enough rays."""
-    if "hits" not in model.fields:
+def _usable(model: SlownessModel, minimum_rays: float) -> Flags:
+    """Mark the covered blocks below the crust."""
+    if "ray_length_km" not in model.fields:
         raise InputError(
-            "the model has no field 'hits'; judge the model that an inversion returns"
+            "the model has no field 'ray_length_km'; judge the model that an inversion returns"
         )
     below = model.grid.depth_edges_km[:-1] >= CRUST_KM - 0.01
-    return np.asarray((model.fields["hits"] >= minimum_hits) & below)
+    covered = covered_blocks(model.grid, model.fields["ray_length_km"], minimum_rays=minimum_rays)
+    return np.asarray(covered & below)
 
 
-def _compare(name: str, true: Body, model: SlownessModel, usable: Flags, sign: int) -> BodyVerdict:
-    found = strongest_body(model.grid, model.perturbation_percent, usable, sign)
+def _compare(
+    name: str, true: Body, grid: BlockGrid, percent: Floats, usable: Flags, sign: int
+) -> BodyVerdict:
+    found = strongest_body(grid, percent, usable, sign)
     if found is None:
         return BodyVerdict(name, true, None, float("nan"), float("nan"))
     horizontal_km = float(np.hypot(found.east_km - true.east_km, found.north_km - true.north_km))
