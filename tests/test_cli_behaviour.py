@@ -107,8 +107,11 @@ def test_ctrl_c_says_how_to_resume(tmp_path: Path, monkeypatch: pytest.MonkeyPat
 
 
 @pytest.mark.skipif(os.name == "nt", reason="signals differ there")
-def test_a_run_that_is_interrupted_goes_on_to_the_same_model(tmp_path: Path) -> None:
-    """A real process, a real SIGINT: nothing half-written, and the same bits after resuming."""
+@pytest.mark.parametrize("request_to_stop", [signal.SIGINT, signal.SIGTERM])
+def test_a_run_that_is_interrupted_goes_on_to_the_same_model(
+    tmp_path: Path, request_to_stop: signal.Signals
+) -> None:
+    """A real process, a real signal: nothing half-written, and the same bits after resuming."""
     files = write_small_survey(tmp_path)
     whole, broken = (write_run_folder(tmp_path / name, files) for name in ("whole", "broken"))
     assert CliRunner().invoke(main, ["run", str(whole)]).exit_code == 0
@@ -119,7 +122,7 @@ def test_a_run_that_is_interrupted_goes_on_to_the_same_model(tmp_path: Path) -> 
         deadline = time.monotonic() + 60.0
         while not any(checkpoints.glob("*.npz")) and time.monotonic() < deadline:
             time.sleep(0.005)
-        process.send_signal(signal.SIGINT)
+        process.send_signal(request_to_stop)
         _, told = process.communicate(timeout=60)
     assert process.returncode == 130
     assert f"rayloom run {broken}" in told

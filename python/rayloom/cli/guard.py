@@ -1,12 +1,15 @@
 """What a person sees when something goes wrong, and the exit code it carries.
 
 0 all went well; 2 something the person can mend; 1 an error of the program, whose
-trace goes to a log file and never to the screen; 130 stopped with Ctrl-C.
+trace goes to a log file and never to the screen; 130 stopped with Ctrl-C or by the
+system (SIGTERM).
 """
 
 from __future__ import annotations
 
+import signal
 import tempfile
+import threading
 import traceback
 from datetime import UTC, datetime
 from pathlib import Path
@@ -32,7 +35,9 @@ class GuardedGroup(TaughtGroup):
     """A group of commands that turns every error into one message and an exit code."""
 
     def invoke(self, ctx: click.Context) -> Any:
-        """Run the command."""
+        """Run the command; a request to terminate is taken like Ctrl-C."""
+        if threading.current_thread() is threading.main_thread():
+            signal.signal(signal.SIGTERM, signal.default_int_handler)
         try:
             return super().invoke(ctx)
         except (click.ClickException, click.exceptions.Exit, click.Abort):
