@@ -22,6 +22,14 @@ const RETRY_SLACK: f64 = 0.1;
 /// transits).
 const FACE_SAG: f64 = 0.01;
 
+/// A coarse search ends at this factor on the undisturbed time through the model
+/// …
+const LEG_STRETCH: f64 = 1.25;
+/// … plus this many block transits.
+const LEG_MARGIN: f64 = 2.0;
+/// Steps of the integral for the undisturbed time.
+const LEG_STEPS: usize = 24;
+
 /// How finely to search and how hard to refine.
 #[derive(Debug, Clone, Copy)]
 pub struct Quality {
@@ -167,8 +175,9 @@ impl<'a, C: Chart> Tracer<'a, C> {
     where
         'a: 'b,
     {
+        let limit_s = self.latest_leg(receiver, beginnings);
         self.coarse
-            .run(receiver, f32::INFINITY, &mut workspace.coarse, monitor)?;
+            .run(receiver, limit_s as f32, &mut workspace.coarse, monitor)?;
         if let Some(surface) = self.surface {
             surface.pick_times(workspace.coarse.times(), &mut workspace.corner_times);
         }
@@ -179,6 +188,27 @@ impl<'a, C: Chart> Tracer<'a, C> {
             monitor.advance(1);
         }
         Ok(rays)
+    }
+
+    /// An upper bound on the time (s) that any of the rays spends in the model:
+    /// that of the undisturbed wave below the receiver, generously stretched.
+    fn latest_leg(&self, receiver: Vec3, beginnings: &[Beginning<'_>]) -> f64 {
+        let depths = self.blocks.edges(2);
+        let base = depths[depths.len() - 1];
+        let mut latest = 0.0_f64;
+        for beginning in beginnings {
+            match beginning {
+                Beginning::Nowhere => {}
+                Beginning::Point(_) => return f64::INFINITY,
+                Beginning::Wave { incoming, .. } => {
+                    match undisturbed_leg(*incoming, receiver, base) {
+                        Some(leg) => latest = latest.max(leg),
+                        None => return f64::INFINITY,
+                    }
+                }
+            }
+        }
+        LEG_STRETCH * latest + LEG_MARGIN * self.transit_s
     }
 
     /// The path of the coarse graph alone, from a point to a receiver.
@@ -305,4 +335,18 @@ impl<'a, C: Chart> Tracer<'a, C> {
         };
         fine.run(start, receiver, bound, &mut workspace.fine)
     }
+}
+
+/// Time (s) of the undisturbed wave from the depth `base` (km) up to a
+/// receiver, along a ray of the slowness vector found below the receiver:
+/// dt/dz = |∇T|² / |∂T/∂z|.
+fn undisturbed_leg(incoming: &dyn Incoming, receiver: Vec3, base: f64) -> Option<f64> {
+    let step = (base - receiver[2]) / LEG_STEPS as f64;
+    let mut time = 0.0;
+    for k in 0..LEG_STEPS {
+        let depth = receiver[2] + step * (k as f64 + 0.5);
+        let gradient = incoming.at([receiver[0], receiver[1], depth])?.gradient;
+        time += step * crate::vec3::dot(gradient, gradient) / gradient[2].abs();
+    }
+    Some(time)
 }

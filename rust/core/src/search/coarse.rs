@@ -10,8 +10,9 @@ use crate::error::Result;
 use crate::frame::Chart;
 use crate::lattice::Lattice;
 use crate::monitor::Monitor;
-use crate::relax::{Changed, Tabulated, relax, relax_tabulated};
+use crate::relax::{Changed, relax, relax_tabulated};
 use crate::search::buckets::BucketQueue;
+use crate::search::face_kernel::Tabulated;
 use crate::vec3::Vec3;
 
 /// Visits between two looks at the monitor.

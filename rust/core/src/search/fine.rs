@@ -12,10 +12,11 @@ use crate::blocks::{Blocks, Cell, Side, face_axes};
 use crate::frame::Chart;
 use crate::lattice::Lattice;
 use crate::path::Path;
-use crate::relax::{Tabulated, lowered, relax_face};
+use crate::relax::lowered;
 use crate::search::box_tables::{BoxTables, FaceLayout, RowIndex, Rows, rows_between};
 use crate::search::boxes::BoxSet;
 use crate::search::buckets::BucketQueue;
+use crate::search::face_kernel::{Tabulated, relax_face};
 use crate::vec3::Vec3;
 
 const UNKNOWN: u32 = u32::MAX;

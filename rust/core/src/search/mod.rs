@@ -7,5 +7,6 @@ pub mod box_tables;
 pub mod boxes;
 pub mod buckets;
 pub mod coarse;
+pub mod face_kernel;
 pub mod fine;
 mod fine_backtrack;
