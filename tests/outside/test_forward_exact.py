@@ -1,5 +1,7 @@
 """Traced rays against closed forms and the explicit graph."""
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 from scipy.sparse import coo_array
@@ -15,7 +17,7 @@ def _flat_model(edges_km, velocity_km_s):
     fine = np.linspace(0.0, 1.0, 41)
     layers = [
         np.mean(1.0 / velocity_km_s(top + (bottom - top) * (fine[:-1] + 0.0125)))
-        for top, bottom in zip(depth_edges[:-1], depth_edges[1:], strict=True)
+        for top, bottom in pairwise(depth_edges)
     ]
     return rl.SlownessModel(grid, np.broadcast_to(layers, grid.shape))
 
@@ -23,7 +25,11 @@ def _flat_model(edges_km, velocity_km_s):
 @pytest.mark.parametrize("quality", ["standard", "thorough"])
 def test_homogeneous_times_are_distance_over_velocity(quality):
     """Definition of velocity; every ray within 0.05 ms."""
-    edges = (np.arange(-60.0, 61.0, 15.0), np.arange(-45.0, 46.0, 15.0), np.arange(0.0, 91.0, 15.0))
+    edges = (
+        np.arange(-60.0, 61.0, 15.0),
+        np.arange(-45.0, 46.0, 15.0),
+        np.arange(0.0, 91.0, 15.0),
+    )
     model = _flat_model(edges, lambda depth: np.full_like(depth, 6.0))
     random = np.random.default_rng(3)
     sources = random.uniform([-59, -44, 1], [59, 44, 89], (6, 3))
@@ -124,7 +130,11 @@ def _explicit_times(slowness, step_km, source, receivers, nodes_per_edge=2):
 
 def test_a_slow_body_delays_less_than_first_order_and_a_fast_one_advances_more():
     """Fermat asymmetry: |bent(−3 %)| ≤ |first order| ≤ |bent(+3 %)|."""
-    edges = (np.arange(-90.0, 91.0, 15.0), np.arange(-90.0, 91.0, 15.0), np.arange(0.0, 211.0, 15.0))
+    edges = (
+        np.arange(-90.0, 91.0, 15.0),
+        np.arange(-90.0, 91.0, 15.0),
+        np.arange(0.0, 211.0, 15.0),
+    )
     background = _flat_model(edges, lambda depth: np.full_like(depth, 8.0))
     centre = background.grid.centres - [0.0, 0.0, 105.0]
     body = (np.linalg.norm(centre, axis=1) < 50.0).reshape(background.grid.shape)
@@ -135,9 +145,7 @@ def test_a_slow_body_delays_less_than_first_order_and_a_fast_one_advances_more()
     delays = {}
     for percent in (-3.0, 3.0):
         slowness = background.slowness_s_per_km / np.where(body, 1.0 + percent / 100.0, 1.0)
-        bent = rl.trace(
-            background.with_slowness(slowness), source, receiver, quality="thorough"
-        )
+        bent = rl.trace(background.with_slowness(slowness), source, receiver, quality="thorough")
         first_order = straight.predict_s(slowness) - straight.time_s
         delays[percent] = (bent.time_s - straight.time_s)[0], first_order[0]
     bent_slow, first_slow = delays[-3.0]

@@ -10,7 +10,7 @@ from rayloom.inversion.assembly import block_prior, build_problem
 from rayloom.inversion.elimination import GroupMeans
 from rayloom.inversion.forward_map import ForwardMap, Prediction, Report
 from rayloom.inversion.groups import ParameterGroup
-from rayloom.inversion.invert import invert
+from rayloom.inversion.inverting import invert
 from rayloom.inversion.outer import run_outer_loop
 from rayloom.inversion.priors import (
     IndependentPrior,
