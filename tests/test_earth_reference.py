@@ -126,7 +126,10 @@ def test_shapes_and_missing_values(earth: ReferenceEarth) -> None:
 @pytest.mark.parametrize(
     ("arguments", "message"),
     [
-        (("PPP", 50.0), "phase: expected one of P, S, got 'PPP'"),
+        (
+            ("PPP", 50.0),
+            "phase: expected one of P, Pdiff, PcP, PKPdf, pP, sP, S, ScS, SKS, got 'PPP'",
+        ),
         (("P", 181.0), "distance_deg: expected 0 to 180 degrees, got 181"),
         (("P", 50.0, 3000.0), "source_depth_km: expected -12 to 2891.5 km, got 3000"),
         (("P", 50.0, np.nan), "source_depth_km: expected -12 to 2891.5 km, got nan"),

@@ -104,7 +104,7 @@ def test_rays_that_cannot_exist_are_counted_with_their_reason(distant):
     assert np.isnan(rays.time_s[~rays.traced]).all()
     assert rays.problems == {
         "station outside the blocks": 3,
-        "no direct wave enters the blocks": 3,
+        "no wave of the phase enters the blocks": 3,
     }
     stored = np.diff(rays.path_lengths.indptr)
     assert (stored[~rays.traced] == 0).all()

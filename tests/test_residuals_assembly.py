@@ -261,8 +261,9 @@ def test_windows_merge_with_the_usual_ones_and_warn_when_wide(
     survey: Survey, earth: ReferenceEarth
 ) -> None:
     settings = ResidualSettings(distance_min_deg={"P": 20.0}, distance_max_deg={"S": 85.0})
-    assert settings.distance_min_deg == {"P": 20.0, "S": 28.0}
-    assert settings.distance_max_deg == {"P": 95.0, "S": 85.0}
+    assert settings.windows_deg["P"] == (20.0, 95.0)
+    assert settings.windows_deg["S"] == (28.0, 85.0)
+    assert settings.windows_deg["PKPdf"] == (120.0, 180.0)
     notices = compute_residuals(survey, earth, settings).notices
     wide = [notice.detail for notice in notices if notice.what == "wide_window"]
     assert len(wide) == 2

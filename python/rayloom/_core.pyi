@@ -1,4 +1,4 @@
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import final
 
 import numpy as np
@@ -66,6 +66,7 @@ class LayeredEarth:
     def ellipticity_s(
         self,
         phase: str,
+        distance_rad: NDArray[np.float64],
         ray_parameter_s: NDArray[np.float64],
         source_depth_km: NDArray[np.float64],
         latitude_rad: NDArray[np.float64],
@@ -73,19 +74,18 @@ class LayeredEarth:
     ) -> NDArray[np.float64]: ...
     def ellipticity(self, radius_km: NDArray[np.float64]) -> NDArray[np.float64]: ...
     @staticmethod
-    def phases() -> list[tuple[str, str]]: ...
+    def phases() -> list[tuple[str, str, str | None]]: ...
 
 @final
 class WavefrontTable:
     def __new__(
         cls,
-        model: RadialModel,
+        earth: LayeredEarth,
+        phase: str,
         source_depth_km: float,
         *,
-        top_km: float,
-        bottom_km: float,
-        min_distance_rad: float,
-        max_distance_rad: float,
+        depths_km: tuple[float, float],
+        distances_rad: tuple[float, float],
     ) -> WavefrontTable: ...
     def at(
         self, distance_rad: NDArray[np.float64], depth_km: NDArray[np.float64]
@@ -138,7 +138,8 @@ def trace_between(
 ) -> RayArrays: ...
 def trace_distant(
     model: BlockModel,
-    radial: RadialModel,
+    earth: LayeredEarth,
+    phases: Sequence[str],
     epicentres_km: NDArray[np.float64],
     source_depths_km: NDArray[np.float64],
     stations_km: NDArray[np.float64],

@@ -11,10 +11,12 @@ from rayloom.earth.geodesy import (
     geographic_latitude_deg,
 )
 from rayloom.earth.model_table import ModelTable
+from rayloom.earth.phases import PHASES, phase_wave, standard_phase
 from rayloom.earth.reference import ReferenceEarth
 from rayloom.earth.time_table import TimeTable
 
 __all__ = [
+    "PHASES",
     "DistanceAzimuth",
     "ModelTable",
     "ReferenceEarth",
@@ -22,4 +24,6 @@ __all__ = [
     "distance_azimuth_deg",
     "geocentric_latitude_deg",
     "geographic_latitude_deg",
+    "phase_wave",
+    "standard_phase",
 ]

@@ -2,27 +2,26 @@
 
 from __future__ import annotations
 
-from typing import Final
-
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from rayloom._core import LayeredEarth, WavefrontTable
+from rayloom._core import WavefrontTable
 from rayloom.earth.checks import broadcast, require_range
 from rayloom.earth.geodesy import checked_latitude_deg
+from rayloom.earth.phases import phase_wave, standard_phase
 from rayloom.earth.structure import EarthStructure
 from rayloom.earth.time_table import TimeTable
 from rayloom.errors import InputError
 from rayloom.units import EARTH_RADIUS_KM
-
-_WAVE_OF: Final = dict(LayeredEarth.phases())
 
 
 class ReferenceEarth(EarthStructure):
     """A spherical Earth with velocities linear in radius between tabulated depths.
 
     Rays are solved for exactly: times carry no interpolation error. The first
-    arrival over all branches of a phase counts.
+    arrival over all branches of a phase counts. Phases are P, PcP, PKPdf (or
+    PKIKP), pP, sP, S, ScS, SKS, and Pdiff, which grazes the core and runs along
+    it at the speed of the mantle above; pP and sP need a source below sea level.
 
     Parameters
     ----------
@@ -58,8 +57,8 @@ class ReferenceEarth(EarthStructure):
 
         Parameters
         ----------
-        phase : {"P", "S"}
-            Phase.
+        phase : str
+            One of :data:`rayloom.earth.PHASES` or an alias.
         distance_deg : array_like
             Distance, 0 to 180 degrees; NaN gives NaN.
         source_depth_km, receiver_depth_km : array_like
@@ -135,7 +134,7 @@ class ReferenceEarth(EarthStructure):
         """
         parameter = self.ray_parameter(phase, distance_deg, source_depth_km, receiver_depth_km)
         (depth,) = broadcast(receiver_depth_km=receiver_depth_km)
-        velocity = self.velocity_km_s(depth, _WAVE_OF[phase])
+        velocity = self.velocity_km_s(depth, phase_wave(phase))
         sine: NDArray[np.float64] = parameter * velocity / (EARTH_RADIUS_KM - depth)
         return np.degrees(np.arcsin(sine))
 
@@ -151,8 +150,8 @@ class ReferenceEarth(EarthStructure):
 
         Parameters
         ----------
-        phase : {"P", "S"}
-            Phase.
+        phase : str
+            One of :data:`rayloom.earth.PHASES` or an alias.
         distance_deg, source_depth_km : array_like
             Distance in degrees and depth in km.
         source_latitude_deg : array_like
@@ -192,6 +191,7 @@ class ReferenceEarth(EarthStructure):
         parameter = self.ray_parameter(phase, distance, depth)
         delay = self._core.ellipticity_s(
             phase,
+            np.radians(distance.ravel()),
             parameter.ravel(),
             depth.ravel(),
             np.radians(latitude.ravel()),
@@ -210,8 +210,8 @@ class ReferenceEarth(EarthStructure):
 
         Parameters
         ----------
-        phase : {"P", "S"}
-            Phase.
+        phase : str
+            One of :data:`rayloom.earth.PHASES` or an alias.
         distance_deg, source_depth_km : array_like
             Distance in degrees and depth in km.
         elevation_km : array_like
@@ -234,7 +234,7 @@ class ReferenceEarth(EarthStructure):
         """
         (height,) = broadcast(elevation_km=elevation_km)
         parameter = self.ray_parameter(phase, distance_deg, source_depth_km)
-        slowness = 1.0 / self.velocity_km_s(0.0, _WAVE_OF[phase])
+        slowness = 1.0 / self.velocity_km_s(0.0, phase_wave(phase))
         return height * np.sqrt(slowness**2 - (parameter / EARTH_RADIUS_KM) ** 2)
 
     def time_table(
@@ -249,8 +249,8 @@ class ReferenceEarth(EarthStructure):
 
         Parameters
         ----------
-        phase : {"P", "S"}
-            Phase.
+        phase : str
+            One of :data:`rayloom.earth.PHASES` or an alias.
         source_depth_km : float
             Depth of the source.
         distance_deg : tuple of float
@@ -268,7 +268,7 @@ class ReferenceEarth(EarthStructure):
             If the phase is unknown, a depth leaves crust and mantle or a range
             is empty.
         """
-        _require_phase(phase)
+        phase_wave(phase)
         self._require_depth("source_depth_km", np.asarray(source_depth_km, dtype=np.float64))
         self._require_depth("receiver_depth_km", np.asarray(receiver_depth_km, dtype=np.float64))
         if not receiver_depth_km[0] < receiver_depth_km[1]:
@@ -278,14 +278,15 @@ class ReferenceEarth(EarthStructure):
                 f"distance_deg: expected a rising pair in 0 to 180 degrees, got {distance_deg}"
             )
         table = WavefrontTable(
-            self._mantles[_WAVE_OF[phase]],
+            self._core,
+            phase,
             source_depth_km,
-            top_km=receiver_depth_km[0],
-            bottom_km=receiver_depth_km[1],
-            min_distance_rad=np.radians(distance_deg[0]),
-            max_distance_rad=np.radians(distance_deg[1]),
+            depths_km=receiver_depth_km,
+            distances_rad=(np.radians(distance_deg[0]), np.radians(distance_deg[1])),
         )
-        return TimeTable(phase, source_depth_km, distance_deg, receiver_depth_km, table)
+        return TimeTable(
+            standard_phase(phase), source_depth_km, distance_deg, receiver_depth_km, table
+        )
 
     def _arrivals(
         self,
@@ -294,7 +295,7 @@ class ReferenceEarth(EarthStructure):
         source_depth_km: ArrayLike,
         receiver_depth_km: ArrayLike,
     ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-        _require_phase(phase)
+        phase_wave(phase)
         distance, source, receiver = broadcast(
             distance_deg=distance_deg,
             source_depth_km=source_depth_km,
@@ -307,8 +308,3 @@ class ReferenceEarth(EarthStructure):
             phase, np.radians(distance.ravel()), source.ravel(), receiver.ravel()
         )
         return time.reshape(distance.shape), parameter.reshape(distance.shape)
-
-
-def _require_phase(phase: str) -> None:
-    if phase not in _WAVE_OF:
-        raise InputError(f"phase: expected one of {', '.join(_WAVE_OF)}, got {phase!r}")

@@ -150,6 +150,11 @@ class EarthStructure:
         """Depths at which the P or S velocity jumps, km, rising."""
         return self._table.discontinuities_km
 
+    @property
+    def layered_earth(self) -> LayeredEarth:
+        """The whole Earth, as the numerical core takes it."""
+        return self._core
+
     def mantle_model(self, wave: str = "P") -> RadialModel:
         """Velocity of one wave type above the core, as the numerical core takes it.
 

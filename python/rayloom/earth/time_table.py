@@ -13,7 +13,7 @@ from rayloom.earth.checks import broadcast
 
 @dataclass(frozen=True)
 class TimeTable:
-    """First arrivals of a direct phase from one source depth, by look-up.
+    """First arrivals of a phase from one source depth, by look-up.
 
     For many points of one source; :meth:`ReferenceEarth.time_table` makes it.
     Interpolation is bicubic in distance and depth, inside the layers of the
@@ -22,7 +22,7 @@ class TimeTable:
     Attributes
     ----------
     phase : str
-        ``"P"`` or ``"S"``.
+        Its usual name.
     source_depth_km : float
         Depth of the source.
     distance_deg : tuple of float

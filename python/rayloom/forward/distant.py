@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from rayloom import _core
-from rayloom.earth import ReferenceEarth
+from rayloom.earth import PHASES, ReferenceEarth, phase_wave, standard_phase
 from rayloom.errors import InputError
 from rayloom.forward.core_arrays import block_model, checked_pairs, points_km, rays_of
 from rayloom.forward.local import require_choice
@@ -20,13 +20,17 @@ from rayloom.model import SlownessModel
 from rayloom.survey import Events, Stations
 
 Floats = NDArray[np.float64]
+Names = NDArray[np.str_]
 Progress = Callable[[int, int], object]
 
 NEAREST_ENTRY_DEG = 25.0
-"""Closer than this the upper mantle's triplications make the incoming wave ambiguous."""
+"""Closer than this the upper mantle's triplications make P and S ambiguous."""
+
+DIRECT = ("P", "S")
+"""Phases that this distance holds for."""
 
 OUTSIDE = "station outside the blocks"
-NO_WAVE = "no direct wave enters the blocks"
+NO_WAVE = "no wave of the phase enters the blocks"
 TOO_NEAR = f"ray enters closer than {NEAREST_ENTRY_DEG:g}° to the event"
 
 
@@ -49,7 +53,7 @@ def trace_distant(
 
     Outside the blocks the wave runs through the one-dimensional Earth; it enters
     through the base or a side, wherever the sum of both times is least, but only
-    where it travels upwards and inwards, and nowhere closer than 25° to the event.
+    where it travels upwards and inwards; P and S nowhere closer than 25° to the event.
 
     Parameters
     ----------
@@ -64,7 +68,8 @@ def trace_distant(
     pairs : array_like of int, shape (k, 2), optional
         Rows of event and station; all pairs, event by event, by default.
     phases : str or array_like of str, shape (k,), optional
-        Phase of every pair; of the model's wave type.
+        Phase of every pair, one that arrives as the model's wave type: P, Pdiff, PcP,
+        PKPdf, pP or sP in a model of P velocity, S, ScS or SKS in one of S velocity.
     method : {"bent", "reference", "straight"}
         Rays of least time in the model; rays of least time in the reference model,
         timed in the model; or chords from the reference rays' entry points.
@@ -97,10 +102,19 @@ def trace_distant(
     require_choice("method", method, get_args(DistantMethod))
     require_choice("quality", quality, get_args(Quality))
     pair_rows = checked_pairs(pairs, len(events), len(stations))
-    _require_wave(model, phases, len(pair_rows))
+    names = _phase_names(model, phases, len(pair_rows))
     traced_model = model if method == "bent" else model.with_slowness(model.reference)
     rays = _first_arrivals(
-        traced_model, earth, events, stations, pair_rows, quality, face_nodes, threads, progress
+        traced_model,
+        earth,
+        events,
+        stations,
+        pair_rows,
+        names,
+        quality,
+        face_nodes,
+        threads,
+        progress,
     )
     if method == "straight":
         rays = _chords(model, rays, stations, pair_rows)
@@ -111,19 +125,23 @@ def trace_distant(
     return rays
 
 
-def _require_wave(model: SlownessModel, phases: str | ArrayLike, count: int) -> None:
-    names = np.unique(np.asarray(phases, dtype=str))
+def _phase_names(model: SlownessModel, phases: str | ArrayLike, count: int) -> Names:
+    """Usual name of the phase of every pair."""
     if np.ndim(phases) > 0 and np.shape(phases) != (count,):
         raise InputError(
             f"expected one phase per pair ({count}), got shape {np.shape(phases)}", where="phases"
         )
-    foreign = [str(name) for name in names if name != model.wave]
+    given, number = np.unique(np.asarray(phases, dtype=np.str_), return_inverse=True)
+    usual = [standard_phase(str(name)) for name in given]
+    fitting = [name for name in PHASES if phase_wave(name) == model.wave]
+    foreign = [name for name in usual if name not in fitting]
     if foreign:
         raise InputError(
             f"phase {foreign[0]!r} does not fit a model of {model.wave} velocity; "
-            f"expected {model.wave!r}",
+            f"expected {', '.join(fitting)}",
             where="phases",
         )
+    return np.broadcast_to(np.array(usual, dtype=np.str_)[number], count)
 
 
 def station_points(model: SlownessModel, stations: Stations) -> Floats:
@@ -144,6 +162,7 @@ def _first_arrivals(
     events: Events,
     stations: Stations,
     pairs: NDArray[np.uint32],
+    phases: Names,
     quality: Quality,
     face_nodes: int | None,
     threads: int | None,
@@ -158,20 +177,23 @@ def _first_arrivals(
     )
     epicentres = points_km(grid, np.column_stack([epicentre_x, epicentre_y, events.depth_km]))
     anywhere = points_km(grid, np.where(inside[:, None], points, grid.centres[0]))
+    wave_event, wave_phase, wave = _waves(pairs[used, 0], phases[used])
     arrays = _core.trace_distant(
         block_model(model),
-        earth.mantle_model(model.wave),
-        np.ascontiguousarray(epicentres[:, :2]),
-        np.ascontiguousarray(events.depth_km, dtype=np.float64),
+        earth.layered_earth,
+        wave_phase,
+        np.ascontiguousarray(epicentres[wave_event, :2]),
+        np.ascontiguousarray(events.depth_km[wave_event], dtype=np.float64),
         anywhere,
-        np.ascontiguousarray(pairs[used]),
+        np.column_stack([wave, pairs[used, 1]]),
         quality=quality,
         coarse_nodes=face_nodes,
         threads=threads,
         progress=progress,
     )
     rays = rays_of(grid, arrays)
-    far_enough = _entry_distance_deg(rays, events, pairs[used]) >= NEAREST_ENTRY_DEG
+    distance_deg = _entry_distance_deg(rays, events, pairs[used])
+    far_enough = (distance_deg >= NEAREST_ENTRY_DEG) | ~np.isin(phases[used], DIRECT)
     problems = {
         OUTSIDE: int((~used).sum()),
         NO_WAVE: int((~rays.traced).sum()),
@@ -182,6 +204,16 @@ def _first_arrivals(
         _spread(rays, used, kept),
         problems={reason: number for reason, number in problems.items() if number},
     )
+
+
+def _waves(
+    event: NDArray[np.uint32], phases: Names
+) -> tuple[NDArray[np.int64], list[str], NDArray[np.uint32]]:
+    """Event and phase of each distinct wave, and the wave of every pair."""
+    names, code = np.unique(phases, return_inverse=True)
+    count = max(len(names), 1)
+    waves, wave = np.unique(event.astype(np.int64) * count + code, return_inverse=True)
+    return waves // count, names[waves % count].tolist(), wave.astype(np.uint32)
 
 
 def _entry_distance_deg(rays: Rays, events: Events, pairs: NDArray[np.uint32]) -> Floats:

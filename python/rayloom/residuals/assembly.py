@@ -4,15 +4,19 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Final
 
 import numpy as np
 
-from rayloom.earth import ReferenceEarth
+from rayloom.earth import ReferenceEarth, phase_wave
 from rayloom.errors import InputError
 from rayloom.residuals.exclusions import Exclusions, Selection
 from rayloom.residuals.prediction import Geometry, Prediction, pair_geometry, predict
-from rayloom.residuals.readings import Readings, read_ready_residuals, travel_times_of
+from rayloom.residuals.readings import (
+    Readings,
+    read_ready_residuals,
+    travel_times_of,
+    with_usual_names,
+)
 from rayloom.residuals.screening import (
     screen_arrivals,
     screen_distances,
@@ -24,9 +28,6 @@ from rayloom.residuals.settings import ResidualSettings
 from rayloom.residuals.table import Residuals
 from rayloom.survey import Events, Notice, Stations, Survey, SurveySettings
 from rayloom.survey.tables import BoolArray, FloatArray
-
-WAVE_AT_STATION: Final = {"P": "P", "S": "S"}
-"""Wave type in which each phase reaches the station."""
 
 
 def compute_residuals(
@@ -140,6 +141,7 @@ def _assembled(
     ready: bool,
     notices: list[Notice],
 ) -> Residuals:
+    readings = with_usual_names(readings)
     screened = _screened(readings, stations, events, earth, settings, ready=ready)
     excluded = _exclusions(screened.selection, readings, stations, events)
     _check_any_left(screened.selection, excluded)
@@ -154,7 +156,7 @@ def _assembled(
         event_index=used.event_index,
         station_index=used.station_index,
         phase=used.phase,
-        wave=np.array([WAVE_AT_STATION[name] for name in used.phase.tolist()], dtype=np.str_),
+        wave=np.array([phase_wave(name) for name in used.phase.tolist()], dtype=np.str_),
         residual_s=screened.residual_s[kept],
         uncertainty_s=used.uncertainty_s,
         distance_deg=geometry.distance_deg,

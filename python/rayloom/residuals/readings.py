@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Final
 
 import numpy as np
 
+from rayloom.earth import standard_phase
 from rayloom.survey import Events, Notice, Stations, Survey, SurveySettings
 from rayloom.survey.columns import ColumnReader, Span
 from rayloom.survey.references import find_events, find_stations
@@ -53,6 +54,13 @@ class Readings(ColumnTable):
     phase: TextArray
     observed_s: FloatArray
     uncertainty_s: FloatArray
+
+
+def with_usual_names(readings: Readings) -> Readings:
+    """Call every phase by its usual name, so that aliases form one group with it."""
+    names, number = np.unique(readings.phase, return_inverse=True)
+    usual = np.array([standard_phase(str(name)) for name in names], dtype=np.str_)
+    return replace(readings, phase=usual[number])
 
 
 def travel_times_of(survey: Survey) -> Readings:

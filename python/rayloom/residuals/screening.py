@@ -11,15 +11,28 @@ from rayloom.survey import Notice
 from rayloom.survey.tables import BoolArray, FloatArray, IndexArray, TextArray
 
 TRIPLICATIONS_END_DEG = 25.0
-"""Distance at which the upper-mantle triplications of P and S end."""
+"""Distance at which the upper-mantle triplications end."""
 
-CORE_BEGINS_DEG = {"P": 98.0, "S": 82.0}
-"""Distance from which the core disturbs: the shadow of P, SKS overtaking S."""
+TRIPLICATED = frozenset({"P", "pP", "sP", "S"})
+"""Phases that turn in the mantle."""
+
+LATEST_DEG = {
+    "P": (98.0, "P enters the core shadow"),
+    "pP": (98.0, "pP enters the core shadow"),
+    "sP": (98.0, "sP enters the core shadow"),
+    "PcP": (75.0, "PcP closes up on P"),
+    "S": (82.0, "SKS arrives before S"),
+    "ScS": (75.0, "ScS closes up on S"),
+}
+"""Distance beyond which the core disturbs, and how."""
+
+SKS_LEADS_DEG = 82.0
+"""Distance from which SKS arrives before S."""
 
 
 def screen_phases(selection: Selection, phase: TextArray, settings: ResidualSettings) -> None:
     """Leave out phases that cannot be predicted."""
-    usable = sorted(settings.distance_min_deg)
+    usable = list(settings.windows_deg)
     unknown = ~np.isin(phase, usable)
     detail = [
         f"phase {name!r} is not used here; expected {', '.join(usable)}" for name in phase[unknown]
@@ -31,8 +44,7 @@ def screen_distances(
     selection: Selection, phase: TextArray, distance_deg: FloatArray, settings: ResidualSettings
 ) -> None:
     """Leave out picks outside the distance window of their phase."""
-    for name, low in settings.distance_min_deg.items():
-        high = settings.distance_max_deg[name]
+    for name, (low, high) in settings.windows_deg.items():
         outside = (phase == name) & ((distance_deg < low) | (distance_deg > high))
         detail = [
             f"distance {value:.2f} deg; {name} is used from {low:g} to {high:g} deg"
@@ -125,22 +137,27 @@ def _screen_gross(
 
 
 def window_notices(settings: ResidualSettings) -> list[Notice]:
-    """Warn of distance windows that reach where first arrivals get difficult."""
+    """Warn of distance windows that reach where arrivals get difficult."""
     notices = []
-    for phase, low in settings.distance_min_deg.items():
-        if low < TRIPLICATIONS_END_DEG:
-            detail = (
-                f"distance_min_deg of {phase} is {low:g}: below about "
-                f"{TRIPLICATIONS_END_DEG:g} deg arrivals of several branches mix "
-                "(upper-mantle triplications)"
-            )
+    for phase, (low, high) in settings.windows_deg.items():
+        found = _too_near(phase, low)
+        if found:
+            detail = f"distance_min_deg of {phase} is {low:g}: below about {found}"
             notices.append(Notice("warning", "wide_window", phase, detail))
-    for phase, high in settings.distance_max_deg.items():
-        if high > CORE_BEGINS_DEG[phase]:
-            what = "P enters the core shadow" if phase == "P" else "SKS arrives before S"
-            detail = (
-                f"distance_max_deg of {phase} is {high:g}: beyond about "
-                f"{CORE_BEGINS_DEG[phase]:g} deg {what}"
-            )
+        latest, what = LATEST_DEG.get(phase, (180.0, ""))
+        if high > latest:
+            detail = f"distance_max_deg of {phase} is {high:g}: beyond about {latest:g} deg {what}"
             notices.append(Notice("warning", "wide_window", phase, detail))
     return notices
+
+
+def _too_near(phase: str, low_deg: float) -> str:
+    """Distance below which a phase is difficult, and why; empty if it is not."""
+    if phase in TRIPLICATED and low_deg < TRIPLICATIONS_END_DEG:
+        return (
+            f"{TRIPLICATIONS_END_DEG:g} deg arrivals of several branches mix "
+            "(upper-mantle triplications)"
+        )
+    if phase == "SKS" and low_deg < SKS_LEADS_DEG:
+        return f"{SKS_LEADS_DEG:g} deg SKS arrives after S"
+    return ""

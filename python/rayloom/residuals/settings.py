@@ -6,10 +6,22 @@ from typing import Annotated, Final, Self
 
 from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
 
+from rayloom.earth import standard_phase
+
 Degrees = Annotated[float, Field(ge=0.0, le=180.0, allow_inf_nan=False)]
 
-USUAL_MIN_DEG: Final[dict[str, float]] = {"P": 28.0, "S": 28.0}
-USUAL_MAX_DEG: Final[dict[str, float]] = {"P": 95.0, "S": 80.0}
+USUAL_WINDOWS_DEG: Final = {
+    "P": (28.0, 95.0),
+    "Pdiff": (100.0, 120.0),
+    "PcP": (28.0, 70.0),
+    "PKPdf": (120.0, 180.0),
+    "pP": (28.0, 95.0),
+    "sP": (28.0, 95.0),
+    "S": (28.0, 80.0),
+    "ScS": (28.0, 70.0),
+    "SKS": (85.0, 140.0),
+}
+"""Least and largest distance of each phase (common practice)."""
 
 
 class ResidualSettings(BaseModel):
@@ -18,9 +30,11 @@ class ResidualSettings(BaseModel):
     Parameters
     ----------
     distance_min_deg, distance_max_deg : dict of str to float
-        Window of epicentral distance of each phase, in degrees. A phase not
-        named keeps its usual window: P 28 to 95, S 28 to 80 degrees, away from
-        the triplications of the upper mantle and from the core.
+        Ends of the window of epicentral distance, by phase, in degrees. A phase not
+        named keeps its usual window: P, pP and sP 28 to 95 and S 28 to 80
+        degrees, away from the triplications of the upper mantle and from the
+        core; PcP and ScS 28 to 70, before they close up on P and S; SKS 85 to
+        140, after S; Pdiff 100 to 120; PKPdf 120 to 180.
     min_picks_per_event : int
         Groups (event, phase) with fewer picks are left out.
     ellipticity : bool
@@ -35,10 +49,10 @@ class ResidualSettings(BaseModel):
     model_config = ConfigDict(extra="forbid", frozen=True)
 
     distance_min_deg: dict[str, Degrees] = Field(
-        default=USUAL_MIN_DEG, description="least distance of each phase, in degrees"
+        default={}, description="least distance of phases, in degrees"
     )
     distance_max_deg: dict[str, Degrees] = Field(
-        default=USUAL_MAX_DEG, description="largest distance of each phase, in degrees"
+        default={}, description="largest distance of phases, in degrees"
     )
     min_picks_per_event: int = Field(
         default=5, ge=2, description="groups (event, phase) with fewer picks are left out"
@@ -51,20 +65,18 @@ class ResidualSettings(BaseModel):
         description="picks further than this from their group's median are left out, in s",
     )
 
-    @field_validator("distance_min_deg")
+    @field_validator("distance_min_deg", "distance_max_deg")
     @classmethod
-    def _fill_min(cls, given: dict[str, float]) -> dict[str, float]:
-        return {**USUAL_MIN_DEG, **_known(given)}
-
-    @field_validator("distance_max_deg")
-    @classmethod
-    def _fill_max(cls, given: dict[str, float]) -> dict[str, float]:
-        return {**USUAL_MAX_DEG, **_known(given)}
+    def _by_usual_name(cls, given: dict[str, float]) -> dict[str, float]:
+        for phase in given:
+            if standard_phase(phase) not in USUAL_WINDOWS_DEG:
+                expected = ", ".join(USUAL_WINDOWS_DEG)
+                raise ValueError(f"phase {phase!r} is not known; expected {expected}")
+        return {standard_phase(phase): value for phase, value in given.items()}
 
     @model_validator(mode="after")
     def _windows_open(self) -> Self:
-        for phase, low in self.distance_min_deg.items():
-            high = self.distance_max_deg[phase]
+        for phase, (low, high) in self.windows_deg.items():
             if low >= high:
                 raise ValueError(
                     f"the distance window of {phase} is empty: {low:g} to {high:g} degrees; "
@@ -72,9 +84,13 @@ class ResidualSettings(BaseModel):
                 )
         return self
 
-
-def _known(given: dict[str, float]) -> dict[str, float]:
-    for phase in given:
-        if phase not in USUAL_MIN_DEG:
-            raise ValueError(f"phase {phase!r} is not known; expected {', '.join(USUAL_MIN_DEG)}")
-    return given
+    @property
+    def windows_deg(self) -> dict[str, tuple[float, float]]:
+        """Least and largest distance of every phase, in degrees."""
+        return {
+            phase: (
+                self.distance_min_deg.get(phase, low),
+                self.distance_max_deg.get(phase, high),
+            )
+            for phase, (low, high) in USUAL_WINDOWS_DEG.items()
+        }

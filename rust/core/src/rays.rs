@@ -1,9 +1,11 @@
 //! Whole data sets of rays, traced in parallel: [`RayBatch`].
 
+use std::f64::consts::PI;
+
 use rayon::prelude::*;
 
 use crate::blocks::Blocks;
-use crate::earth::{HIGHEST_KM, RadialModel, WavefrontTable};
+use crate::earth::{HIGHEST_KM, LayeredEarth, Phase, WavefrontTable};
 use crate::entry::{CornerTimes, EarthWave, Surface};
 use crate::error::{CoreError, Result};
 use crate::fermat::straight_path;
@@ -51,7 +53,7 @@ pub struct RayBatch {
 
 /// Margin (rad) around the distances of a model's corners, in a wave's table.
 const DISTANCE_MARGIN_RAD: f64 = 0.01;
-/// Distances (rad) between which the direct wave may enter a model.
+/// Distances (rad) between which a direct wave may enter a model.
 const ENTRY_DISTANCES_RAD: (f64, f64) = (0.30, 1.75);
 
 /// The waves of distant events on the way to a model.
@@ -62,29 +64,34 @@ pub struct DistantWaves {
 }
 
 impl DistantWaves {
-    /// Tabulates the first arrivals of events at `epicentres` (grid coordinates,
-    /// km) and `depths_km`, in the part of the Earth that holds the model.
+    /// Tabulates first arrivals of `phases` from events at `epicentres` (grid
+    /// coordinates, km) and `depths_km`, one of each per wave, in the part of the
+    /// Earth that holds the model.
     ///
     /// # Errors
-    /// [`CoreError::Invalid`] if an event lies outside the radial model or the
-    /// arrays' lengths disagree.
+    /// [`CoreError::Invalid`] if an event lies outside the mantle or the arrays'
+    /// lengths disagree.
     pub fn new(
         blocks: &Blocks<SphereChart>,
-        radial: &RadialModel,
+        earth: &LayeredEarth,
+        phases: &[&Phase],
         epicentres: &[[f64; 2]],
         depths_km: &[f64],
     ) -> Result<Self> {
-        if epicentres.len() != depths_km.len() {
+        if epicentres.len() != depths_km.len() || epicentres.len() != phases.len() {
             return Err(CoreError::invalid(
-                "source depths",
-                format!("{} values, one per epicentre", epicentres.len()),
-                depths_km.len().to_string(),
+                "phases and source depths",
+                format!("{} of each, one per epicentre", epicentres.len()),
+                format!("{} and {}", phases.len(), depths_km.len()),
             ));
         }
         let tables = epicentres
             .par_iter()
             .zip(depths_km)
-            .map(|(&epicentre, &depth_km)| wave_table(blocks, radial, epicentre, depth_km))
+            .zip(phases)
+            .map(|((&epicentre, &depth_km), phase)| {
+                wave_table(blocks, earth, phase, epicentre, depth_km)
+            })
             .collect::<Result<Vec<_>>>()?;
         Ok(Self {
             tables,
@@ -105,11 +112,12 @@ impl DistantWaves {
     }
 }
 
-/// The table of one wave over the model's distances; `None` if they all lie
-/// outside those at which a direct wave may enter.
+/// The table of one wave over the model's distances; `None` for a direct wave if
+/// they all lie outside those at which it may enter.
 fn wave_table(
     blocks: &Blocks<SphereChart>,
-    radial: &RadialModel,
+    earth: &LayeredEarth,
+    phase: &Phase,
     epicentre: [f64; 2],
     depth_km: f64,
 ) -> Result<Option<WavefrontTable>> {
@@ -123,15 +131,20 @@ fn wave_table(
             (near, far) = (near.min(distance), far.max(distance));
         }
     }
-    let near = (near - DISTANCE_MARGIN_RAD).max(ENTRY_DISTANCES_RAD.0);
-    let far = (far + DISTANCE_MARGIN_RAD).min(ENTRY_DISTANCES_RAD.1);
+    let allowed = if phase.is_direct() {
+        ENTRY_DISTANCES_RAD
+    } else {
+        (0.0, PI)
+    };
+    let near = (near - DISTANCE_MARGIN_RAD).max(allowed.0);
+    let far = (far + DISTANCE_MARGIN_RAD).min(allowed.1);
     if near >= far {
         return Ok(None);
     }
     let depths = blocks.edges(2);
     let top_km = depths[0].max(-HIGHEST_KM);
-    let bottom_km = depths[depths.len() - 1].min(radial.bottom_depth_km());
-    WavefrontTable::build(radial, depth_km, top_km, bottom_km, near, far).map(Some)
+    let bottom_km = depths[depths.len() - 1].min(earth.core_depth_km());
+    WavefrontTable::build(earth, phase, depth_km, (top_km, bottom_km), (near, far)).map(Some)
 }
 
 /// Traces rays between points inside a model. `pairs` holds indices into

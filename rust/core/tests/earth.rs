@@ -29,9 +29,9 @@ fn arrival(earth: &LayeredEarth, name: &str, degrees: f64, source: f64, receiver
 }
 
 fn table(earth: &LayeredEarth, source_km: f64, degrees: (f64, f64)) -> WavefrontTable {
-    let model = earth.mantle(rayloom_core::earth::Wave::P);
-    let (near, far) = (degrees.0.to_radians(), degrees.1.to_radians());
-    WavefrontTable::build(&model, source_km, -5.0, 700.0, near, far).unwrap()
+    let phase = Phase::named("P").unwrap();
+    let window = (degrees.0.to_radians(), degrees.1.to_radians());
+    WavefrontTable::build(earth, phase, source_km, (-5.0, 700.0), window).unwrap()
 }
 
 /// A smooth mantle with two discontinuities.
@@ -94,6 +94,46 @@ fn shear_waves_use_their_own_velocity() {
     let ratio = arrival(&earth, "S", 60.0, 100.0, 0.0).time_s
         / arrival(&earth, "P", 60.0, 100.0, 0.0).time_s;
     assert!((ratio - 1.8).abs() < 1e-9);
+}
+
+/// A reflected wave of straight rays bounces at half the distance: the law of
+/// cosines. A wave through the inner core
+/// needs one; it is then a chord, and turns by π at the centre.
+#[test]
+fn waves_of_a_uniform_earth_are_chords() {
+    let fluid = earth(&[(0.0, 8.0), (3000.0, 8.0)]);
+    let (core_km, angle) = (RADIUS_KM - 3000.0, f64::to_radians(30.0));
+    let product = 2.0 * RADIUS_KM * core_km * (angle / 2.0).cos();
+    let leg_km = (RADIUS_KM * RADIUS_KM + core_km * core_km - product).sqrt();
+    let found = arrival(&fluid, "PcP", 30.0, 0.0, 0.0);
+    assert!((found.time_s - 2.0 * leg_km / 8.0).abs() < 1e-7);
+    assert!(arrival(&fluid, "PKPdf", 150.0, 0.0, 0.0).time_s.is_nan());
+
+    let depth = [0.0, 3000.0, 3000.0, 5000.0, 5000.0, RADIUS_KM];
+    let shear = [4.0, 4.0, 0.0, 0.0, 4.0, 4.0];
+    let solid = LayeredEarth::new(&depth, &[8.0; 6], &shear, RADIUS_KM).unwrap();
+    for degrees in [160.0, 179.0, 179.99, 179.999_999, 180.0] {
+        let chord_km = 2.0 * RADIUS_KM * f64::to_radians(degrees / 2.0).sin();
+        let found = arrival(&solid, "PKIKP", degrees, 0.0, 0.0).time_s;
+        assert!((found - chord_km / 8.0).abs() < 1e-7, "{degrees} {found}");
+    }
+}
+
+/// Behind the core's edge a wave creeps along it: two tangents and an arc.
+#[test]
+fn diffraction_of_a_uniform_mantle() {
+    let earth = earth(&[(0.0, 8.0), (3000.0, 8.0)]);
+    let core_km = RADIUS_KM - 3000.0;
+    let tangent_km = (RADIUS_KM * RADIUS_KM - core_km * core_km).sqrt();
+    let edge = 2.0 * (core_km / RADIUS_KM).acos();
+    assert!(
+        arrival(&earth, "Pdiff", edge.to_degrees() - 0.1, 0.0, 0.0)
+            .time_s
+            .is_nan()
+    );
+    let arc = f64::to_radians(150.0) - edge;
+    let expected = (2.0 * tangent_km + core_km * arc) / 8.0;
+    assert!((arrival(&earth, "Pdiff", 150.0, 0.0, 0.0).time_s - expected).abs() < 1e-6);
 }
 
 /// A velocity that drops with depth casts a shadow; beyond it rays return.

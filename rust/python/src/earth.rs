@@ -64,7 +64,7 @@ impl RadialModel {
 /// Both wave types and the ellipticity of a whole Earth.
 #[pyclass(frozen, module = "rayloom._core")]
 pub struct LayeredEarth {
-    earth: earth::LayeredEarth,
+    pub earth: earth::LayeredEarth,
     profile: EllipticityProfile,
 }
 
@@ -125,12 +125,14 @@ impl LayeredEarth {
         Ok((time_s.into_pyarray(py), parameter_s.into_pyarray(py)))
     }
 
-    /// Change of travel time by ellipticity for rays of given parameters that
-    /// end at sea level.
+    /// Change of travel time by ellipticity for rays of given distances and
+    /// parameters that end at sea level.
+    #[expect(clippy::too_many_arguments, reason = "arrays of a Python call")]
     fn ellipticity_s<'py>(
         &self,
         py: Python<'py>,
         phase: &str,
+        distance_rad: PyReadonlyArray1<'py, f64>,
         ray_parameter_s: PyReadonlyArray1<'py, f64>,
         source_depth_km: PyReadonlyArray1<'py, f64>,
         latitude_rad: PyReadonlyArray1<'py, f64>,
@@ -142,6 +144,7 @@ impl LayeredEarth {
             source_depth_km: source_depth_km.as_slice()?,
             latitude_rad: latitude_rad.as_slice()?,
             azimuth_rad: azimuth_rad.as_slice()?,
+            distance_rad: distance_rad.as_slice()?,
         };
         let out = run_short(py, || {
             earth::ellipticity_s(
@@ -166,12 +169,12 @@ impl LayeredEarth {
         Ok(out.into_pyarray(py))
     }
 
-    /// Names of the phases known, and the wave as which each arrives.
+    /// Names of the phases known, the wave as which each arrives, and its alias.
     #[staticmethod]
-    fn phases() -> Vec<(&'static str, &'static str)> {
+    fn phases() -> Vec<(&'static str, &'static str, Option<&'static str>)> {
         PHASES
             .iter()
-            .map(|phase| (phase.name, wave_name(phase.arriving_wave())))
+            .map(|phase| (phase.name, wave_name(phase.arriving_wave()), phase.alias))
             .collect()
     }
 }
@@ -183,7 +186,7 @@ fn wave_name(wave: Wave) -> &'static str {
     }
 }
 
-fn phase_named(name: &str) -> PyResult<&'static Phase> {
+pub fn phase_named(name: &str) -> PyResult<&'static Phase> {
     Phase::named(name).ok_or_else(|| {
         let known = PHASES.map(|phase| phase.name).join(", ");
         unknown("phase", &format!("one of {known}"), name)
@@ -203,25 +206,19 @@ pub struct WavefrontTable {
 #[pymethods]
 impl WavefrontTable {
     #[new]
-    #[pyo3(signature = (model, source_depth_km, *, top_km, bottom_km, min_distance_rad, max_distance_rad))]
+    #[pyo3(signature = (earth, phase, source_depth_km, *, depths_km, distances_rad))]
     fn new(
         py: Python<'_>,
-        model: &RadialModel,
+        earth: &LayeredEarth,
+        phase: &str,
         source_depth_km: f64,
-        top_km: f64,
-        bottom_km: f64,
-        min_distance_rad: f64,
-        max_distance_rad: f64,
+        depths_km: (f64, f64),
+        distances_rad: (f64, f64),
     ) -> PyResult<Self> {
+        let phase = phase_named(phase)?;
+        let earth = &earth.earth;
         let table = run_short(py, || {
-            earth::WavefrontTable::build(
-                &model.model,
-                source_depth_km,
-                top_km,
-                bottom_km,
-                min_distance_rad,
-                max_distance_rad,
-            )
+            earth::WavefrontTable::build(earth, phase, source_depth_km, depths_km, distances_rad)
         })?;
         Ok(Self { table })
     }

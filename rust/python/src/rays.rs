@@ -9,7 +9,7 @@ use rayloom_core::frame::{FlatChart, SphereChart};
 use rayloom_core::rays::{self, Method, RayBatch};
 use rayloom_core::tracer::Quality;
 
-use crate::earth::RadialModel;
+use crate::earth::{LayeredEarth, phase_named};
 use crate::gate::{Progress, run_long};
 
 /// Edges and slowness of a block model, and the sphere it lies on.
@@ -127,10 +127,10 @@ fn trace_between(
     RayArrays::new(py, batch)
 }
 
-/// Rays of distant events: `epicentres_km` and `source_depths_km` place them,
-/// the radial model brings their waves to the blocks.
+/// Rays of distant events: `epicentres_km` and `source_depths_km` place them, the
+/// layered Earth brings one phase of each to the blocks.
 #[pyfunction]
-#[pyo3(signature = (model, radial, epicentres_km, source_depths_km, stations_km, pairs, *, quality, coarse_nodes=None, threads=None, progress=None))]
+#[pyo3(signature = (model, earth, phases, epicentres_km, source_depths_km, stations_km, pairs, *, quality, coarse_nodes=None, threads=None, progress=None))]
 #[expect(
     clippy::too_many_arguments,
     reason = "keyword arguments of a Python call"
@@ -138,7 +138,8 @@ fn trace_between(
 fn trace_distant(
     py: Python<'_>,
     model: &BlockModel,
-    radial: &RadialModel,
+    earth: &LayeredEarth,
+    phases: Vec<String>,
     epicentres_km: PyReadonlyArray2<'_, f64>,
     source_depths_km: PyReadonlyArray1<'_, f64>,
     stations_km: PyReadonlyArray2<'_, f64>,
@@ -151,9 +152,13 @@ fn trace_distant(
     let (epicentres, stations) = (rows(&epicentres_km)?, rows(&stations_km)?);
     let (depths_km, pairs) = (source_depths_km.as_slice()?, rows(&pairs)?);
     let quality = quality_named(quality, coarse_nodes)?;
+    let phases = phases
+        .iter()
+        .map(|name| phase_named(name))
+        .collect::<PyResult<Vec<_>>>()?;
     let batch = run_long(py, threads, &progress, |monitor| {
         let blocks = on_sphere(model)?;
-        let waves = rays::DistantWaves::new(blocks, &radial.model, epicentres, depths_km)?;
+        let waves = rays::DistantWaves::new(blocks, &earth.earth, &phases, epicentres, depths_km)?;
         rays::trace_distant(blocks, &waves, stations, pairs, quality, monitor)
     })?;
     RayArrays::new(py, batch)

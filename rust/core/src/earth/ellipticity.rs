@@ -10,10 +10,13 @@ use super::layered::LayeredEarth;
 use super::phase::Phase;
 use super::radial::Ending;
 use super::route::{Route, Span};
-use super::shell::{GAUSS_NODES, GAUSS_WEIGHTS, Path};
+use super::shell::{GAUSS_NODES, GAUSS_WEIGHTS, Path, Travel};
 use crate::error::{CoreError, Result};
 
-/// Sources from which rays set out.
+/// Smallest ray parameter followed, s/rad.
+const LEAST_PARAMETER_S: f64 = 1e-6;
+
+/// Sources from which rays set out, and how far these go.
 #[derive(Debug, Clone, Copy)]
 pub struct Departures<'a> {
     /// Depth of each source, km.
@@ -22,6 +25,8 @@ pub struct Departures<'a> {
     pub latitude_rad: &'a [f64],
     /// Azimuth of each ray at its source, rad.
     pub azimuth_rad: &'a [f64],
+    /// Angle between source and receiver, rad.
+    pub distance_rad: &'a [f64],
 }
 
 /// Change of travel time that ellipticity brings to rays that end at sea level,
@@ -46,10 +51,11 @@ pub fn ellipticity_s(
         departures.source_depth_km.len(),
         departures.latitude_rad.len(),
         departures.azimuth_rad.len(),
+        departures.distance_rad.len(),
     ];
     if lengths.iter().any(|&length| length != count) {
         return Err(CoreError::invalid(
-            "depths, latitudes and azimuths",
+            "depths, latitudes, azimuths and distances",
             format!("{count}, one per ray parameter"),
             format!("{lengths:?}"),
         ));
@@ -65,7 +71,18 @@ pub fn ellipticity_s(
                 angle_rad: 0.0,
                 delay_s: 0.0,
             };
-            walk.follow(&route, ray_parameter_s[i], earth.radius_km());
+            // A ray through the very centre turns at a point; one beside it does not.
+            let ray_parameter = match ray_parameter_s[i] {
+                p if p < LEAST_PARAMETER_S => LEAST_PARAMETER_S,
+                p => p,
+            };
+            let receiver_km = earth.radius_km();
+            walk.follow(
+                &route,
+                ray_parameter,
+                receiver_km,
+                departures.distance_rad[i],
+            );
             Ok(walk.delay_s)
         })
         .collect()
@@ -81,23 +98,50 @@ struct Walk<'a> {
 }
 
 impl Walk<'_> {
-    fn follow(&mut self, route: &Route<'_>, ray_parameter: f64, receiver_km: f64) {
+    fn follow(
+        &mut self,
+        route: &Route<'_>,
+        ray_parameter: f64,
+        receiver_km: f64,
+        distance_rad: f64,
+    ) {
         let last = Span {
             upper_km: receiver_km,
             ..route.last
         };
-        for span in route.fixed.iter().chain([&last]) {
-            let Some(mut paths) = span_paths(span, ray_parameter) else {
-                self.delay_s = f64::NAN;
-                return;
-            };
-            if span.rises {
-                paths.reverse();
-            }
-            for path in &paths {
-                self.pass(path, span.rises);
-            }
+        for span in &route.fixed {
+            self.cross(span, ray_parameter);
         }
+        if route.grazing_s.is_some() {
+            let mut grazing = [Travel::NONE];
+            route.travel(ray_parameter, &[receiver_km], &mut grazing);
+            let arc_rad = distance_rad - grazing[0].angle_rad;
+            self.glide(ray_parameter, last.lower_km, arc_rad);
+        }
+        self.cross(&last, ray_parameter);
+    }
+
+    /// Adds a span of the route; NaN if the ray does not take it.
+    fn cross(&mut self, span: &Span<'_>, ray_parameter: f64) {
+        let Some(mut paths) = span_paths(span, ray_parameter) else {
+            self.delay_s = f64::NAN;
+            return;
+        };
+        if span.rises {
+            paths.reverse();
+        }
+        for path in &paths {
+            self.pass(path, span.rises);
+        }
+    }
+
+    /// Adds an arc along a boundary, on which dT = p dΔ: −∫ f dT.
+    fn glide(&mut self, ray_parameter: f64, radius_km: f64, arc_rad: f64) {
+        for (node, weight) in GAUSS_NODES.iter().zip(GAUSS_WEIGHTS) {
+            let shift = self.shift(radius_km, self.angle_rad + node * arc_rad);
+            self.delay_s -= weight * ray_parameter * arc_rad * shift;
+        }
+        self.angle_rad += arc_rad;
     }
 
     /// Adds one stretch of ray inside a shell.
@@ -144,9 +188,9 @@ fn span_paths(span: &Span<'_>, ray_parameter: f64) -> Option<Vec<Path>> {
     let ((Ending::Turned(end), true) | (Ending::Reached(end), false)) = (ending, span.turns) else {
         return None;
     };
-    let paths = span.model.shells()[..=end].iter().filter_map(|shell| {
+    let paths = span.model.shells()[..=end].iter().flat_map(|shell| {
         let low_km = shell.bottom_km.max(span.lower_km);
-        shell.path(ray_parameter, low_km, shell.top_km.min(span.upper_km))
+        shell.paths(ray_parameter, low_km, shell.top_km.min(span.upper_km))
     });
     Some(paths.collect())
 }

@@ -1,7 +1,9 @@
 //! A fan of rays of one phase from one source depth to many receiver radii:
 //! [`Fan`], sampled so that travel between neighbours is a smooth curve.
 
-use super::route::Route;
+use std::f64::consts::PI;
+
+use super::route::{NUDGE, Route};
 use super::shell::Travel;
 
 /// Steps per branch of the travel-time curve, for each [`SPREAD`] of its rays.
@@ -9,10 +11,6 @@ const STEPS: usize = 8;
 
 /// Relative range of ray parameters that [`STEPS`] suffice for.
 const SPREAD: f64 = 0.02;
-
-/// Distance between a sampled ray parameter and the critical one beside it,
-/// relative, so that the sample falls on the intended side.
-const NUDGE: f64 = 1e-13;
 
 /// Rays on the two sides of a critical ray parameter that land closer than this
 /// belong to one curve, rad. Across a shadow zone they land far apart.
@@ -53,6 +51,10 @@ impl Fan {
             receiver_count: receivers_km.len(),
             ..Self::default()
         };
+        if let Some(grazing_s) = route.grazing_s {
+            fan.push(diffracted(route, receivers_km, grazing_s));
+            return fan;
+        }
         for pair in route.critical_s(receivers_km).windows(2) {
             let range = (pair[0], pair[1]);
             if route.start(f64::midpoint(range.0, range.1)).is_none() {
@@ -110,6 +112,20 @@ fn branch(
         route.travel(*p, receivers_km, row);
     }
     (ray_parameter_s, travel)
+}
+
+/// The grazing ray, and the same after it ran along the boundary to the antipode.
+fn diffracted(route: &Route<'_>, receivers_km: &[f64], grazing_s: f64) -> (Vec<f64>, Vec<Travel>) {
+    let mut nearest = vec![Travel::NONE; receivers_km.len()];
+    route.travel(grazing_s, receivers_km, &mut nearest);
+    let farthest: Vec<Travel> = nearest
+        .iter()
+        .map(|ray| Travel {
+            angle_rad: PI,
+            time_s: ray.time_s + grazing_s * (PI - ray.angle_rad),
+        })
+        .collect();
+    (vec![grazing_s; 2], [nearest, farthest].concat())
 }
 
 /// Whether any ray lands inside the window, or rays land on both sides.

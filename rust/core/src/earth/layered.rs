@@ -5,12 +5,15 @@ use super::radial::RadialModel;
 use super::route::{Route, Span};
 use crate::error::{CoreError, Result};
 
-/// A spherical Earth with a solid mantle over a fluid core.
+/// A spherical Earth with a solid mantle over a fluid core, which may hold a
+/// solid inner core.
 #[derive(Debug, Clone, PartialEq)]
 pub struct LayeredEarth {
     compressional: RadialModel,
     shear: RadialModel,
     core_depth_km: f64,
+    /// Where the fluid core ends: at the inner core, or at the centre.
+    fluid_bottom_km: f64,
 }
 
 impl LayeredEarth {
@@ -36,10 +39,12 @@ impl LayeredEarth {
                 "no such depth",
             ));
         }
+        let fluid = shear_km_s[core..].iter().take_while(|v| **v <= 0.0).count();
         Ok(Self {
             compressional,
             shear: RadialModel::new(&depth_km[..core], &shear_km_s[..core], radius_km)?,
             core_depth_km: depth_km[core],
+            fluid_bottom_km: depth_km[core + fluid - 1],
         })
     }
 
@@ -77,21 +82,26 @@ impl LayeredEarth {
             .legs
             .split_last()
             .ok_or_else(|| CoreError::invalid("phase", "one leg or more", "none"))?;
+        let last = self.span(*last, source_depth_km);
         Ok(Route {
             fixed: others
                 .iter()
                 .map(|&leg| self.span(leg, source_depth_km))
                 .collect(),
-            last: self.span(*last, source_depth_km),
+            last,
+            grazing_s: phase.diffracts.then(|| last.grazing_s()),
         })
     }
 
     fn span(&self, leg: Leg, source_depth_km: f64) -> Span<'_> {
         let model = self.model(leg.wave);
         let radius_km = |anchor: Anchor| match anchor {
+            Anchor::Surface => self.radius_km(),
             Anchor::Source => self.radius_km() - source_depth_km,
             Anchor::Receiver => model.shells()[0].top_km,
             Anchor::CoreTop => self.radius_km() - self.core_depth_km,
+            Anchor::InnerCoreTop => self.radius_km() - self.fluid_bottom_km,
+            Anchor::Centre => 0.0,
         };
         Span {
             model,

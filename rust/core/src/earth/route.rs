@@ -3,6 +3,10 @@
 use super::radial::{Ending, RadialModel, Side};
 use super::shell::Travel;
 
+/// Distance between a ray parameter and the critical one beside it, relative, so
+/// that it falls on the intended side.
+pub(super) const NUDGE: f64 = 1e-13;
+
 /// A stretch of a ray between two radii, in the model of one wave type.
 #[derive(Debug, Clone, Copy)]
 pub(super) struct Span<'a> {
@@ -21,41 +25,33 @@ pub(super) struct Route<'a> {
     pub(super) fixed: Vec<Span<'a>>,
     /// The stretch to the receiver; `upper_km` is the highest receiver possible.
     pub(super) last: Span<'a>,
+    /// The only ray parameter there is, for a wave that runs along the bottom of
+    /// the last stretch before it rises.
+    pub(super) grazing_s: Option<f64>,
+}
+
+impl Span<'_> {
+    /// Ray parameter of the ray that just reaches the lower end.
+    pub(super) fn grazing_s(&self) -> f64 {
+        horizontal_s(self.model, self.lower_km, Side::Above) * (1.0 - NUDGE)
+    }
 }
 
 /// Where the last stretch begins: shell index and radius in km.
 pub(super) type Foot = (usize, f64);
 
-impl<'a> Route<'a> {
-    /// The wave that goes down from a source, turns above the model's bottom
-    /// and rises to the receiver.
-    pub(super) fn direct(model: &'a RadialModel, source_depth_km: f64) -> Self {
-        let down = Span {
-            model,
-            upper_km: model.radius_km() - source_depth_km,
-            lower_km: model.bottom_km(),
-            turns: true,
-            rises: false,
-        };
-        let last = Span {
-            upper_km: model.shells()[0].top_km,
-            rises: true,
-            ..down
-        };
-        Self {
-            fixed: vec![down],
-            last,
-        }
-    }
-
+impl Route<'_> {
     /// Travel up to the last stretch and where that begins; `None` if no ray of
-    /// this parameter takes the route.
+    /// this parameter takes the route, or a stretch of it has no length.
     pub(super) fn start(&self, ray_parameter: f64) -> Option<(Travel, Foot)> {
         let last = &self.last;
         let reached = last.model.shell_index(last.lower_km, Side::Above);
         let mut foot = (!last.turns).then_some((reached, last.lower_km));
         let mut travel = Travel::default();
         for span in &self.fixed {
+            if span.upper_km <= span.lower_km {
+                return None;
+            }
             let (part, ending) = span
                 .model
                 .descend(ray_parameter, span.upper_km, span.lower_km);

@@ -1,5 +1,6 @@
 //! The ray integrals of one spherical shell: [`Shell`].
 
+use std::f64::consts::FRAC_PI_2;
 use std::ops::{Add, AddAssign};
 
 /// Nodes of the 8-point Gauss-Legendre rule on 0..1 (Abramowitz & Stegun 1964,
@@ -26,6 +27,12 @@ pub(super) const GAUSS_WEIGHTS: [f64; 8] = [
     0.111_190_517_226_687_24,
     0.050_614_268_145_188_13,
 ];
+
+/// Largest ratio of the radii between which one set of nodes suffices.
+const WIDEST: f64 = 3.0;
+
+/// Below this radius stretches are not divided any further, km.
+const INNERMOST_KM: f64 = 1e-6;
 
 /// Angle and time that a ray spends between two radii.
 #[derive(Debug, Clone, Copy, PartialEq, Default)]
@@ -110,17 +117,23 @@ impl Shell {
     /// (Aki & Richards 2002, chapter 9).
     #[must_use]
     pub fn cross(&self, ray_parameter: f64, low_km: f64, high_km: f64) -> Travel {
-        let Some(path) = self.path(ray_parameter, low_km, high_km) else {
-            return Travel::default();
-        };
-        let mut sum = Travel::default();
-        for (node, weight) in GAUSS_NODES.iter().zip(GAUSS_WEIGHTS) {
-            let (radius, velocity, density) = path.at(*node);
-            let scaled = weight * density;
-            sum.angle_rad += scaled * velocity * velocity;
-            sum.time_s += scaled * radius * radius;
+        if is_deep(low_km, high_km) {
+            return self.cross_deep(ray_parameter, low_km, high_km);
         }
-        sum.angle_rad *= ray_parameter;
+        self.path(ray_parameter, low_km, high_km)
+            .map_or_else(Travel::default, |path| path.travel())
+    }
+
+    /// The same in several stretches.
+    #[cold]
+    fn cross_deep(&self, ray_parameter: f64, low_km: f64, high_km: f64) -> Travel {
+        let mut sum = self
+            .paths(ray_parameter, low_km, high_km)
+            .fold(Travel::default(), |sum, path| sum + path.travel());
+        if ray_parameter == 0.0 && low_km <= 0.0 {
+            // The limit of small ray parameters: all of the turn is at the centre.
+            sum.angle_rad = FRAC_PI_2;
+        }
         sum
     }
 
@@ -140,8 +153,33 @@ impl Shell {
         2.0 * (high_km - low_km) * stretch / (above + below)
     }
 
+    /// The stretches of ray between two radii, from the top down, each so short
+    /// that the integrands are smooth on it.
+    pub(super) fn paths(
+        &self,
+        ray_parameter: f64,
+        low_km: f64,
+        high_km: f64,
+    ) -> impl Iterator<Item = Path> + use<> {
+        let shell = *self;
+        let mut next_km = Some(high_km);
+        std::iter::from_fn(move || {
+            let top_km = next_km?;
+            let cut_km = if is_deep(low_km, top_km) {
+                top_km / WIDEST
+            } else {
+                low_km
+            };
+            let path = shell.path(ray_parameter, cut_km, top_km);
+            let goes_on = path.is_some_and(|path| path.start_km <= cut_km) && cut_km > low_km;
+            next_km = goes_on.then_some(cut_km);
+            path
+        })
+    }
+
     /// The stretch of ray between two radii, `None` if there is none.
-    pub(super) fn path(&self, ray_parameter: f64, low_km: f64, high_km: f64) -> Option<Path> {
+    #[inline]
+    fn path(&self, ray_parameter: f64, low_km: f64, high_km: f64) -> Option<Path> {
         let above = self.clearance_km(ray_parameter, high_km);
         if above <= 0.0 || high_km <= low_km {
             return None;
@@ -162,6 +200,11 @@ impl Shell {
             root_high: above.sqrt(),
         })
     }
+}
+
+/// Whether the range between two radii takes more than one set of nodes.
+fn is_deep(low_km: f64, high_km: f64) -> bool {
+    high_km > low_km.max(INNERMOST_KM) * WIDEST
 }
 
 /// A ray between two radii of one shell, in the variable x in 0..1 that is
@@ -191,6 +234,20 @@ impl Path {
     /// dv/dr, 1/s.
     pub(super) fn gradient_per_s(&self) -> f64 {
         self.shell.gradient_per_s
+    }
+
+    /// Angle and time from end to end.
+    #[inline]
+    fn travel(&self) -> Travel {
+        let mut sum = Travel::default();
+        for (node, weight) in GAUSS_NODES.iter().zip(GAUSS_WEIGHTS) {
+            let (radius, velocity, density) = self.at(*node);
+            let scaled = weight * density;
+            sum.angle_rad += scaled * velocity * velocity;
+            sum.time_s += scaled * radius * radius;
+        }
+        sum.angle_rad *= self.ray_parameter;
+        sum
     }
 
     /// √(r²/v² − p²), the part of the ray's slowness that points upward times

@@ -2,6 +2,8 @@
 //! and depth: [`WavefrontTable`].
 
 use super::fan::Fan;
+use super::layered::LayeredEarth;
+use super::phase::Phase;
 use super::radial::{RadialModel, Side};
 use super::route::Route;
 use crate::error::{CoreError, Result};
@@ -18,6 +20,9 @@ const BIN_KM: f64 = 2.0;
 /// How far beyond the window a depth may lie by rounding, km.
 const ROUNDING_KM: f64 = 1e-9;
 
+/// How far beyond its last ray a branch may be read, in steps of distance.
+const ROUNDING_STEPS: f64 = 1e-9;
+
 /// A first arrival and its gradient.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct WavefrontValue {
@@ -29,8 +34,8 @@ pub struct WavefrontValue {
     pub per_depth_s_per_km: f64,
 }
 
-/// First-arrival times of the wave that goes down from a source and turns, at
-/// receivers inside a window of distance and depth.
+/// First-arrival times of one phase from one source depth, at receivers inside a
+/// window of distance and depth.
 ///
 /// Bicubic Hermite interpolation between nodes that hold the time, its two
 /// slopes and its mixed derivative; a depth cell never crosses a tabulated
@@ -58,27 +63,25 @@ struct Cell {
 }
 
 impl WavefrontTable {
-    /// Tabulates first arrivals from a source depth for receivers between
-    /// `top_km` (may lie above sea level, negative) and `bottom_km`, and between
-    /// two distances in radians.
+    /// Tabulates a phase from a source depth for receivers between two depths in
+    /// km, the first of which may lie above sea level (negative), and between two
+    /// distances in radians.
     ///
     /// # Errors
-    /// [`CoreError::Invalid`] if a depth lies outside the model or the window
-    /// is empty.
+    /// [`CoreError::Invalid`] if a depth lies outside the mantle or the window is
+    /// empty.
     pub fn build(
-        model: &RadialModel,
+        earth: &LayeredEarth,
+        phase: &Phase,
         source_depth_km: f64,
-        top_km: f64,
-        bottom_km: f64,
-        min_distance_rad: f64,
-        max_distance_rad: f64,
+        depths_km: (f64, f64),
+        distances_rad: (f64, f64),
     ) -> Result<Self> {
-        model.check_depth("source depth", source_depth_km)?;
-        check_window(
-            model,
-            (top_km, bottom_km),
-            (min_distance_rad, max_distance_rad),
-        )?;
+        let model = &earth.mantle(phase.arriving_wave());
+        let route = earth.route(phase, source_depth_km)?;
+        check_window(model, depths_km, distances_rad)?;
+        let (top_km, bottom_km) = depths_km;
+        let (min_distance_rad, max_distance_rad) = distances_rad;
         let step_rad = STEP_DEG.to_radians();
         let first = (min_distance_rad / step_rad).floor();
         let columns = ((max_distance_rad / step_rad).ceil() - first) as usize + 1;
@@ -93,7 +96,7 @@ impl WavefrontTable {
             cells,
             nodes: Vec::new(),
         };
-        table.fill(model, &levels, &rows);
+        table.fill(&route, &levels, &rows);
         Ok(table)
     }
 
@@ -177,11 +180,10 @@ impl WavefrontTable {
     }
 
     /// Computes every node. `levels` are falling radii, `rows` their rows.
-    fn fill(&mut self, model: &RadialModel, levels: &[f64], rows: &[Row]) {
+    fn fill(&mut self, route: &Route<'_>, levels: &[f64], rows: &[Row]) {
         let radii_km: Vec<f64> = levels.iter().rev().copied().collect();
-        let route = Route::direct(model, self.source_depth_km);
         let last_rad = self.first_rad + self.step_rad * (self.columns - 1) as f64;
-        let fan = Fan::new(&route, &radii_km, (self.first_rad, last_rad));
+        let fan = Fan::new(route, &radii_km, (self.first_rad, last_rad));
         let curves: Vec<Vec<[f64; 3]>> = (0..levels.len())
             .map(|level| self.first_arrivals(&fan, levels.len() - 1 - level))
             .collect();
@@ -199,7 +201,8 @@ impl WavefrontTable {
             let from = (gap.from.angle_rad - self.first_rad) / self.step_rad;
             let to = (gap.to.angle_rad - self.first_rad) / self.step_rad;
             let start = from.min(to).ceil().max(0.0) as usize;
-            let end = (from.max(to).floor() + 1.0).clamp(0.0, self.columns as f64) as usize;
+            let end = ((from.max(to) + ROUNDING_STEPS).floor() + 1.0)
+                .clamp(0.0, self.columns as f64) as usize;
             for (column, best) in best.iter_mut().enumerate().take(end).skip(start) {
                 let curve = gap.curve(self.first_rad + self.step_rad * column as f64);
                 if curve[0] < best[0] {
