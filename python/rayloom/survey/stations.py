@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from pathlib import Path
 from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
 from rayloom.survey.columns import ColumnReader, Span
 from rayloom.survey.epochs import tidy_epochs
+from rayloom.survey.formats import Paths, Progress, read_table
 from rayloom.survey.notices import Notice
 from rayloom.survey.tables import (
     ColumnTable,
@@ -19,7 +19,7 @@ from rayloom.survey.tables import (
     no_floats,
     no_times,
 )
-from rayloom.survey.text_table import TextTable, read_text_table, text_table_of_frame
+from rayloom.survey.text_table import TextTable, text_table_of_frame
 from rayloom.units import M_PER_KM
 
 if TYPE_CHECKING:
@@ -111,34 +111,41 @@ class Stations(ColumnTable):
         return _stations(text_table_of_frame(frame, "stations frame"), notices)
 
 
-def read_stations(path: str | Path, *, notices: list[Notice] | None = None) -> Stations:
-    """Read a stations file (CSV).
+def read_stations(
+    path: Paths, *, notices: list[Notice] | None = None, progress: Progress | None = None
+) -> Stations:
+    """Read stations from CSV, StationXML or the text of an FDSN station service.
 
-    Columns: network, station, latitude, longitude, elevation_m; optional
-    burial_m, start, end. Other columns are ignored.
+    Columns of CSV: network, station, latitude, longitude, elevation_m; optional
+    burial_m, start, end. Other columns are ignored. Channels of the other formats
+    are reduced to one position per station and time.
 
     Parameters
     ----------
-    path : str or Path
-        The file.
+    path : path or sequence of paths
+        Files, or folders of files; formats are told by contents.
     notices : list of Notice, optional
         Remarks are appended here.
+    progress : callable, optional
+        Called with the bytes read and the bytes in all.
 
     Raises
     ------
     FileAccessError
-        If the file cannot be read.
+        If a file cannot be read.
     FileProblemsError
-        With every problem of the file: line, column, value, what was expected.
+        With every problem of the files: line, column, value, what was expected.
+    MissingExtraError
+        If a file is StationXML and obspy is not installed.
     """
-    return _stations(read_text_table(path), notices)
+    return _stations(read_table(path, "stations", progress=progress), notices)
 
 
 def _stations(table: TextTable, notices: list[Notice] | None) -> Stations:
     reader = ColumnReader(table)
     known = _REQUIRED + _OPTIONAL
     reader.require(_REQUIRED, known)
-    remarks = reader.misspelt(_OPTIONAL, known)
+    remarks = [*table.remarks, *reader.misspelt(_OPTIONAL, known)]
     longitude_deg = reader.number("longitude", LONGITUDE)
     stations = Stations(
         network=reader.text("network"),
