@@ -10,7 +10,8 @@ import numpy as np
 from rayloom.survey.columns import ColumnReader, Span
 from rayloom.survey.formats import Paths, Progress, read_table
 from rayloom.survey.notices import Notice
-from rayloom.survey.stations import LATITUDE, LONGITUDE, wrapped_longitude_deg
+from rayloom.survey.spans import LATITUDE, LONGITUDE
+from rayloom.survey.stations import wrapped_longitude_deg
 from rayloom.survey.tables import (
     BoolArray,
     ColumnTable,

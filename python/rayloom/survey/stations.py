@@ -7,10 +7,11 @@ from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
-from rayloom.survey.columns import ColumnReader, Span
+from rayloom.survey.columns import ColumnReader
 from rayloom.survey.epochs import tidy_epochs
 from rayloom.survey.formats import Paths, Progress, read_table
 from rayloom.survey.notices import Notice
+from rayloom.survey.spans import BURIAL, ELEVATION, LATITUDE, LONGITUDE
 from rayloom.survey.tables import (
     ColumnTable,
     FloatArray,
@@ -24,11 +25,6 @@ from rayloom.units import M_PER_KM
 
 if TYPE_CHECKING:
     import pandas as pd
-
-LATITUDE: Final = Span(-90.0, 90.0, "degrees north", "latitude and longitude swapped?")
-LONGITUDE: Final = Span(-180.0, 360.0, "degrees east")
-ELEVATION: Final = Span(-11_000.0, 9_000.0, "m", "in metres above sea level")
-BURIAL: Final = Span(0.0, 11_000.0, "m", "in metres below the surface")
 
 _REQUIRED: Final = ("network", "station", "latitude", "longitude", "elevation_m")
 _OPTIONAL: Final = ("burial_m", "start", "end")

@@ -9,8 +9,9 @@ from typing import Final
 
 import numpy as np
 
-from rayloom.survey.columns import ColumnReader, Span
+from rayloom.survey.columns import ColumnReader
 from rayloom.survey.notices import Notice, few
+from rayloom.survey.spans import LATITUDE, LONGITUDE, SENSOR_DEPTH, SENSOR_ELEVATION
 from rayloom.survey.text_table import TextTable
 
 STATION_ITSELF: Final = "(station)"
@@ -21,7 +22,6 @@ _NEVER: Final = np.datetime64("2262-04-11", "ns")
 _INSTRUMENTS: Final = "HLPN"
 _DEGREE_M: Final = 111_195.0
 _FAR_M: Final = 1000.0
-_ANY: Final = Span(-np.inf, np.inf, "metres or degrees")
 _TEXT_COLUMNS: Final = ("network", "station", "location", "channel")
 _KEPT: Final = (
     "network",
@@ -101,9 +101,10 @@ def _entries(channels: TextTable) -> tuple[dict[tuple[str, str], list[_Entry]], 
     reader = ColumnReader(channels)
     required = ("network", "station", "latitude", "longitude", "elevation_m")
     reader.require(required, (*required, "location", "channel", "depth_m", "start", "end"))
-    latitude_deg, longitude_deg = (reader.number(name, _ANY) for name in required[2:4])
-    sensor_m = reader.number("elevation_m", _ANY)
-    depth_m = np.maximum(reader.number("depth_m", _ANY, optional=True, missing=0.0), 0.0)
+    latitude_deg = reader.number("latitude", LATITUDE)
+    longitude_deg = reader.number("longitude", LONGITUDE)
+    sensor_m = reader.number("elevation_m", SENSOR_ELEVATION)
+    depth_m = np.maximum(reader.number("depth_m", SENSOR_DEPTH, optional=True, missing=0.0), 0.0)
     start = reader.time("start", optional=True, day_alone=True)
     end = reader.time("end", optional=True, day_alone=True)
     channels.problems.raise_if_any()
