@@ -72,8 +72,10 @@ def test_truth_blocks_are_fine_turned_and_cut_at_the_discontinuities(earth):
     grid = truth_grid(earth)
     assert grid.frame.azimuth_deg not in (0.0, 90.0)
     widths = grid.widths
-    middle = slice(grid.shape[0] // 2 - 15, grid.shape[0] // 2 + 15)
-    assert 12.0 <= widths.x_km[middle].min() <= widths.x_km[middle].max() <= 15.0
+    below_network = np.abs(grid.x_centres) * 111.19 < 200.0
+    assert below_network.sum() > 25
+    fine_km = widths.x_km[below_network]
+    assert 12.0 <= fine_km.min() <= fine_km.max() <= 15.0
     assert widths.depth_km.max() < 1.4 * TRUTH_SPACING_KM
     assert {20.0, 35.0} <= set(np.round(grid.depth_edges_km, 6))
     assert grid.depth_edges_km[0] < -2.3

@@ -83,6 +83,15 @@ def test_a_changed_setting_names_its_key_and_both_values(folder: Path) -> None:
     assert reasons_of(folder) == {"export": "outputs.dpi changed from 60 to 70"}
 
 
+def test_figures_of_earlier_settings_do_not_stay(folder: Path) -> None:
+    assert (folder / "figures" / "section_2.png").exists()
+    one = '[{name = "A", start = [11.0, -31.0], end = [13.0, -31.0]}]'
+    edit(folder, "dpi = 60", f"dpi = 60\nsections = {one}")
+    assert set(reasons_of(folder)) == {"export"}
+    assert (folder / "figures" / "section_1.png").exists()
+    assert not (folder / "figures" / "section_2.png").exists()
+
+
 def test_a_setting_that_does_not_touch_the_result_changes_nothing(folder: Path) -> None:
     edit(folder, "[inversion]", "[forward]\nthreads = 1\n\n[inversion]")
     assert reasons_of(folder) == {}

@@ -93,7 +93,7 @@ class InversionSettings(BaseModel):
         "(with robust = none they keep it).",
     )
 
-    max_iterations: int = Field(default=6, ge=1, description="Most models solved for.")
+    max_iterations: int = Field(default=8, ge=1, description="Most models solved for.")
     reweightings: int = Field(
         default=3,
         ge=1,

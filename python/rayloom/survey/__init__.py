@@ -1,7 +1,7 @@
 """Stations, events and arrival picks, read from tables and checked.
 
-The main type is :class:`Survey`; :func:`read_survey` makes one from three CSV
-files. Each table is a frozen dataclass of equally long numpy arrays. Latitudes
+The main type is :class:`Survey`; :func:`read_survey` makes one from CSV files or open
+formats. Each table is a frozen dataclass of equally long numpy arrays. Latitudes
 are geographic (WGS84) here, as they are in the files.
 """
 

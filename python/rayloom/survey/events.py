@@ -3,14 +3,15 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from pathlib import Path
 from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
 from rayloom.survey.columns import ColumnReader, Span
+from rayloom.survey.formats import Paths, Progress, read_table
 from rayloom.survey.notices import Notice
-from rayloom.survey.stations import LATITUDE, LONGITUDE, wrapped_longitude_deg
+from rayloom.survey.spans import LATITUDE, LONGITUDE
+from rayloom.survey.stations import wrapped_longitude_deg
 from rayloom.survey.tables import (
     BoolArray,
     ColumnTable,
@@ -19,7 +20,7 @@ from rayloom.survey.tables import (
     TimeArray,
     no_floats,
 )
-from rayloom.survey.text_table import Problems, TextTable, read_text_table, text_table_of_frame
+from rayloom.survey.text_table import Problems, TextTable, text_table_of_frame
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -90,34 +91,41 @@ class Events(ColumnTable):
         return _events(text_table_of_frame(frame, "events frame"), notices)
 
 
-def read_events(path: str | Path, *, notices: list[Notice] | None = None) -> Events:
-    """Read an events file (CSV).
+def read_events(
+    path: Paths, *, notices: list[Notice] | None = None, progress: Progress | None = None
+) -> Events:
+    """Read events from CSV, QuakeML or the text of an FDSN event service.
 
-    Columns: event, time, latitude, longitude, depth_km; optional magnitude.
-    Other columns are ignored.
+    Columns of CSV: event, time, latitude, longitude, depth_km; optional magnitude.
+    Other columns are ignored. Of QuakeML the preferred origins count; events are
+    named by the last part of their identifier.
 
     Parameters
     ----------
-    path : str or Path
-        The file.
+    path : path or sequence of paths
+        Files, or folders of files; formats are told by contents.
     notices : list of Notice, optional
         Remarks are appended here.
+    progress : callable, optional
+        Called with the bytes read and the bytes in all.
 
     Raises
     ------
     FileAccessError
-        If the file cannot be read.
+        If a file cannot be read.
     FileProblemsError
-        With every problem of the file: line, column, value, what was expected.
+        With every problem of the files: line, column, value, what was expected.
+    MissingExtraError
+        If a file is QuakeML and obspy is not installed.
     """
-    return _events(read_text_table(path), notices)
+    return _events(read_table(path, "events", progress=progress), notices)
 
 
 def _events(table: TextTable, notices: list[Notice] | None) -> Events:
     reader = ColumnReader(table)
     known = _REQUIRED + _OPTIONAL
     reader.require(_REQUIRED, known)
-    remarks = reader.misspelt(_OPTIONAL, known)
+    remarks = [*table.remarks, *reader.misspelt(_OPTIONAL, known)]
     events = Events(
         event=reader.text("event"),
         time=reader.time("time"),

@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from pathlib import Path
 from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
+from rayloom.survey.catalogues import picks_of_survey
 from rayloom.survey.columns import ColumnReader
 from rayloom.survey.events import Events
+from rayloom.survey.formats import Paths, Progress, read_table
 from rayloom.survey.notices import Notice
 from rayloom.survey.references import find_events, find_stations
 from rayloom.survey.repeats import drop_repeats
@@ -23,7 +24,7 @@ from rayloom.survey.tables import (
     TimeArray,
     seconds_between,
 )
-from rayloom.survey.text_table import TextTable, read_text_table, text_table_of_frame
+from rayloom.survey.text_table import TextTable, text_table_of_frame
 from rayloom.survey.uncertainty import read_uncertainty
 
 if TYPE_CHECKING:
@@ -95,40 +96,50 @@ class Picks(ColumnTable):
 
 
 def read_picks(
-    path: str | Path,
+    path: Paths,
     stations: Stations,
     events: Events,
     *,
     settings: SurveySettings | None = None,
     notices: list[Notice] | None = None,
+    progress: Progress | None = None,
 ) -> Picks:
-    """Read a picks file (CSV).
+    """Read picks from CSV or QuakeML.
 
-    Columns: event, network, station, phase, time and uncertainty_s or quality
+    Columns of CSV: event, network, station, phase, time and uncertainty_s or quality
     (or both: a stated uncertainty goes before the quality class). Other columns
     are ignored. Repeated identical rows are dropped with a notice; different picks
     of one event, station and phase stay, with a notice, until their residuals
-    tell which to use.
+    tell which to use. Picks of QuakeML that are of other stations or events than
+    those given are left out with a notice, and take their phase names from arrivals.
 
     Parameters
     ----------
-    path : str or Path
-        The file.
+    path : path or sequence of paths
+        Files, or folders of files; formats are told by contents.
     stations, events : Stations, Events
         Tables that the picks refer to.
     settings : SurveySettings, optional
         Uncertainty by default and of each quality class.
     notices : list of Notice, optional
         Remarks are appended here.
+    progress : callable, optional
+        Called with the bytes read and the bytes in all.
 
     Raises
     ------
     FileAccessError
-        If the file cannot be read.
+        If a file cannot be read.
     FileProblemsError
-        With every problem of the file: line, column, value, what was expected.
+        With every problem of the files: line, column, value, what was expected.
+    MissingExtraError
+        If a file is QuakeML and obspy is not installed.
     """
-    table = read_text_table(path)
+
+    def fit(catalogue: TextTable) -> TextTable:
+        return picks_of_survey(catalogue, stations, events, latest_arrival_s=LATEST_ARRIVAL_S)
+
+    table = read_table(path, "picks", fit=fit, progress=progress)
     return _picks(table, stations, events, settings or SurveySettings(), notices)
 
 
@@ -142,7 +153,8 @@ def _picks(
     reader = ColumnReader(table)
     known = _REQUIRED + _OPTIONAL
     reader.require(_REQUIRED, known)
-    remarks = reader.misspelt(_OPTIONAL, known) if reader.has("quality") else []
+    misspelt = reader.misspelt(_OPTIONAL, known) if reader.has("quality") else []
+    remarks = [*table.remarks, *misspelt]
     event, network, station = (reader.text(name) for name in ("event", "network", "station"))
     time = reader.time("time")
     picks = Picks(

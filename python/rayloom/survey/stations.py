@@ -3,14 +3,15 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from pathlib import Path
 from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
-from rayloom.survey.columns import ColumnReader, Span
+from rayloom.survey.columns import ColumnReader
 from rayloom.survey.epochs import tidy_epochs
+from rayloom.survey.formats import Paths, Progress, read_table
 from rayloom.survey.notices import Notice
+from rayloom.survey.spans import BURIAL, ELEVATION, LATITUDE, LONGITUDE
 from rayloom.survey.tables import (
     ColumnTable,
     FloatArray,
@@ -19,16 +20,11 @@ from rayloom.survey.tables import (
     no_floats,
     no_times,
 )
-from rayloom.survey.text_table import TextTable, read_text_table, text_table_of_frame
+from rayloom.survey.text_table import TextTable, text_table_of_frame
 from rayloom.units import M_PER_KM
 
 if TYPE_CHECKING:
     import pandas as pd
-
-LATITUDE: Final = Span(-90.0, 90.0, "degrees north", "latitude and longitude swapped?")
-LONGITUDE: Final = Span(-180.0, 360.0, "degrees east")
-ELEVATION: Final = Span(-11_000.0, 9_000.0, "m", "in metres above sea level")
-BURIAL: Final = Span(0.0, 11_000.0, "m", "in metres below the surface")
 
 _REQUIRED: Final = ("network", "station", "latitude", "longitude", "elevation_m")
 _OPTIONAL: Final = ("burial_m", "start", "end")
@@ -111,34 +107,41 @@ class Stations(ColumnTable):
         return _stations(text_table_of_frame(frame, "stations frame"), notices)
 
 
-def read_stations(path: str | Path, *, notices: list[Notice] | None = None) -> Stations:
-    """Read a stations file (CSV).
+def read_stations(
+    path: Paths, *, notices: list[Notice] | None = None, progress: Progress | None = None
+) -> Stations:
+    """Read stations from CSV, StationXML or the text of an FDSN station service.
 
-    Columns: network, station, latitude, longitude, elevation_m; optional
-    burial_m, start, end. Other columns are ignored.
+    Columns of CSV: network, station, latitude, longitude, elevation_m; optional
+    burial_m, start, end. Other columns are ignored. Channels of the other formats
+    are reduced to one position per station and time.
 
     Parameters
     ----------
-    path : str or Path
-        The file.
+    path : path or sequence of paths
+        Files, or folders of files; formats are told by contents.
     notices : list of Notice, optional
         Remarks are appended here.
+    progress : callable, optional
+        Called with the bytes read and the bytes in all.
 
     Raises
     ------
     FileAccessError
-        If the file cannot be read.
+        If a file cannot be read.
     FileProblemsError
-        With every problem of the file: line, column, value, what was expected.
+        With every problem of the files: line, column, value, what was expected.
+    MissingExtraError
+        If a file is StationXML and obspy is not installed.
     """
-    return _stations(read_text_table(path), notices)
+    return _stations(read_table(path, "stations", progress=progress), notices)
 
 
 def _stations(table: TextTable, notices: list[Notice] | None) -> Stations:
     reader = ColumnReader(table)
     known = _REQUIRED + _OPTIONAL
     reader.require(_REQUIRED, known)
-    remarks = reader.misspelt(_OPTIONAL, known)
+    remarks = [*table.remarks, *reader.misspelt(_OPTIONAL, known)]
     longitude_deg = reader.number("longitude", LONGITUDE)
     stations = Stations(
         network=reader.text("network"),

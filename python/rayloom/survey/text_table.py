@@ -1,4 +1,4 @@
-"""A CSV file as columns of text, each row with its line number."""
+"""A table file as columns of text, each row with its line number."""
 
 from __future__ import annotations
 
@@ -10,11 +10,13 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Final
 
 from rayloom.errors import FileAccessError, FileProblemsError
+from rayloom.survey.notices import Notice
 
 if TYPE_CHECKING:
     import pandas as pd
 
 CELL_LIMIT: Final = 131_072
+_LINES_PER_FILE: Final = 10**12
 _WANTED: Final = "expected a CSV table in UTF-8 text; export it as CSV and try again"
 _OTHER_FORMATS: Final = {
     b"PK\x03\x04": "a spreadsheet or zip archive",
@@ -26,6 +28,33 @@ _OTHER_FORMATS: Final = {
     b"\xff\xfe": "text in UTF-16",
     b"\xfe\xff": "text in UTF-16",
 }
+
+
+class FileLine(int):
+    """Line of one of several files: sorts by file, then line, and names both in text.
+
+    Parameters
+    ----------
+    line : int
+        Line, 1 for the first.
+    file_number : int
+        Place of the file among the others.
+    file_name : str
+        How the file is named in messages.
+    """
+
+    line: int
+    file_name: str
+
+    def __new__(cls, line: int, file_number: int, file_name: str) -> FileLine:
+        """Make the line."""
+        made = super().__new__(cls, file_number * _LINES_PER_FILE + line)
+        made.line = line
+        made.file_name = file_name
+        return made
+
+    def __str__(self) -> str:
+        return f"{self.line} of {self.file_name}"
 
 
 @dataclass
@@ -46,7 +75,12 @@ class Problems:
 
     def add(self, line: int, text: str) -> None:
         """Note a problem at a line; line 0 stands for the whole file."""
-        self._found.append((line, f"{self.place} {line}, {text}" if line else text))
+        self._found.append((line, text))
+
+    def adopt(self, other: Problems, file_number: int) -> None:
+        """Take over what is wrong with one of several files."""
+        for line, text in other._found:
+            self.add(FileLine(line, file_number, other.source), text)
 
     def __bool__(self) -> bool:
         return bool(self._found)
@@ -60,8 +94,17 @@ class Problems:
             If there is any.
         """
         if self._found:
-            ordered = sorted(self._found, key=lambda found: found[0])
-            raise FileProblemsError(self.source, [text for _, text in ordered])
+            raise self.error()
+
+    def error(self) -> FileProblemsError:
+        """Make the error that lists all problems in the order of their lines."""
+        ordered = sorted(self._found, key=lambda found: found[0])
+        return FileProblemsError(self.source, [self._told(*found) for found in ordered])
+
+    def _told(self, line: int, text: str) -> str:
+        if isinstance(line, FileLine) and not line.line:
+            return f"{line.file_name}: {text}"
+        return f"{self.place} {line}, {text}" if line else text
 
 
 @dataclass(frozen=True)
@@ -76,11 +119,14 @@ class TextTable:
         Line of the file at which each row starts.
     problems : Problems
         What is wrong so far; readers add to it.
+    remarks : list of Notice
+        What was done to the file's contents before they became this table.
     """
 
     columns: dict[str, list[str]]
     lines: list[int]
     problems: Problems
+    remarks: list[Notice] = field(default_factory=list)
 
     @property
     def source(self) -> str:
@@ -103,25 +149,58 @@ def read_text_table(path: str | Path) -> TextTable:
     FileProblemsError
         If it is empty, not text in UTF-8, or not a table.
     """
+    return csv_table(read_bytes(path), Problems(str(path)))
+
+
+def read_bytes(path: str | Path, limit: int = -1) -> bytes:
+    """Read a file, or its first ``limit`` bytes.
+
+    Raises
+    ------
+    FileAccessError
+        If it cannot be read.
+    """
     try:
-        content = Path(path).read_bytes()
+        with Path(path).open("rb") as stream:
+            return stream.read(limit)
     except OSError as error:
-        reason = error.strerror or str(error)
-        raise FileAccessError(f"{path}: cannot be read ({reason}); check the path") from error
+        raise unreadable(path, error) from error
     except ValueError as error:
         raise FileAccessError(f"{path!r}: not a file name ({error}); check the path") from error
-    problems = Problems(str(path))
-    return _table_of_text(_decoded(content, problems), problems)
+
+
+def unreadable(path: str | Path, error: OSError) -> FileAccessError:
+    """Make the error that tells why a file or folder cannot be read."""
+    reason = error.strerror or str(error)
+    return FileAccessError(f"{path}: cannot be read ({reason}); check the path")
+
+
+def csv_table(content: bytes, problems: Problems) -> TextTable:
+    """Take the bytes of a CSV file as a table.
+
+    Raises
+    ------
+    FileProblemsError
+        If they are empty, not text in UTF-8, or not a table.
+    """
+    return table_of_text(decoded(content, problems), problems)
 
 
 def text_table_of_frame(frame: pd.DataFrame, source: str) -> TextTable:
     """Take a pandas data frame as a table of text, so that the same checks apply."""
     problems = Problems(source, place="row")
-    table = _table_of_text(frame.to_csv(index=False), problems)
+    table = table_of_text(frame.to_csv(index=False), problems)
     return TextTable(table.columns, [line - 1 for line in table.lines], problems)
 
 
-def _decoded(content: bytes, problems: Problems) -> str:
+def decoded(content: bytes, problems: Problems) -> str:
+    """Return the text of a table's bytes in UTF-8, without a byte-order mark.
+
+    Raises
+    ------
+    FileProblemsError
+        If they are empty, of another kind of file, or not UTF-8.
+    """
     if not content.strip():
         problems.add(0, "the file is empty; expected a header line and one line per row")
         problems.raise_if_any()
@@ -154,8 +233,24 @@ def _note_encoding(content: bytes, problems: Problems) -> None:
             )
 
 
-def _table_of_text(text: str, problems: Problems) -> TextTable:
-    rows, lines = _rows(text, problems)
+def table_of_text(text: str, problems: Problems, *, separator: str = ",") -> TextTable:
+    """Split text into a table: its first row names the columns (in lower case).
+
+    Parameters
+    ----------
+    text : str
+        The table.
+    problems : Problems
+        Gets uneven rows and repeated columns.
+    separator : str
+        What stands between cells. Quotation marks enclose cells only with commas.
+
+    Raises
+    ------
+    FileProblemsError
+        If there is no row.
+    """
+    rows, lines = _rows(text, problems, separator)
     if not rows:
         problems.add(0, "the file is empty; expected a header line and one line per row")
         problems.raise_if_any()
@@ -172,9 +267,14 @@ def _table_of_text(text: str, problems: Problems) -> TextTable:
     return TextTable(columns, kept_lines, problems)
 
 
-def _rows(text: str, problems: Problems) -> tuple[list[list[str]], list[int]]:
+def _rows(text: str, problems: Problems, separator: str) -> tuple[list[list[str]], list[int]]:
     """Split text into stripped cells; a row starts after the line the last one ended on."""
-    reader = csv.reader(io.StringIO(text, newline=""), strict=True)
+    reader = csv.reader(
+        io.StringIO(text, newline=""),
+        delimiter=separator,
+        quoting=csv.QUOTE_MINIMAL if separator == "," else csv.QUOTE_NONE,
+        strict=True,
+    )
     rows: list[list[str]] = []
     lines: list[int] = []
     start = 1

@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from pathlib import Path
 
 import numpy as np
 
 from rayloom.survey.events import Events, read_events
+from rayloom.survey.formats import Paths, Progress, total_bytes
 from rayloom.survey.network import remote_stations
 from rayloom.survey.notices import Notice, few
 from rayloom.survey.picks import Picks, read_picks
@@ -37,20 +37,24 @@ class Survey:
 
 def read_survey(
     *,
-    stations: str | Path,
-    events: str | Path,
-    picks: str | Path,
+    stations: Paths,
+    events: Paths,
+    picks: Paths,
     settings: SurveySettings | None = None,
+    progress: Progress | None = None,
 ) -> Survey:
-    """Read a survey from three CSV files.
+    """Read a survey from CSV, StationXML, QuakeML or the text of FDSN web services.
 
     Parameters
     ----------
-    stations, events, picks : str or Path
-        The files; their columns are described at :func:`read_stations`,
-        :func:`read_events` and :func:`read_picks`.
+    stations, events, picks : path or sequence of paths
+        Files, or folders of files; their contents are described at
+        :func:`read_stations`, :func:`read_events` and :func:`read_picks`. One
+        QuakeML file may serve as events and picks.
     settings : SurveySettings, optional
         Uncertainty by default and of each quality class.
+    progress : callable, optional
+        Called with the bytes read and the bytes in all.
 
     Returns
     -------
@@ -61,15 +65,37 @@ def read_survey(
     FileAccessError
         If a file cannot be read.
     FileProblemsError
-        With every problem of the first file that has any.
+        With every problem of the first of the three that has any.
+    MissingExtraError
+        If a file is XML and obspy is not installed.
     """
     notices: list[Notice] = []
-    station_table = read_stations(stations, notices=notices)
-    event_table = read_events(events, notices=notices)
-    pick_table = read_picks(picks, station_table, event_table, settings=settings, notices=notices)
+    hear = _stages(
+        progress,
+        total_bytes(stations, "stations"),
+        total_bytes(events, "events"),
+        total_bytes(picks, "picks"),
+    )
+    station_table = read_stations(stations, notices=notices, progress=hear[0])
+    event_table = read_events(events, notices=notices, progress=hear[1])
+    pick_table = read_picks(
+        picks, station_table, event_table, settings=settings, notices=notices, progress=hear[2]
+    )
     notices += remote_stations(station_table)
     notices += _without_picks(station_table, event_table, pick_table)
     return Survey(station_table, event_table, pick_table, notices)
+
+
+def _stages(progress: Progress | None, *sizes: int) -> list[Progress | None]:
+    """Give each stage of the reading a progress of its own that counts on from the last."""
+    if progress is None:
+        return [None] * len(sizes)
+    told = progress
+
+    def stage(before: int) -> Progress:
+        return lambda done, _total: told(before + done, sum(sizes))
+
+    return [stage(sum(sizes[:number])) for number in range(len(sizes))]
 
 
 def _without_picks(stations: Stations, events: Events, picks: Picks) -> list[Notice]:

@@ -15,6 +15,7 @@ import numpy as np
 
 from rayloom.earth import ReferenceEarth
 from rayloom.errors import InputError
+from rayloom.inversion import InversionSettings
 from rayloom.model import suggest_grid
 from rayloom.outputs.atomic import replacing, write_text
 from rayloom.residuals import Residuals, ResidualSettings
@@ -41,6 +42,7 @@ def initialise(
     earth: str = "ak135",
     copy: bool = False,
     force: bool = False,
+    inversion: InversionSettings | None = None,
     reporter: Reporter | None = None,
 ) -> RunFolder:
     """Make a run folder.
@@ -57,6 +59,8 @@ def initialise(
         Copy the tables into the folder instead of naming them where they are.
     force : bool
         Overwrite settings that are there already.
+    inversion : InversionSettings, optional
+        Settings of the inversion other than the defaults.
     reporter : Reporter, optional
         Hears what was read and why the grid is as it is.
 
@@ -86,6 +90,8 @@ def initialise(
     started = time.monotonic()
     reporter.begin("init", "reading the tables")
     settings = _suggested_settings(folder, tables, earth, copy, reporter)
+    if inversion is not None:
+        settings = settings.model_copy(update={"inversion": inversion})
     if copy:
         _copy(tables, folder)
     write_text(

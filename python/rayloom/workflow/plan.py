@@ -18,6 +18,7 @@ from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.record import (
     Provenance,
     StepRecord,
+    content_hash,
     content_hashes,
     machine,
     versions,
@@ -172,8 +173,17 @@ class Plan:
             finished=datetime.now(UTC).isoformat(timespec="seconds"),
             seconds=round(seconds, 3),
         )
+        self._remove_stale(step.name, record)
         self.provenance.store(step.name, record)
         reporter.finish(step.name, seconds)
+
+    def _remove_stale(self, name: str, record: StepRecord) -> None:
+        """Remove what the step wrote before and no longer writes, unless it was changed since."""
+        before = self.provenance.steps.get(name)
+        for file, digest in (before.outputs if before else {}).items():
+            path = self.folder.path / file
+            if file not in record.outputs and path.exists() and content_hash(path) == digest:
+                path.unlink()
 
 
 def _changed_settings(before: Mapping[str, Any], now: Mapping[str, Any]) -> str | None:

@@ -158,20 +158,30 @@ impl<C: Chart> Blocks<C> {
         }
     }
 
+    /// Mean width (km) along an axis.
+    pub fn mean_width_along(&self, axis: usize) -> f64 {
+        let edges = &self.edges[axis];
+        (edges[edges.len() - 1] - edges[0]) / self.size(axis) as f64
+    }
+
     /// Geometric mean of the mean widths (km) along the three axes.
     pub fn mean_width_km(&self) -> f64 {
-        let product: f64 = (0..3)
-            .map(|axis| {
-                let edges = &self.edges[axis];
-                (edges[edges.len() - 1] - edges[0]) / self.size(axis) as f64
-            })
-            .product();
+        let product: f64 = (0..3).map(|axis| self.mean_width_along(axis)).product();
         product.cbrt()
     }
 
-    /// Mean time (s) through a block.
+    /// Largest of the three mean widths over their geometric mean: 1 for cubes.
+    pub fn flatness(&self) -> f64 {
+        let widest = (0..3)
+            .map(|axis| self.mean_width_along(axis))
+            .fold(0.0, f64::max);
+        widest / self.mean_width_km()
+    }
+
+    /// Mean time (s) through a block along its widest axis.
     pub fn mean_transit_s(&self) -> f64 {
-        self.slowness.iter().sum::<f64>() / self.count() as f64 * self.mean_width_km()
+        let mean = self.slowness.iter().sum::<f64>() / self.count() as f64;
+        mean * self.mean_width_km() * self.flatness()
     }
 
     /// True if the point (grid coordinates) lies in the model or on its surface.

@@ -1,7 +1,8 @@
 //! The coarse graph's nodes: [`Lattice`], block corners plus a few nodes on
 //! every edge and face, on a regular subdivision of the blocks.
 //!
-//! All nodes of a block see each other; no edge is stored. Neighbouring blocks
+//! Longer edges carry more nodes, so that their spacing is about the same along
+//! all axes. All nodes of a block see each other; no edge is stored. Neighbouring blocks
 //! share the nodes of their common face, edge or corner. The lattice is
 //! addressed as if blocks had interior nodes too, which stay unused.
 
@@ -15,10 +16,13 @@ use crate::vec3::{Vec3, norm};
 /// Most values that tables of distances may hold in all (1 MiB).
 const LARGEST_TABLES: usize = 1 << 18;
 
+/// Most nodes on a block's surface; their numbers fit a byte.
+const MOST_SURFACE_NODES: usize = 224;
+
 /// A node on the surface of a block.
 #[derive(Debug, Clone)]
 pub struct SurfaceNode {
-    /// Subdivision indices inside the block, `0..=subdivisions` each.
+    /// Subdivision indices inside the block, from 0 to the axis's subdivisions.
     pub steps: [usize; 3],
     /// Offset in the lattice from the block's first node.
     pub offset: usize,
@@ -31,7 +35,7 @@ pub struct SurfaceNode {
 /// Node numbering and block shapes for one set of edges.
 #[derive(Debug)]
 pub struct Lattice {
-    subdivisions: usize,
+    subdivisions: [usize; 3],
     strides: [usize; 3],
     node_count: usize,
     surface: Vec<SurfaceNode>,
@@ -46,14 +50,14 @@ pub struct Lattice {
 
 impl Lattice {
     /// A lattice with `per_edge` nodes inside each edge and `per_edge²` inside
-    /// each face.
+    /// each face of a cube; in other blocks as many in all, shared out by length.
     pub fn new<C: Chart>(blocks: &Blocks<C>, per_edge: usize) -> Self {
-        let subdivisions = per_edge + 1;
-        let sizes = [0, 1, 2].map(|axis| blocks.size(axis) * subdivisions + 1);
+        let subdivisions = subdivisions(blocks, per_edge + 1);
+        let sizes = [0, 1, 2].map(|axis| blocks.size(axis) * subdivisions[axis] + 1);
         let strides = [sizes[1] * sizes[2], sizes[2], 1];
         let surface = surface_nodes(subdivisions, strides);
         let coordinates = (0..3)
-            .map(|axis| node_coordinates(blocks.edges(axis), subdivisions))
+            .map(|axis| node_coordinates(blocks.edges(axis), subdivisions[axis]))
             .collect();
         let lanes = surface.len().div_ceil(LANES) * LANES;
         let mut lattice = Self {
@@ -77,8 +81,8 @@ impl Lattice {
         lattice
     }
 
-    /// Subdivisions of a block edge.
-    pub fn subdivisions(&self) -> usize {
+    /// Subdivisions of a block edge along each axis.
+    pub fn subdivisions(&self) -> [usize; 3] {
         self.subdivisions
     }
 
@@ -100,8 +104,9 @@ impl Lattice {
     /// Lattice index of a block's first node.
     #[inline]
     pub fn base(&self, cell: Cell) -> usize {
-        self.subdivisions
-            * (cell[0] * self.strides[0] + cell[1] * self.strides[1] + cell[2] * self.strides[2])
+        (0..3)
+            .map(|axis| cell[axis] * self.subdivisions[axis] * self.strides[axis])
+            .sum()
     }
 
     /// Lattice index of a block corner.
@@ -124,7 +129,8 @@ impl Lattice {
     #[inline]
     pub fn node_position(&self, cell: Cell, node: usize) -> Vec3 {
         let steps = self.surface[node].steps;
-        [0, 1, 2].map(|axis| self.coordinates[axis][cell[axis] * self.subdivisions + steps[axis]])
+        [0, 1, 2]
+            .map(|axis| self.coordinates[axis][cell[axis] * self.subdivisions[axis] + steps[axis]])
     }
 
     /// Cartesian positions of a block's surface nodes relative to its first
@@ -239,13 +245,36 @@ fn node_coordinates(edges: &[f64], subdivisions: usize) -> Vec<f64> {
     coordinates
 }
 
-fn surface_nodes(subdivisions: usize, strides: [usize; 3]) -> Vec<SurfaceNode> {
-    let on_surface = |steps: [usize; 3]| steps.iter().any(|&s| s == 0 || s == subdivisions);
-    let span = 0..=subdivisions;
+/// Subdivisions along each axis: `in_cube` for cubes, more along axes whose
+/// blocks are wider than the mean and fewer along others.
+fn subdivisions<C: Chart>(blocks: &Blocks<C>, in_cube: usize) -> [usize; 3] {
+    let spacing = blocks.mean_width_km() / in_cube as f64;
+    let mut wanted = [0, 1, 2].map(|axis| {
+        let steps = blocks.mean_width_along(axis) / spacing;
+        (steps.round() as usize).max(2)
+    });
+    while surface_count(wanted) > MOST_SURFACE_NODES {
+        let longest = (0..3).max_by_key(|&axis| wanted[axis]).unwrap_or(0);
+        wanted[longest] -= 1;
+    }
+    wanted
+}
+
+fn surface_count(subdivisions: [usize; 3]) -> usize {
+    let all: usize = subdivisions.iter().map(|steps| steps + 1).product();
+    let inside: usize = subdivisions.iter().map(|steps| steps - 1).product();
+    all - inside
+}
+
+fn surface_nodes(subdivisions: [usize; 3], strides: [usize; 3]) -> Vec<SurfaceNode> {
+    let on_surface = |steps: [usize; 3]| {
+        (0..3).any(|axis| steps[axis] == 0 || steps[axis] == subdivisions[axis])
+    };
     let mut all = Vec::new();
-    for a in span.clone() {
-        for b in span.clone() {
-            all.extend(span.clone().map(|c| [a, b, c]).filter(|&s| on_surface(s)));
+    for a in 0..=subdivisions[0] {
+        for b in 0..=subdivisions[1] {
+            let line = (0..=subdivisions[2]).map(|c| [a, b, c]);
+            all.extend(line.filter(|&steps| on_surface(steps)));
         }
     }
     let number: HashMap<[usize; 3], u8> = all.iter().copied().zip(0..).collect();
@@ -260,16 +289,16 @@ fn surface_nodes(subdivisions: usize, strides: [usize; 3]) -> Vec<SurfaceNode> {
 
 fn shared_with(
     steps: [usize; 3],
-    subdivisions: usize,
+    subdivisions: [usize; 3],
     number: &HashMap<[usize; 3], u8>,
 ) -> Vec<(u8, u8)> {
     let mut shared = Vec::new();
     for code in (0..27_u8).filter(|&code| code != 13) {
         let shift = [code / 9, code / 3 % 3, code % 3];
         let inside = [0, 1, 2].map(|axis| match shift[axis] {
-            0 if steps[axis] == 0 => Some(subdivisions),
+            0 if steps[axis] == 0 => Some(subdivisions[axis]),
             1 => Some(steps[axis]),
-            2 if steps[axis] == subdivisions => Some(0),
+            2 if steps[axis] == subdivisions[axis] => Some(0),
             _ => None,
         });
         if let [Some(a), Some(b), Some(c)] = inside {

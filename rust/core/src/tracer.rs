@@ -39,7 +39,8 @@ pub struct Quality {
     /// Nodes along each side of a face of the fine graph; 0 leaves the fine
     /// search out.
     pub fine_nodes: usize,
-    /// Relative excess of the fine graph's times over true ones.
+    /// Relative excess of the fine graph's times over true ones, in cubes; it
+    /// grows with the square of the blocks' flatness.
     pub fine_bias: f64,
     /// How much later than the present ray a fine path may be, as a share of the
     /// mean time through a block.
@@ -119,6 +120,7 @@ pub struct Tracer<'a, C> {
     surface: Option<&'a Surface>,
     quality: Quality,
     transit_s: f64,
+    fine_bias: f64,
 }
 
 /// Memory of one thread.
@@ -146,6 +148,7 @@ impl<'a, C: Chart> Tracer<'a, C> {
             surface,
             quality,
             transit_s: blocks.mean_transit_s(),
+            fine_bias: quality.fine_bias * blocks.flatness().powi(2),
         }
     }
 
@@ -309,7 +312,7 @@ impl<'a, C: Chart> Tracer<'a, C> {
         workspace: &mut Workspace<'_, C>,
     ) -> Option<Path> {
         let inside = present.time(self.blocks);
-        let stretched = inside * (1.0 + self.quality.fine_bias);
+        let stretched = inside * (1.0 + self.fine_bias);
         let scale = (stretched / graph_time) as f32;
         let mut limit_s = stretched + slack_s;
         let start = match beginning {

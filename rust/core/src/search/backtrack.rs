@@ -70,7 +70,7 @@ fn holders<C: Chart>(search: &CoarseSearch<'_, C>, cell: Cell, node: usize) -> V
     let last = search.lattice().subdivisions();
     let span = [0, 1, 2].map(|axis| {
         let low = cell[axis] - usize::from(steps[axis] == 0 && cell[axis] > 0);
-        let more = steps[axis] == last && cell[axis] + 1 < blocks.size(axis);
+        let more = steps[axis] == last[axis] && cell[axis] + 1 < blocks.size(axis);
         low..=cell[axis] + usize::from(more)
     });
     let mut found = Vec::with_capacity(8);

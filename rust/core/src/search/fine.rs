@@ -50,7 +50,7 @@ pub struct FineSearch<'a, C> {
     layout: FaceLayout,
     rows: RowIndex,
     boxes: BoxSet,
-    interpolation: Vec<(usize, f32)>,
+    interpolation: [Vec<(usize, f32)>; 3],
     bucket_width_s: f32,
     face_offsets: [usize; 3],
     face_count: usize,
@@ -118,14 +118,15 @@ impl<'a, C: Chart> FineSearch<'a, C> {
     /// comes from a coarse search over `lattice`.
     pub fn new(blocks: &'a Blocks<C>, lattice: &'a Lattice, nodes: usize) -> Self {
         let layout = FaceLayout::new(nodes);
-        let steps = lattice.subdivisions();
-        let interpolation = (0..nodes)
-            .map(|index| {
-                let place = layout.fraction(index) * steps as f64;
-                let step = (place as usize).min(steps - 1);
-                (step, (place - step as f64) as f32)
-            })
-            .collect();
+        let interpolation = lattice.subdivisions().map(|steps| {
+            (0..nodes)
+                .map(|index| {
+                    let place = layout.fraction(index) * steps as f64;
+                    let step = (place as usize).min(steps - 1);
+                    (step, (place - step as f64) as f32)
+                })
+                .collect()
+        });
         let fastest = blocks
             .slowness()
             .iter()
@@ -326,8 +327,9 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             field.face_slot[id] = field.faces.len() as u32;
             let (start, stride_u, stride_v) = self.lattice.face(cell, side);
             let mut least = f32::INFINITY;
-            for i in 0..=self.lattice.subdivisions() {
-                for j in 0..=self.lattice.subdivisions() {
+            let (u, v) = face_axes(side / 2);
+            for i in 0..=self.lattice.subdivisions()[u] {
+                for j in 0..=self.lattice.subdivisions()[v] {
                     least = least.min(bound.potential[start + i * stride_u + j * stride_v]);
                 }
             }
@@ -364,8 +366,9 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         let cell = self.blocks.cell(field.visited[slot].block);
         let (start, stride_u, stride_v) = self.lattice.face(cell, side);
         let coarse = |i: usize, j: usize| bound.potential[start + i * stride_u + j * stride_v];
-        for (row, &(i, fu)) in self.interpolation.iter().enumerate() {
-            for (column, &(j, fv)) in self.interpolation.iter().enumerate() {
+        let (u, v) = face_axes(side / 2);
+        for (row, &(i, fu)) in self.interpolation[u].iter().enumerate() {
+            for (column, &(j, fv)) in self.interpolation[v].iter().enumerate() {
                 let low = coarse(i, j) + fv * (coarse(i, j + 1) - coarse(i, j));
                 let high = coarse(i + 1, j) + fv * (coarse(i + 1, j + 1) - coarse(i + 1, j));
                 field.potentials[place + row * self.layout.lanes + column] =

@@ -1,0 +1,1 @@
+"""Benchmarks of rayloom: one subject per file, rivals side by side in one run."""
