@@ -97,8 +97,8 @@ fn shear_waves_use_their_own_velocity() {
 }
 
 /// A reflected wave of straight rays bounces at half the distance: the law of
-/// cosines. A wave through the inner core
-/// needs one; it is then a chord, and turns by π at the centre.
+/// cosines. A wave through the inner core needs one; it is then a chord, and turns
+/// by π at the centre.
 #[test]
 fn waves_of_a_uniform_earth_are_chords() {
     let fluid = earth(&[(0.0, 8.0), (3000.0, 8.0)]);
