@@ -192,6 +192,7 @@ def test_phases_uncertainties_and_left_out_picks(tmp_path: Path, survey: Survey)
             pick("5", "XB.EPS"),
             pick("6", "ZZ.FAR", more=hint),
             pick("7", "XB.SEA", time="03:15:00", more=hint),
+            pick("9", "XA.", more=hint),
             pick("8", "XB.ZET", more=hint).replace(
                 "Z</value>", "Z</value><uncertainty>0</uncertainty>"
             ),
@@ -213,7 +214,7 @@ def test_phases_uncertainties_and_left_out_picks(tmp_path: Path, survey: Survey)
         "1 picks of",
         "marked as rejected",
         "neither an arrival nor a phase hint",
-        "at stations that the stations table does not have (ZZ.FAR of e1)",
+        "at stations that the stations table does not have (ZZ.FAR of e1, XA. of e1)",
         "not within an hour after the origin (XB.SEA of e1)",
         "name no network",
         "3 of 4 rows of",
@@ -230,7 +231,14 @@ def test_problems_of_quake_ml_name_lines_of_the_file(tmp_path: Path, survey: Sur
     path = written(tmp_path, quake_ml("\n".join(lines)))
     with pytest.raises(FileProblemsError) as caught:
         read_picks(path, survey.stations, read_events(path))
+    assert len(caught.value.problems) == 1
     assert caught.value.problems[0].startswith("line 8, column uncertainty_s: '99.0'")
+    path = written(tmp_path, quake_ml("\n".join(lines[:3])).replace("04:15:00Z", "soon"))
+    with pytest.raises(FileProblemsError) as caught:
+        read_picks(path, survey.stations, read_events(path))
+    assert caught.value.problems == (
+        "line 6, column time: blank; expected a UTC time such as 2021-03-07T04:05:06.78Z",
+    )
 
 
 BOMB = (

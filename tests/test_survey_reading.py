@@ -161,6 +161,13 @@ def test_frames_go_there_and_back(tmp_path: Path, stations: Stations, events: Ev
             np.testing.assert_array_equal(getattr(back, name), getattr(table, name))
 
 
+def test_frames_keep_times_at_midnight(events: Events) -> None:
+    """By itself pandas writes a column of midnights as days."""
+    midnight = np.array(["2019-03-07", "2019-03-08", "2019-03-09"], dtype="datetime64[ns]")
+    frame = events.to_frame().assign(time=midnight)
+    np.testing.assert_array_equal(Events.from_frame(frame).time, midnight)
+
+
 def test_tables_are_read_only_and_select_rows(stations: Stations) -> None:
     with pytest.raises(ValueError, match="read-only"):
         stations.latitude_deg[0] = 0.0

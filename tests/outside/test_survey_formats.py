@@ -11,7 +11,9 @@ import pytest
 from rayloom.earth import ReferenceEarth
 from rayloom.errors import FileProblemsError
 from rayloom.residuals import Residuals, compute_residuals
+from rayloom.settings import read_run_settings
 from rayloom.survey import read_events, read_picks, read_stations, read_survey
+from rayloom.workflow import Tables, initialise
 from survey_files import example_survey, write_csv, write_fdsn, write_xml
 
 with warnings.catch_warnings():
@@ -52,6 +54,14 @@ def test_one_survey_in_each_format_gives_the_same_residuals(tmp_path: Path) -> N
         np.testing.assert_array_equal(
             found.events.event[found.event_index], expected.events.event[expected.event_index]
         )
+
+
+def test_run_folders_are_made_from_open_formats(tmp_path: Path) -> None:
+    """One QuakeML file serves as events and picks."""
+    paths = write_xml(example_survey(), tmp_path)
+    folder = initialise(tmp_path / "run", Tables(**paths))
+    named = read_run_settings(folder.settings_file).inputs
+    assert named.events == named.picks == Path("../catalogue.xml")
 
 
 @pytest.mark.parametrize(

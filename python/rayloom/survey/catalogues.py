@@ -8,10 +8,11 @@ from rayloom.survey.columns import ColumnReader
 from rayloom.survey.epochs import NO_EPOCH, UNKNOWN_STATION, EpochFinder
 from rayloom.survey.events import Events
 from rayloom.survey.notices import Notice, few
+from rayloom.survey.problems import Problems
 from rayloom.survey.references import UNKNOWN_EVENT, find_events
 from rayloom.survey.stations import Stations
 from rayloom.survey.tables import BoolArray, TimeArray, seconds_between
-from rayloom.survey.text_table import Problems, TextTable
+from rayloom.survey.text_table import TextTable
 
 
 def picks_of_survey(
@@ -34,10 +35,10 @@ def picks_of_survey(
         Time after the origin beyond which no pick counts, s.
     """
     named = _with_networks(table, stations)
-    reader = ColumnReader(named)
+    scratch = Problems(table.source)
+    reader = ColumnReader(TextTable(named.columns, named.lines, scratch))
     codes = {name: reader.text(name) for name in ("event", "network", "station", "phase")}
     time = reader.time("time")
-    scratch = Problems(table.source)
     event = find_events(codes["event"], events, table.lines, scratch)
     found = EpochFinder(stations).find(codes["network"], codes["station"], time)
     reasons = {

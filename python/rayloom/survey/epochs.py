@@ -9,8 +9,8 @@ from typing import TYPE_CHECKING, Final
 import numpy as np
 
 from rayloom.survey.notices import Notice, few
+from rayloom.survey.problems import Problems
 from rayloom.survey.tables import BoolArray, IndexArray, TextArray, TimeArray
-from rayloom.survey.text_table import Problems
 
 if TYPE_CHECKING:
     from rayloom.survey.stations import Stations

@@ -10,6 +10,7 @@ import numpy as np
 from rayloom.survey.columns import ColumnReader, Span
 from rayloom.survey.formats import Paths, Progress, read_table
 from rayloom.survey.notices import Notice
+from rayloom.survey.problems import Problems
 from rayloom.survey.spans import LATITUDE, LONGITUDE
 from rayloom.survey.stations import wrapped_longitude_deg
 from rayloom.survey.tables import (
@@ -20,7 +21,7 @@ from rayloom.survey.tables import (
     TimeArray,
     no_floats,
 )
-from rayloom.survey.text_table import Problems, TextTable, text_table_of_frame
+from rayloom.survey.text_table import TextTable, text_table_of_frame
 
 if TYPE_CHECKING:
     import pandas as pd

@@ -11,9 +11,9 @@ import numpy as np
 from rayloom.survey.epochs import NO_EPOCH, UNKNOWN_STATION, EpochFinder
 from rayloom.survey.events import Events
 from rayloom.survey.notices import few
+from rayloom.survey.problems import Problems
 from rayloom.survey.stations import Stations
 from rayloom.survey.tables import BoolArray, IndexArray, TextArray, TimeArray
-from rayloom.survey.text_table import Problems
 
 UNKNOWN_EVENT: Final = -1
 _GUESSES: Final = 20

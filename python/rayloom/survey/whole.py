@@ -70,12 +70,7 @@ def read_survey(
         If a file is XML and obspy is not installed.
     """
     notices: list[Notice] = []
-    hear = _stages(
-        progress,
-        total_bytes(stations, "stations"),
-        total_bytes(events, "events"),
-        total_bytes(picks, "picks"),
-    )
+    hear = _stages(progress, stations, events, picks)
     station_table = read_stations(stations, notices=notices, progress=hear[0])
     event_table = read_events(events, notices=notices, progress=hear[1])
     pick_table = read_picks(
@@ -86,11 +81,18 @@ def read_survey(
     return Survey(station_table, event_table, pick_table, notices)
 
 
-def _stages(progress: Progress | None, *sizes: int) -> list[Progress | None]:
+def _stages(
+    progress: Progress | None, stations: Paths, events: Paths, picks: Paths
+) -> list[Progress | None]:
     """Give each stage of the reading a progress of its own that counts on from the last."""
     if progress is None:
-        return [None] * len(sizes)
+        return [None] * 3
     told = progress
+    sizes = [
+        total_bytes(stations, "stations"),
+        total_bytes(events, "events"),
+        total_bytes(picks, "picks"),
+    ]
 
     def stage(before: int) -> Progress:
         return lambda done, _total: told(before + done, sum(sizes))

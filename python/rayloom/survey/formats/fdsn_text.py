@@ -12,7 +12,8 @@ from typing import Final, Literal
 
 from rayloom.survey.formats.names import event_name
 from rayloom.survey.formats.sites import station_table
-from rayloom.survey.text_table import Problems, TextTable, decoded, table_of_text
+from rayloom.survey.problems import Problems
+from rayloom.survey.text_table import TextTable, decoded, table_of_text
 
 Service = Literal["stations", "events", "networks"]
 

@@ -11,7 +11,7 @@ import numpy as np
 
 from rayloom.errors import MissingExtraError
 from rayloom.survey.formats.xml_outline import Part, Shape, document, documents, outline
-from rayloom.survey.text_table import Problems
+from rayloom.survey.problems import Problems
 
 EXTRA: Final = "formats"
 

@@ -21,7 +21,8 @@ from rayloom.survey.formats.parsing import (
 )
 from rayloom.survey.formats.xml_outline import Part, Shape
 from rayloom.survey.notices import Notice, few
-from rayloom.survey.text_table import Problems, TextTable
+from rayloom.survey.problems import Problems
+from rayloom.survey.text_table import TextTable
 from rayloom.units import M_PER_KM
 
 _EVENT_COLUMNS: Final = ("event", "time", "latitude", "longitude", "depth_km", "magnitude")

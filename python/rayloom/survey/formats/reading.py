@@ -19,14 +19,8 @@ from rayloom.survey.formats.recognition import (
 )
 from rayloom.survey.formats.station_xml import read_station_xml
 from rayloom.survey.notices import Notice, few
-from rayloom.survey.text_table import (
-    FileLine,
-    Problems,
-    TextTable,
-    csv_table,
-    read_bytes,
-    unreadable,
-)
+from rayloom.survey.problems import FileLine, Problems
+from rayloom.survey.text_table import TextTable, csv_table, read_bytes, unreadable
 
 Paths = str | Path | Sequence[str | Path]
 """A file, a folder of files, or several of either."""

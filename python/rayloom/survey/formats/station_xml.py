@@ -19,7 +19,8 @@ from rayloom.survey.formats.parsing import (
 )
 from rayloom.survey.formats.sites import STATION_ITSELF, station_table
 from rayloom.survey.formats.xml_outline import Part, Shape
-from rayloom.survey.text_table import Problems, TextTable
+from rayloom.survey.problems import Problems
+from rayloom.survey.text_table import TextTable
 
 _COLUMNS: Final = (
     "network",

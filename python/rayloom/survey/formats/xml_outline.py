@@ -13,7 +13,7 @@ from dataclasses import dataclass, field
 from typing import Any, Final
 from xml.parsers import expat
 
-from rayloom.survey.text_table import Problems
+from rayloom.survey.problems import Problems
 
 PIECE_BYTES: Final = 65_536
 """Parts are gathered into pieces of about this size."""
