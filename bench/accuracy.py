@@ -12,6 +12,7 @@ from bench.closed_forms import gradient_s, homogeneous_s, layers_s
 from bench.errors import ERROR_COLUMNS, ErrorSummary, summarise
 from bench.models import KM_PER_DEGREE, box_grid, layered, random_points
 from bench.report import Report, Table
+from rayloom.forward import trace
 
 Floats = NDArray[np.float64]
 QUALITIES = ("standard", "thorough")
@@ -39,7 +40,7 @@ def _homogeneous(report: Report, table: Table, quality: str, count: int, *, sphe
     model = layered(grid, lambda depth: np.full_like(depth, 8.0))
     sources = random_points(grid, count, (1.0, 299.0), seed=1)
     receivers = random_points(grid, count, (0.0, 299.0), seed=2)
-    rays = rl.trace(model, sources, receivers, quality=quality)
+    rays = trace(model, sources, receivers, quality=quality)
     place = _cartesian if sphere else np.asarray
     errors = summarise(rays.time_s, homogeneous_s(place(sources), place(receivers), 8.0))
     where = "sphere" if sphere else "flat"
@@ -89,7 +90,7 @@ def _against_layers(
     grid = model.grid
     sources = random_points(grid, count, source_depths_km, seed=3)
     receivers = random_points(grid, count, (0.0, 0.0), seed=4)
-    rays = rl.trace(model, sources, receivers, quality=quality)
+    rays = trace(model, sources, receivers, quality=quality)
     column = model.slowness_s_per_km[0, 0]
     return summarise(rays.time_s, layers_s(sources, receivers, grid.depth_edges_km, column))
 
@@ -101,7 +102,7 @@ def _convergence(report: Report, table: Table, count: int, blocks_km: tuple[floa
         grid = box_grid(shape, block_km)
         sources = random_points(grid, count, (100.0, 199.0), seed=5)
         receivers = random_points(grid, count, (0.0, 0.0), seed=6)
-        rays = rl.trace(layered(grid, _gradient), sources, receivers, quality="thorough")
+        rays = trace(layered(grid, _gradient), sources, receivers, quality="thorough")
         exact = gradient_s(sources, receivers, SURFACE_KM_S, GRADIENT_PER_S)
         errors = summarise(rays.time_s, exact)
         means.append(errors.mean)

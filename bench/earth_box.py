@@ -11,7 +11,7 @@ import rayloom as rl
 from bench.report import Report, Table
 from bench.surveys import distant_events, network
 from rayloom.earth import distance_azimuth_deg, geocentric_latitude_deg
-from rayloom.forward import Rays
+from rayloom.forward import Rays, trace_distant
 from rayloom.model import SuggestionSettings, suggest_grid
 from rayloom.survey import Events, Picks, Stations, Survey
 
@@ -71,7 +71,7 @@ def _one_grid(
     grid = suggest_grid(_survey(stations, events), earth, wishes).grid
     _require_inside(grid, stations)
     model = rl.SlownessModel.from_earth(grid, earth)
-    rays = rl.trace_distant(model, earth, events, stations, quality=quality)
+    rays = trace_distant(model, earth, events, stations, quality=quality)
     before, relative = _differences(rays, earth, events, stations)
     found = 1e3 * float(relative.std()), 1e3 * float(np.abs(relative).max())
     mean, missing = 1e3 * float(before.mean()), int((~rays.traced).sum())

@@ -15,6 +15,7 @@ from bench.errors import summarise
 from bench.models import box_grid, layered
 from bench.report import Report, Table
 from bench.stopwatch import Lap, race
+from rayloom.forward import trace
 
 Floats = NDArray[np.float64]
 SPACING_KM = 3.0
@@ -100,7 +101,7 @@ def _ends(extent_km: Floats) -> tuple[Floats, Floats]:
 
 
 def _bent(model: rl.SlownessModel, source: Floats, receivers: Floats) -> Any:
-    return lambda: rl.trace(model, source, receivers, threads=1).time_s
+    return lambda: trace(model, source, receivers, threads=1).time_s
 
 
 def _fast_marching(extent_km: Floats, source: Floats, receivers: Floats) -> Floats:

@@ -15,6 +15,7 @@ from bench.isolation import Isolated, run_isolated
 from bench.job import Size, smooth_case
 from bench.report import Report
 from bench.stopwatch import REPEATS
+from rayloom.forward import trace_distant
 
 MANY_RAYS = 100_000
 EXTENT_KM = (1125.0, 750.0, 600.0)
@@ -106,7 +107,7 @@ def prepare(
     earth = rl.ReferenceEarth("ak135")
 
     def work() -> dict[str, Any]:
-        rays = rl.trace_distant(model, earth, sources, receivers, threads=threads)
+        rays = trace_distant(model, earth, sources, receivers, threads=threads)
         return {"missing": int((~rays.traced).sum())}
 
     return work

@@ -17,8 +17,8 @@ from bench.report import Report
 from bench.stopwatch import REPEATS
 from bench.surveys import distant_events, network
 from rayloom.earth import distance_azimuth_deg, geocentric_latitude_deg
-from rayloom.forward import Rays
-from rayloom.inversion import InversionSettings
+from rayloom.forward import Rays, trace_distant
+from rayloom.inversion import InversionSettings, invert
 from rayloom.residuals import Residuals
 from rayloom.survey import Events, Stations
 
@@ -86,7 +86,7 @@ def prepare(shape: list[int], stations: int, events: int) -> Callable[[], dict[s
     settings = InversionSettings(threads=THREADS)
 
     def work() -> dict[str, Any]:
-        result = rl.invert(data, model, settings)
+        result = invert(data, model, settings)
         crossed = result.model.fields["hits"] >= WELL_CROSSED
         found = result.model.perturbation_percent[crossed]
         return {
@@ -108,8 +108,8 @@ def _residuals(
     stations: Stations,
 ) -> Residuals:
     options: dict[str, Any] = {"threads": THREADS}
-    reference = rl.trace_distant(model, earth, events, stations, **options)
-    true = rl.trace_distant(truth, earth, events, stations, quality="thorough", **options)
+    reference = trace_distant(model, earth, events, stations, **options)
+    true = trace_distant(truth, earth, events, stations, quality="thorough", **options)
     kept = np.flatnonzero(reference.traced & true.traced)
     noise_s = np.random.default_rng(84).normal(0.0, NOISE_S, kept.size)
     return _table(

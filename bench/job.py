@@ -16,6 +16,7 @@ from bench.models import box_grid, roughened
 from bench.report import Report, Table
 from bench.stopwatch import REPEATS, clock
 from bench.surveys import distant_events, network
+from rayloom.forward import trace_distant
 from rayloom.survey import Events, Stations
 
 THREADS = 2
@@ -113,7 +114,7 @@ def prepare(quick: bool, quality: str) -> Callable[[], dict[str, Any]]:
     earth = rl.ReferenceEarth("ak135")
 
     def work() -> dict[str, Any]:
-        rays = rl.trace_distant(model, earth, events, stations, quality=quality, threads=THREADS)
+        rays = trace_distant(model, earth, events, stations, quality=quality, threads=THREADS)
         return {
             "values": rays.path_lengths.nnz / len(rays),
             "points": len(rays.all_points) / len(rays),
@@ -131,9 +132,9 @@ def prepare_retracing(quick: bool, quality: str) -> Callable[[], dict[str, Any]]
     options = {"quality": quality, "threads": THREADS}
 
     def work() -> dict[str, Any]:
-        _, first, rays = clock(lambda: rl.trace_distant(model, earth, events, stations, **options))
+        _, first, rays = clock(lambda: trace_distant(model, earth, events, stations, **options))
         _, second, again = clock(
-            lambda: rl.trace_distant(changed, earth, events, stations, previous=rays, **options)
+            lambda: trace_distant(changed, earth, events, stations, previous=rays, **options)
         )
         return {"first_cpu_s": first, "second_cpu_s": second, "jumps": again.basin_jumps}
 

@@ -20,6 +20,7 @@ from bench.errors import ERROR_COLUMNS, summarise
 from bench.models import box_grid, layered, mantle_like, random_points, roughened
 from bench.report import Report, Table
 from bench.stopwatch import clock
+from rayloom.forward import trace
 
 Floats = NDArray[np.float64]
 BLOCK_KM = 15.0
@@ -129,6 +130,6 @@ def _times(
 ) -> Floats:
     """Trace all pairs; with equally many ends the search starts from the second ones."""
     ends = (deep, shallow) if forth else (shallow, deep)
-    rays = rl.trace(model, *ends, quality=quality, face_nodes=face_nodes)
+    rays = trace(model, *ends, quality=quality, face_nodes=face_nodes)
     times = rays.time_s.reshape(len(ends[0]), len(ends[1]))
     return np.asarray((times if forth else times.T).ravel())

@@ -10,11 +10,11 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.sparse import csr_array, vstack
 
-import rayloom as rl
 from bench.models import box_grid, layered, mantle_like, random_points
 from bench.report import Report, Table
 from bench.stopwatch import Lap, race
 from rayloom._core import SparseProducts
+from rayloom.forward import trace
 
 Floats = NDArray[np.float64]
 THREADS = 2
@@ -120,7 +120,7 @@ def _path_lengths(stations: int, deep: int) -> csr_array:
     model = layered(grid, mantle_like)
     below = random_points(grid, deep, (560.0, 599.0), seed=62)
     above = random_points(grid, stations, (0.5, 0.5), seed=63)
-    return rl.trace(model, below, above, method="straight").path_lengths
+    return trace(model, below, above, method="straight").path_lengths
 
 
 def _copy(mebibytes: int) -> Callable[[], None]:
