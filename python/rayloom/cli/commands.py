@@ -59,7 +59,7 @@ def _again_option(command: Command) -> Command:
 def _file_option(name: str, columns: str, *, required: bool = False) -> Callable[..., Any]:
     return click.option(
         name,
-        type=click.Path(dir_okay=False, path_type=Path),
+        type=click.Path(path_type=Path),
         metavar="FILE",
         required=required,
         help=columns,
@@ -100,10 +100,17 @@ def demo(ctx: click.Context, folder: Path, quiet: bool) -> None:
 @main.command()
 @_folder_argument
 @_file_option(
-    "--stations", "CSV: network, station, latitude, longitude, elevation_m.", required=True
+    "--stations",
+    "CSV: network, station, latitude, longitude, elevation_m; or StationXML or FDSN text. "
+    "A folder stands for all files in it.",
+    required=True,
 )
-@_file_option("--events", "CSV: event, time, latitude, longitude, depth_km.", required=True)
-@_file_option("--picks", "CSV: event, network, station, phase, time, uncertainty_s.")
+@_file_option(
+    "--events",
+    "CSV: event, time, latitude, longitude, depth_km; or QuakeML or FDSN text.",
+    required=True,
+)
+@_file_option("--picks", "CSV: event, network, station, phase, time, uncertainty_s; or QuakeML.")
 @_file_option("--residuals", "CSV with residual_s in place of time, if you have residuals ready.")
 @click.option(
     "--earth",

@@ -27,11 +27,11 @@ class InputSettings(BaseModel):
     Attributes
     ----------
     stations : path
-        network, station, latitude, longitude, elevation_m.
+        CSV with network, station, latitude, longitude, elevation_m; StationXML; FDSN text.
     events : path
-        event, time, latitude, longitude, depth_km.
+        CSV with event, time, latitude, longitude, depth_km; QuakeML; FDSN text.
     picks : path, optional
-        event, network, station, phase, time, uncertainty_s.
+        CSV with event, network, station, phase, time, uncertainty_s; QuakeML.
     residuals : path, optional
         event, network, station, phase, residual_s, uncertainty_s.
     """

@@ -153,12 +153,15 @@ def _earth_named(folder: RunFolder, earth: str) -> str:
 
 
 def _copy(tables: Tables, folder: RunFolder) -> None:
-    files = list(tables.files().values())
-    if len({file.name for file in files}) < len(files):
+    paths = {path.resolve() for path in tables.files().values()}
+    if len({path.name for path in paths}) < len(paths):
         raise InputError("two tables have the same name; rename one, or leave out --copy")
-    for file in files:
-        target = folder.path / INPUTS / file.name
-        if target.exists() and target.samefile(file):
+    for path in paths:
+        target = folder.path / INPUTS / path.name
+        if target.exists() and target.samefile(path):
             continue
         with replacing(target) as temporary:
-            shutil.copyfile(file, temporary)
+            if path.is_dir():
+                shutil.copytree(path, temporary, dirs_exist_ok=True)
+            else:
+                shutil.copyfile(path, temporary)

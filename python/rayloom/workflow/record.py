@@ -12,6 +12,7 @@ import json
 import os
 import platform
 from collections.abc import Iterable, Mapping
+from contextlib import suppress
 from dataclasses import asdict, dataclass, field
 from pathlib import Path
 from typing import Any
@@ -89,7 +90,7 @@ class Provenance:
 
 
 def content_hash(path: Path) -> str:
-    """Return the SHA-256 of a file's bytes in hexadecimal.
+    """Return the SHA-256 of a file's bytes, or of all files in a folder, in hexadecimal.
 
     Raises
     ------
@@ -97,6 +98,9 @@ def content_hash(path: Path) -> str:
         If the file cannot be read.
     """
     try:
+        if path.is_dir():
+            inside = sorted(file for file in path.iterdir() if file.is_file())
+            return fingerprint([(file.name, content_hash(file)) for file in inside])
         with path.open("rb") as stream:
             return hashlib.file_digest(stream, "sha256").hexdigest()
     except OSError as error:
@@ -117,6 +121,8 @@ def fingerprint(*parts: object) -> str:
 def versions(packages: Iterable[str] = _PACKAGES) -> dict[str, str]:
     """Return the versions of Python and of the packages that shape the numbers."""
     found = {name: importlib.metadata.version(name) for name in packages}
+    with suppress(importlib.metadata.PackageNotFoundError):
+        found["obspy"] = importlib.metadata.version("obspy")
     return {"python": platform.python_version(), **found}
 
 
