@@ -1,6 +1,8 @@
 """The forward room's contract: order, signs, threads, messages."""
 
+from concurrent.futures import ProcessPoolExecutor, ThreadPoolExecutor
 from dataclasses import replace
+from multiprocessing import get_context
 
 import numpy as np
 import pytest
@@ -92,6 +94,19 @@ def _require_same_bits(one, two):
     assert one.path_lengths.data.tobytes() == two.path_lengths.data.tobytes()
     assert one.path_lengths.indices.tobytes() == two.path_lengths.indices.tobytes()
     assert one.all_points.tobytes() == two.all_points.tobytes()
+
+
+def test_an_executor_gives_the_same_rays(flat_model, ends, distant):
+    model, earth, events, stations = distant
+    here = rl.trace_distant(model, earth, events, stations)
+    with ProcessPoolExecutor(2, mp_context=get_context("spawn")) as elsewhere:
+        there = rl.trace_distant(model, earth, events, stations, executor=elsewhere)
+    _require_same_bits(here, there)
+    assert there.problems == here.problems
+    everything = rl.trace(flat_model, *ends)
+    with ThreadPoolExecutor(2) as threads:
+        parts = rl.trace(flat_model, *ends, executor=threads)
+    _require_same_bits(everything, parts)
 
 
 def test_rays_that_cannot_exist_are_counted_with_their_reason(distant):

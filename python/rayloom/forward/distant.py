@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from concurrent.futures import Executor
 from dataclasses import replace
+from functools import partial
 from typing import get_args
 
 import numpy as np
@@ -13,6 +15,7 @@ from rayloom import _core
 from rayloom.earth import PHASES, ReferenceEarth, phase_wave, standard_phase
 from rayloom.errors import InputError
 from rayloom.forward.core_arrays import block_model, checked_pairs, points_km, rays_of
+from rayloom.forward.joining import Part, joined, trace_in_parts
 from rayloom.forward.local import require_choice
 from rayloom.forward.rays import Rays
 from rayloom.forward.settings import DistantMethod, Quality
@@ -47,6 +50,7 @@ def trace_distant(
     face_nodes: int | None = None,
     previous: Rays | None = None,
     threads: int | None = None,
+    executor: Executor | None = None,
     progress: Progress | None = None,
 ) -> Rays:
     """Trace first arrivals of distant events through a model to stations.
@@ -81,7 +85,10 @@ def trace_distant(
     previous : Rays, optional
         Rays of the same pairs in a similar model; changes of course are counted.
     threads : int, optional
-        Number of threads; all cores by default. The result does not depend on it.
+        Number of threads; all cores by default, one with an executor. The result
+        does not depend on it.
+    executor : concurrent.futures.Executor, optional
+        Traces the rays of some stations each in its workers, here or elsewhere.
     progress : callable, optional
         Told (rays done, rays in all).
 
@@ -103,6 +110,26 @@ def trace_distant(
     require_choice("quality", quality, get_args(Quality))
     pair_rows = checked_pairs(pairs, len(events), len(stations))
     names = _phase_names(model, phases, len(pair_rows))
+    if executor is not None and len(pair_rows):
+        part = partial(
+            trace_distant,
+            model,
+            earth,
+            events,
+            stations,
+            method=method,
+            quality=quality,
+            face_nodes=face_nodes,
+            threads=threads or 1,
+        )
+        rays = trace_in_parts(
+            part,
+            {"pairs": pair_rows, "phases": names},
+            pair_rows[:, 1].astype(np.int64),
+            executor=executor,
+            progress=progress,
+        )
+        return _compared(rays, previous)
     traced_model = model if method == "bent" else model.with_slowness(model.reference)
     rays = _first_arrivals(
         traced_model,
@@ -120,9 +147,13 @@ def trace_distant(
         rays = _chords(model, rays, stations, pair_rows)
     if method != "bent":
         rays = replace(rays, time_s=rays.predict_s(model.slowness_s_per_km))
-    if previous is not None:
-        rays = replace(rays, basin_jumps=rays.course_changes(previous))
-    return rays
+    return _compared(rays, previous)
+
+
+def _compared(rays: Rays, previous: Rays | None) -> Rays:
+    if previous is None:
+        return rays
+    return replace(rays, basin_jumps=rays.course_changes(previous))
 
 
 def _phase_names(model: SlownessModel, phases: str | ArrayLike, count: int) -> Names:
@@ -199,11 +230,9 @@ def _first_arrivals(
         NO_WAVE: int((~rays.traced).sum()),
         TOO_NEAR: int((rays.traced & ~far_enough).sum()),
     }
-    kept = rays.traced & far_enough
-    return replace(
-        _spread(rays, used, kept),
-        problems={reason: number for reason, number in problems.items() if number},
-    )
+    part = Part(rays, np.flatnonzero(used), rays.traced & far_enough)
+    found = {reason: number for reason, number in problems.items() if number}
+    return joined(grid, [part], len(pairs), problems=found)
 
 
 def _waves(
@@ -224,41 +253,6 @@ def _entry_distance_deg(rays: Rays, events: Events, pairs: NDArray[np.uint32]) -
     there = frame.unit_vectors(event_x, event_y)[pairs[:, 0]]
     cosine = np.clip(np.sum(here * there, axis=1), -1.0, 1.0)
     return np.asarray(np.degrees(np.arccos(cosine)))
-
-
-def _spread(rays: Rays, used: NDArray[np.bool_], kept: NDArray[np.bool_]) -> Rays:
-    """Bring rays of the used pairs into the order of all pairs, keeping some."""
-    if used.all() and kept.all():
-        return rays
-    from scipy.sparse import csr_array
-
-    count = len(used)
-    target = np.flatnonzero(used)
-    time_s = np.full(count, np.nan)
-    outside_time_s = np.full(count, np.nan)
-    traced = np.zeros(count, dtype=bool)
-    time_s[target[kept]] = rays.time_s[kept]
-    outside_time_s[target[kept]] = rays.outside_time_s[kept]
-    traced[target[kept]] = True
-    stored = np.zeros(count, dtype=np.int64)
-    stored[target] = np.where(kept, np.diff(rays.path_lengths.indptr), 0)
-    chosen = rays.path_lengths[np.flatnonzero(kept)]
-    indptr = np.concatenate([[0], np.cumsum(stored)])
-    path_lengths = csr_array(
-        (chosen.data, chosen.indices, indptr), shape=(count, rays.grid.block_count)
-    )
-    point_counts = np.zeros(count, dtype=np.int64)
-    point_counts[target] = np.where(kept, np.diff(rays.point_offsets), 0)
-    keep_point = np.repeat(kept, np.diff(rays.point_offsets))
-    return Rays(
-        grid=rays.grid,
-        time_s=time_s,
-        outside_time_s=outside_time_s,
-        path_lengths=path_lengths,
-        traced=traced,
-        point_offsets=np.concatenate([[0], np.cumsum(point_counts)]),
-        all_points=rays.all_points[keep_point],
-    )
 
 
 def _chords(

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from concurrent.futures import Executor
+from functools import partial
 from typing import get_args
 
 import numpy as np
@@ -17,6 +19,7 @@ from rayloom.forward.core_arrays import (
     points_km,
     rays_of,
 )
+from rayloom.forward.joining import trace_in_parts
 from rayloom.forward.rays import Rays
 from rayloom.forward.settings import LocalMethod, Quality
 from rayloom.model import BlockGrid, SlownessModel
@@ -34,6 +37,7 @@ def trace(
     quality: Quality = "standard",
     face_nodes: int | None = None,
     threads: int | None = None,
+    executor: Executor | None = None,
     progress: Progress | None = None,
 ) -> Rays:
     """Trace first arrivals between points inside a model.
@@ -56,7 +60,10 @@ def trace(
         Coarse graph nodes inside each block edge, and squared inside each face;
         by default that of the quality (2 or 3).
     threads : int, optional
-        Number of threads; all cores by default. The result does not depend on it.
+        Number of threads; all cores by default, one with an executor. The result
+        does not depend on it.
+    executor : concurrent.futures.Executor, optional
+        Traces the rays of some receivers each in its workers, here or elsewhere.
     progress : callable, optional
         Told (rays done, rays in all).
 
@@ -78,11 +85,30 @@ def trace(
     receiver_points = _inside("receivers", model.grid, receivers)
     require_choice("method", method, get_args(LocalMethod))
     require_choice("quality", quality, get_args(Quality))
+    pair_rows = checked_pairs(pairs, len(source_points), len(receiver_points))
+    if executor is not None and len(pair_rows):
+        part = partial(
+            trace,
+            model,
+            source_points,
+            receiver_points,
+            method=method,
+            quality=quality,
+            face_nodes=face_nodes,
+            threads=threads or 1,
+        )
+        return trace_in_parts(
+            part,
+            {"pairs": pair_rows},
+            pair_rows[:, 1].astype(np.int64),
+            executor=executor,
+            progress=progress,
+        )
     arrays = _core.trace_between(
         block_model(model),
         points_km(model.grid, source_points),
         points_km(model.grid, receiver_points),
-        checked_pairs(pairs, len(source_points), len(receiver_points)),
+        pair_rows,
         method=method,
         quality=quality,
         coarse_nodes=face_nodes,
