@@ -1,4 +1,5 @@
 import csv
+from dataclasses import replace
 
 import numpy as np
 import pandas as pd
@@ -150,7 +151,7 @@ def rows_of(path):
 
 def test_residuals_before_and_after_stand_side_by_side(result, tmp_path):
     write_tables(tmp_path, result)
-    rows = rows_of(tmp_path / "residuals.csv")
+    rows = rows_of(tmp_path / "residuals_after.csv")
     assert list(rows[0])[:5] == ["event", "network", "station", "phase", "wave"]
     assert [float(row["residual_s"]) for row in rows] == BEFORE_S.tolist()
     assert [float(row["residual_after_s"]) for row in rows[:8]] == (0.5 * BEFORE_S[:8]).tolist()
@@ -160,6 +161,18 @@ def test_residuals_before_and_after_stand_side_by_side(result, tmp_path):
     assert rows[8]["weight"] == "0"
     assert rows[8]["left_out_because"] == "no ray reaches the station"
     assert float(rows[0]["predicted_s"]) == pytest.approx(608.3172345, abs=1e-6)
+
+
+def test_suspects_are_listed_with_flags_spelt_as_in_every_table(result, tmp_path):
+    write_tables(tmp_path, result)
+    (suspect,) = rows_of(tmp_path / "suspected_outliers.csv")
+    (same,) = [
+        row
+        for row in rows_of(tmp_path / "residuals_after.csv")
+        if row["suspected_outlier"] == "true"
+    ]
+    assert suspect == {name: same[name] for name in suspect}
+    assert {row["solver_converged"] for row in rows_of(tmp_path / "history.csv")} == {"true"}
 
 
 def test_residuals_before_an_inversion(result):
@@ -236,6 +249,20 @@ def test_report_tells_the_numbers_and_the_caution(result):
     assert "no ray reaches the station" in text
     assert "VH.DDD" in text
     assert "+2.00" in text
+
+
+@pytest.mark.parametrize(
+    ("weight", "words"),
+    [
+        (0.0, "1 pick is suspected, without weight in the last model."),
+        (0.3, "1 pick is suspected, with the weight that the robust loss leaves."),
+    ],
+)
+def test_report_says_what_suspects_weigh_and_where_they_are_listed(result, weight, words):
+    weights = np.where(result.suspected_outlier, weight, result.weights)
+    text = render_report(replace(result, weights=weights))
+    assert words in text
+    assert "listed in suspected_outliers.csv" in text
 
 
 def test_report_escapes_what_people_wrote(result):

@@ -127,7 +127,7 @@ class InversionResult:
                 "phase": np.asarray(data.phase).astype(str),
                 "residual_s": data.residual_s,
                 "uncertainty_s": data.uncertainty_s,
-                "predicted_s": self.predicted_s,
+                "predicted_residual_s": self.predicted_s,
                 "residual_after_s": self.residual_after_s,
                 "standardised": self.standardised,
                 "weight": self.weights,

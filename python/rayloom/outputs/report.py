@@ -134,7 +134,6 @@ def render_report(
         undefined=StrictUndefined,
         trim_blocks=True,
     )
-    suspected = int(result.suspected_outlier.sum())
     return environment.get_template("report.html.j2").render(
         title=title,
         lead=_lead(result),
@@ -145,7 +144,7 @@ def render_report(
         data_rows=_data_rows(result),
         exclusions=_exclusions(result),
         outliers=_outliers(result),
-        outlier_remark=_outlier_remark(suspected),
+        outlier_remark=_outlier_remark(result),
         history=_history(result.history_frame()),
         reading=READING,
         settings_text=settings_text,
@@ -259,16 +258,20 @@ def _outliers(result: InversionResult) -> ReportTable:
     return ReportTable(names, rows, (3, 4))
 
 
-def _outlier_remark(count: int) -> str:
-    if count == 1:
-        return (
-            "1 pick is suspected. It keeps a small weight in the inversion and deserves a second "
-            "look; it is marked in residuals.csv."
-        )
+def _outlier_remark(result: InversionResult) -> str:
+    weights = result.weights[result.suspected_outlier]
+    count, silent = weights.size, int(np.count_nonzero(weights == 0.0))
+    if silent == count:
+        bearing = "without weight in the last model"
+    elif silent == 0:
+        bearing = "with the weight that the robust loss leaves"
+    else:
+        bearing = f"{silent} of them without weight in the last model"
     shown = f"; the {MOST_OUTLIERS} largest are shown here" if count > MOST_OUTLIERS else ""
+    picks = "1 pick is" if count == 1 else f"{count} picks are"
     return (
-        f"{count} picks are suspected. They keep a small weight in the inversion and deserve a "
-        f"second look{shown}. All are marked in residuals.csv."
+        f"{picks} suspected, {bearing}. They deserve a second look{shown}. All are listed in "
+        "suspected_outliers.csv."
     )
 
 

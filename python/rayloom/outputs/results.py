@@ -20,6 +20,7 @@ from rayloom.outputs.tables import (
     write_mislocations_csv,
     write_residuals_csv,
     write_station_terms_csv,
+    write_table,
 )
 from rayloom.outputs.vtk import (
     write_events_vtp,
@@ -63,8 +64,8 @@ def write_tables(folder: str | Path, result: InversionResult) -> list[Path]:
     Returns
     -------
     list of Path
-        ``history.csv``, ``residuals.csv``, ``exclusions.csv``,
-        ``station_terms.csv`` and ``mislocations.csv``.
+        ``history.csv``, ``residuals_after.csv``, ``exclusions.csv``,
+        ``suspected_outliers.csv``, ``station_terms.csv`` and ``mislocations.csv``.
 
     Raises
     ------
@@ -72,13 +73,22 @@ def write_tables(folder: str | Path, result: InversionResult) -> list[Path]:
         A file cannot be written.
     """
     base = Path(folder)
-    write_history_csv(base / "history.csv", result)
-    write_residuals_csv(base / "residuals.csv", result.data, result)
-    write_exclusions_csv(base / "exclusions.csv", result.data, result)
-    write_station_terms_csv(base / "station_terms.csv", result)
-    write_mislocations_csv(base / "mislocations.csv", result)
-    names = ("history", "residuals", "exclusions", "station_terms", "mislocations")
-    return [base / f"{name}.csv" for name in names]
+    names = (
+        "history.csv",
+        "residuals_after.csv",
+        "exclusions.csv",
+        "suspected_outliers.csv",
+        "station_terms.csv",
+        "mislocations.csv",
+    )
+    history, residuals, exclusions, outliers, terms, mislocations = (base / name for name in names)
+    write_history_csv(history, result)
+    write_residuals_csv(residuals, result.data, result)
+    write_exclusions_csv(exclusions, result.data, result)
+    write_table(outliers, result.outlier_frame())
+    write_station_terms_csv(terms, result)
+    write_mislocations_csv(mislocations, result)
+    return [history, residuals, exclusions, outliers, terms, mislocations]
 
 
 def write_model_files(folder: str | Path, result: InversionResult) -> list[Path]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
@@ -15,9 +15,12 @@ if TYPE_CHECKING:
     from rayloom.inversion.result import InversionResult
     from rayloom.residuals import Residuals
 
+LEFT_OUT_OF_INVERSION: Final = "left_out_of_inversion"
+"""Reason in the list of exclusions of rows that only the inversion leaves out."""
+
 
 def write_table(path: str | Path, table: pd.DataFrame) -> None:
-    """Write a data frame as CSV: UTF-8, nine digits, missing values blank.
+    """Write a data frame as CSV: UTF-8, nine digits, missing values blank, true or false.
 
     Parameters
     ----------
@@ -31,8 +34,10 @@ def write_table(path: str | Path, table: pd.DataFrame) -> None:
     FileAccessError
         The file cannot be written.
     """
+    flags = table.select_dtypes("bool").columns
+    spelt = {name: np.where(table[name], "true", "false") for name in flags}
     with replacing(path) as temporary:
-        table.to_csv(
+        table.assign(**spelt).to_csv(
             temporary,
             index=False,
             float_format="%.9g",
@@ -70,7 +75,7 @@ def residual_table(data: Residuals, result: InversionResult | None = None) -> pd
     result : InversionResult, optional
         The inversion of the same residuals; adds ``predicted_residual_s``,
         ``residual_after_s``, ``standardised`` (over the uncertainty), ``weight``
-        (robust), ``suspected_outlier`` (true or false) and ``left_out_because``.
+        (robust), ``suspected_outlier`` (bool) and ``left_out_because``.
 
     Returns
     -------
@@ -86,7 +91,7 @@ def residual_table(data: Residuals, result: InversionResult | None = None) -> pd
         residual_after_s=result.residual_after_s,
         standardised=result.standardised,
         weight=result.weights,
-        suspected_outlier=np.where(result.suspected_outlier, "true", "false"),
+        suspected_outlier=result.suspected_outlier,
         left_out_because=result.left_out_because,
     )
 
@@ -139,7 +144,7 @@ def exclusion_table(data: Residuals, result: InversionResult | None = None) -> p
     later = (
         data.to_frame()
         .iloc[rows][columns]
-        .assign(reason="left_out_of_inversion", detail=result.left_out_because[rows])
+        .assign(reason=LEFT_OUT_OF_INVERSION, detail=result.left_out_because[rows])
     )
     return pd.concat([excluded, later], ignore_index=True) if rows.size else excluded
 

@@ -13,6 +13,7 @@ import numpy as np
 
 from rayloom.earth import ReferenceEarth
 from rayloom.errors import InputError
+from rayloom.outputs.tables import LEFT_OUT_OF_INVERSION
 from rayloom.residuals import (
     Exclusions,
     Residuals,
@@ -24,9 +25,6 @@ from rayloom.settings import RunSettings
 from rayloom.survey import Notice, SurveySettings, read_events, read_stations, read_survey
 from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.reporting import Reporter
-
-LEFT_OUT_OF_INVERSION = "left_out_of_inversion"
-"""Reason in ``exclusions.csv`` of rows that only the inversion leaves out."""
 
 _SHOWN_PER_KIND = 3
 

@@ -16,13 +16,7 @@ from rayloom.inversion import (
     save_state,
 )
 from rayloom.model import BlockGrid, SlownessModel
-from rayloom.outputs import (
-    write_exclusions_csv,
-    write_history_csv,
-    write_linear_system,
-    write_residuals_csv,
-)
-from rayloom.outputs.tables import write_mislocations_csv, write_station_terms_csv, write_table
+from rayloom.outputs import write_linear_system, write_tables
 from rayloom.residuals import Residuals
 from rayloom.settings import RunSettings
 from rayloom.workflow.data import read_back_residuals, read_earth
@@ -140,23 +134,8 @@ def _resumable(checkpoint: Path, reporter: Reporter) -> InversionState | None:
 
 
 def _write(folder: RunFolder, result: InversionResult, *, linear_system: bool) -> Files:
-    names = (
-        "history.csv",
-        "residuals_after.csv",
-        "exclusions.csv",
-        "suspected_outliers.csv",
-        "station_terms.csv",
-        "mislocations.csv",
-        "model.nc",
-        "inversion.npz",
-    )
-    files = {name: folder.file(name) for name in names}
-    write_history_csv(files["history.csv"], result)
-    write_residuals_csv(files["residuals_after.csv"], result.data, result)
-    write_exclusions_csv(files["exclusions.csv"], result.data, result)
-    write_table(files["suspected_outliers.csv"], result.outlier_frame())
-    write_station_terms_csv(files["station_terms.csv"], result)
-    write_mislocations_csv(files["mislocations.csv"], result)
+    files = {path.name: path for path in write_tables(folder.path, result)}
+    files |= {name: folder.file(name) for name in ("model.nc", "inversion.npz")}
     result.model.write_netcdf(files["model.nc"])
     save_result(files["inversion.npz"], result)
     if linear_system:
