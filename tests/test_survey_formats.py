@@ -330,6 +330,8 @@ def test_problems_of_several_files_name_the_file(tmp_path: Path) -> None:
 
 
 def test_folders_without_the_content_and_no_files_are_told(tmp_path: Path, survey: Survey) -> None:
+    with pytest.raises(FileAccessError, match="the folder is empty; expected picks as CSV"):
+        read_picks(tmp_path, survey.stations, survey.events)
     written(tmp_path, "notes\n", "readme.txt")
     with pytest.raises(FileAccessError, match="none of its 1 files holds picks"):
         read_picks(tmp_path, survey.stations, survey.events)

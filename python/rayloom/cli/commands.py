@@ -117,7 +117,7 @@ def demo(ctx: click.Context, folder: Path, quiet: bool) -> None:
     default="ak135",
     show_default=True,
     metavar="MODEL",
-    help="ak135, iasp91, or a CSV file with depth_km, vp_km_s and vs_km_s.",
+    help="ak135, iasp91, or a CSV file with depth_km, vp_km_s, vs_km_s and density (g/cm³).",
 )
 @click.option("--copy", is_flag=True, help="Copy the tables into DIR/inputs.")
 @click.option("--force", is_flag=True, help="Overwrite a rayloom.toml that is there already.")

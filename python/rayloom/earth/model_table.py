@@ -136,8 +136,8 @@ class ModelTable:
         """
         if name not in PUBLISHED:
             raise InputError(
-                f"no Earth model {name!r}; expected one of {', '.join(PUBLISHED)}, "
-                "or read your own with ReferenceEarth.from_csv"
+                f"no Earth model {name!r}; expected {', '.join(PUBLISHED)} or the name of a CSV "
+                "file, ending in .csv (in Python: ReferenceEarth.from_csv)"
             )
         with resources.as_file(resources.files(__package__) / "models" / f"{name}.csv") as path:
             return cls.from_csv(path)

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import difflib
 import re
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from types import UnionType
 from typing import Any, Union, get_args, get_origin
 
@@ -52,7 +52,10 @@ def describe_problems(
         number is left out where the key does not appear in the text.
     """
     described: dict[str, int] = {}
-    for entry in error.errors(include_url=False):
+    entries = error.errors(include_url=False)
+    for entry in entries:
+        if entry["type"] == "too_short" and _is_consequence(entry["loc"], entries):
+            continue
         keys = _key_path(entry["loc"], settings)
         path = ".".join(keys)
         line = _line_of(keys, text)
@@ -65,6 +68,12 @@ def closest(word: str, known: list[str]) -> str:
     """Return ``; did you mean 'x'?`` for the known word most like this one, or nothing."""
     matches = difflib.get_close_matches(word.lower(), known, n=1, cutoff=0.6)
     return f"; did you mean '{matches[0]}'?" if matches else ""
+
+
+def _is_consequence(place: tuple[int | str, ...], entries: Sequence[Mapping[str, Any]]) -> bool:
+    """Tell whether a list is too short only because its items were refused."""
+    depth = len(place)
+    return any(len(entry["loc"]) > depth and entry["loc"][:depth] == place for entry in entries)
 
 
 def _sentence(entry: Mapping[str, Any], keys: list[str], settings: type[BaseModel]) -> str:

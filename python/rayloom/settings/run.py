@@ -56,7 +56,7 @@ class EarthSettings(BaseModel):
     Attributes
     ----------
     model : str
-        "ak135", "iasp91", or a CSV file with depth_km, vp_km_s and vs_km_s.
+        "ak135", "iasp91", or a CSV file with depth_km, vp_km_s, vs_km_s and density (g/cm³).
     """
 
     model_config = ConfigDict(extra="forbid", frozen=True)

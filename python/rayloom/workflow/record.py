@@ -19,6 +19,7 @@ from typing import Any
 
 from rayloom.errors import FileAccessError
 from rayloom.outputs.atomic import replacing
+from rayloom.survey.text_table import unreadable
 
 _PACKAGES = ("rayloom", "numpy", "scipy", "pandas", "xarray", "h5netcdf", "pydantic")
 
@@ -104,7 +105,7 @@ def content_hash(path: Path) -> str:
         with path.open("rb") as stream:
             return hashlib.file_digest(stream, "sha256").hexdigest()
     except OSError as error:
-        raise FileAccessError(f"{path}: cannot be read: {error.strerror}") from error
+        raise unreadable(path, error) from error
 
 
 def content_hashes(files: Mapping[str, Path]) -> dict[str, str]:

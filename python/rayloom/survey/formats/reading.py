@@ -168,6 +168,8 @@ def _files(paths: Paths, content: Content) -> tuple[list[str | Path], list[Notic
             files.append(path)
             continue
         inside = _listed(path)
+        if not inside:
+            raise FileAccessError(f"{path}: the folder is empty; expected {_EXPECTED[content]}")
         fitting = [file for file in inside if content in _held(file)]
         if not fitting:
             raise FileAccessError(
