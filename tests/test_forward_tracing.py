@@ -1,4 +1,4 @@
-"""The forward room's contract: order, signs, threads, messages."""
+"""What the forward room promises: order, signs, threads, messages."""
 
 from concurrent.futures import ProcessPoolExecutor, ThreadPoolExecutor
 from dataclasses import replace

@@ -1,4 +1,4 @@
-"""Import rules of the house that the layer contract cannot express."""
+"""Import rules of the house that layers alone cannot express."""
 
 import ast
 import subprocess

@@ -14,7 +14,7 @@ class RayloomError(Exception):
 
 
 class InputError(RayloomError, ValueError):
-    """A value, a file or a setting does not satisfy its contract.
+    """A value, a file or a setting is not what was asked for.
 
     Parameters
     ----------

@@ -78,7 +78,7 @@ def test_the_reference_model_gives_back_the_times_of_the_one_dimensional_earth(e
 
 
 def test_entries_lie_on_the_base_or_the_sides_and_times_add_up(earth):
-    """Entry rule of the design: never through the top; |G s + outside − t| ≤ 1e-5 s."""
+    """Entry rule: never through the top; |G s + outside − t| ≤ 1e-5 s."""
     random = np.random.default_rng(21)
     frame = rl.Frame(longitude=66.0, latitude=-40.0)
     edges_deg = np.arange(-3.2, 3.21, 0.4)

@@ -1,4 +1,4 @@
-"""A whole inversion result on disk, so that later steps and sessions can take it up.
+"""A whole inversion result on disk, so that later steps can take it up.
 
 :func:`save_result` writes what the tables and ``model.nc`` of a run folder do not hold to
 the last bit; :func:`load_result` joins it with them again.
