@@ -140,6 +140,11 @@ class DemoTruth:
     def write_json(self, path: str | Path) -> None:
         """Write the record, whole or not at all.
 
+        Parameters
+        ----------
+        path : str or Path
+            The file.
+
         Raises
         ------
         FileAccessError
@@ -152,6 +157,15 @@ class DemoTruth:
     @staticmethod
     def read_json(path: str | Path) -> DemoTruth:
         """Read a record that :meth:`write_json` wrote.
+
+        Parameters
+        ----------
+        path : str or Path
+            The file.
+
+        Returns
+        -------
+        DemoTruth
 
         Raises
         ------

@@ -107,11 +107,22 @@ class InversionResult:
     state: InversionState
 
     def history_frame(self) -> pd.DataFrame:
-        """Return the history as a table, one row per iteration."""
+        """Return the history as a table, one row per iteration.
+
+        Returns
+        -------
+        DataFrame
+            One column per field of :class:`Iteration`.
+        """
         return history_frame(self.history)
 
     def residual_frame(self) -> pd.DataFrame:
-        """Return every row by name with what became of it."""
+        """Return every row by name with what became of it.
+
+        Returns
+        -------
+        DataFrame, as many rows as residuals
+        """
         import pandas as pd
 
         data = self.data
@@ -137,14 +148,26 @@ class InversionResult:
         )
 
     def outlier_frame(self) -> pd.DataFrame:
-        """Return the suspected outliers by name, the largest first."""
+        """Return the suspected outliers by name, the largest first.
+
+        Returns
+        -------
+        DataFrame
+            Columns of :meth:`residual_frame`.
+        """
         frame = self.residual_frame()
         frame = frame[frame["suspected_outlier"]]
         order = np.argsort(-np.abs(frame["standardised"].to_numpy()), kind="stable")
         return frame.iloc[order].reset_index(drop=True)
 
     def station_term_frame(self) -> pd.DataFrame:
-        """Return the station terms by name: network, station, phase, term_s, picks."""
+        """Return the station terms by name: network, station, phase, term_s, picks.
+
+        Returns
+        -------
+        DataFrame
+            Terms in s, late positive.
+        """
         import pandas as pd
 
         data = self.data
@@ -169,7 +192,13 @@ class InversionResult:
         return pd.concat(parts, ignore_index=True) if parts else pd.DataFrame(columns=columns)
 
     def mislocation_frame(self) -> pd.DataFrame:
-        """Return the shifts by event: event, east_km, north_km, down_km."""
+        """Return the shifts by event: event, east_km, north_km, down_km.
+
+        Returns
+        -------
+        DataFrame
+            Shifts in km from the catalogue position.
+        """
         import pandas as pd
 
         known = np.all(np.isfinite(self.mislocation_km), axis=1)

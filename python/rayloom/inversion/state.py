@@ -95,7 +95,17 @@ class Iteration:
 
 
 def history_frame(history: tuple[Iteration, ...]) -> pd.DataFrame:
-    """Return the history as a table, one row per iteration."""
+    """Return the history as a table, one row per iteration.
+
+    Parameters
+    ----------
+    history : tuple of Iteration
+        One per iteration.
+
+    Returns
+    -------
+    DataFrame
+    """
     import pandas as pd
 
     names = [field.name for field in fields(Iteration)]
@@ -135,6 +145,13 @@ class InversionState:
 def save_state(path: str | Path, state: InversionState) -> None:
     """Write a state to an ``.npz`` file, whole or not at all.
 
+    Parameters
+    ----------
+    path : str or Path
+        The file.
+    state : InversionState
+        What to keep.
+
     Raises
     ------
     FileAccessError
@@ -162,6 +179,15 @@ def save_state(path: str | Path, state: InversionState) -> None:
 
 def load_state(path: str | Path) -> InversionState:
     """Read a state written by :func:`save_state`, bit for bit.
+
+    Parameters
+    ----------
+    path : str or Path
+        The file.
+
+    Returns
+    -------
+    InversionState
 
     Raises
     ------

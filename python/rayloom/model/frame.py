@@ -100,7 +100,12 @@ class Frame:
 
     @classmethod
     def flat(cls) -> Self:
-        """Return a flat frame: x, y and depth in km, no geography."""
+        """Return a flat frame: x, y and depth in km, no geography.
+
+        Returns
+        -------
+        Frame
+        """
         frame = cls.__new__(cls)
         frame._set(0.0, 0.0, 0.0, is_flat=True)
         return frame

@@ -195,6 +195,15 @@ class SlownessModel:
     def from_dataset(cls, dataset: xarray.Dataset) -> SlownessModel:
         """Rebuild a model from the dataset of :meth:`to_dataset`.
 
+        Parameters
+        ----------
+        dataset : xarray.Dataset
+            As :meth:`to_dataset` makes it.
+
+        Returns
+        -------
+        SlownessModel
+
         Raises
         ------
         InputError
@@ -206,6 +215,11 @@ class SlownessModel:
 
     def write_netcdf(self, path: str | Path) -> None:
         """Write the model to a netCDF file, whole or not at all.
+
+        Parameters
+        ----------
+        path : str or Path
+            The file.
 
         Raises
         ------
@@ -219,6 +233,15 @@ class SlownessModel:
     @classmethod
     def read_netcdf(cls, path: str | Path) -> SlownessModel:
         """Read a model written by :meth:`write_netcdf`, bit for bit.
+
+        Parameters
+        ----------
+        path : str or Path
+            The file.
+
+        Returns
+        -------
+        SlownessModel
 
         Raises
         ------

@@ -97,6 +97,11 @@ def read_residuals(
     survey_settings : SurveySettings, optional
         Uncertainty by default and of each quality class.
 
+    Returns
+    -------
+    Residuals
+        What can be used, and with reasons what cannot.
+
     Raises
     ------
     FileAccessError

@@ -43,17 +43,34 @@ class Exclusions(ColumnTable):
     detail: TextArray = field(default_factory=_no_text)
 
     def counts(self) -> dict[str, int]:
-        """Return how many picks each reason took, most first."""
+        """Return how many picks each reason took, most first.
+
+        Returns
+        -------
+        dict of int
+            Picks by reason.
+        """
         return dict(Counter(self.reason.tolist()).most_common())
 
     def to_frame(self) -> pd.DataFrame:
-        """Return a data frame with one row per pick left out."""
+        """Return a data frame with one row per pick left out.
+
+        Returns
+        -------
+        DataFrame
+            One row per pick left out.
+        """
         import pandas as pd
 
         return pd.DataFrame({name: getattr(self, name) for name in self.column_names()})
 
     def write_csv(self, path: str | Path) -> None:
         """Write the table as CSV.
+
+        Parameters
+        ----------
+        path : str or Path
+            The file.
 
         Raises
         ------

@@ -96,13 +96,22 @@ class Residuals(ColumnTable):
         ----------
         rows : (n,) bool or (k,) int array
             Mask over the rows, or their numbers.
+
+        Returns
+        -------
+        Residuals
         """
         columns = {name: getattr(self, name)[rows] for name in self.column_names()}
         columns["relative_residual_s"] = no_floats()
         return replace(self, **columns)
 
     def to_frame(self) -> pd.DataFrame:
-        """Return a data frame with the columns of the residuals file and more."""
+        """Return a data frame with the columns of the residuals file and more.
+
+        Returns
+        -------
+        DataFrame, n rows
+        """
         import pandas as pd
 
         named = {
@@ -118,6 +127,11 @@ class Residuals(ColumnTable):
 
     def write_csv(self, path: str | Path) -> None:
         """Write the table as CSV; :func:`read_residuals` reads it back.
+
+        Parameters
+        ----------
+        path : str or Path
+            The file.
 
         Raises
         ------

@@ -112,6 +112,11 @@ class RunSettings(BaseModel):
         return given
 
     def inversion_settings(self) -> InversionSettings:
-        """Return the settings of the inversion with the tracing chosen in ``forward``."""
+        """Return the settings of the inversion with the tracing chosen in ``forward``.
+
+        Returns
+        -------
+        InversionSettings
+        """
         chosen = {key: getattr(self.forward, key) for key in TRACING_KEYS}
         return self.inversion.model_copy(update=chosen)

@@ -17,6 +17,10 @@ def read_run_settings(path: str | Path) -> RunSettings:
     path : str or pathlib.Path
         ``rayloom.toml``.
 
+    Returns
+    -------
+    RunSettings
+
     Raises
     ------
     FileAccessError
@@ -38,6 +42,11 @@ def run_settings_text(settings: RunSettings, *, heading: str, comments: bool = T
         Text set above everything as a comment.
     comments : bool
         Whether each key carries its description.
+
+    Returns
+    -------
+    str
+        TOML.
     """
     hidden = {"inversion": TRACING_KEYS}
     return settings_text(settings, heading=heading, comments=comments, hidden=hidden)

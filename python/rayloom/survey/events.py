@@ -66,7 +66,13 @@ class Events(ColumnTable):
         super().__post_init__()
 
     def to_frame(self) -> pd.DataFrame:
-        """Return a data frame with the columns of the events file."""
+        """Return a data frame with the columns of the events file.
+
+        Returns
+        -------
+        DataFrame
+            One row per event.
+        """
         import pandas as pd
 
         return pd.DataFrame(
@@ -83,6 +89,17 @@ class Events(ColumnTable):
     @classmethod
     def from_frame(cls, frame: pd.DataFrame, *, notices: list[Notice] | None = None) -> Events:
         """Take events from a data frame with the columns of the events file.
+
+        Parameters
+        ----------
+        frame : DataFrame
+            One row per event.
+        notices : list of Notice, optional
+            Remarks are appended here.
+
+        Returns
+        -------
+        Events
 
         Raises
         ------
@@ -109,6 +126,10 @@ def read_events(
         Remarks are appended here.
     progress : callable, optional
         Called with the bytes read and the bytes in all.
+
+    Returns
+    -------
+    Events
 
     Raises
     ------

@@ -60,7 +60,18 @@ class Picks(ColumnTable):
     uncertainty_s: FloatArray
 
     def to_frame(self, stations: Stations, events: Events) -> pd.DataFrame:
-        """Return a data frame with the columns of the picks file."""
+        """Return a data frame with the columns of the picks file.
+
+        Parameters
+        ----------
+        stations, events : Stations, Events
+            Tables that the picks refer to.
+
+        Returns
+        -------
+        DataFrame
+            One row per pick.
+        """
         import pandas as pd
 
         return pd.DataFrame(
@@ -85,6 +96,21 @@ class Picks(ColumnTable):
         notices: list[Notice] | None = None,
     ) -> Picks:
         """Take picks from a data frame with the columns of the picks file.
+
+        Parameters
+        ----------
+        frame : DataFrame
+            One row per pick.
+        stations, events : Stations, Events
+            Tables that the picks refer to.
+        settings : SurveySettings, optional
+            Uncertainty by default and of each quality class.
+        notices : list of Notice, optional
+            Remarks are appended here.
+
+        Returns
+        -------
+        Picks
 
         Raises
         ------
@@ -125,6 +151,10 @@ def read_picks(
         Remarks are appended here.
     progress : callable, optional
         Called with the bytes read and the bytes in all.
+
+    Returns
+    -------
+    Picks
 
     Raises
     ------

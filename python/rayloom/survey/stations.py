@@ -79,7 +79,13 @@ class Stations(ColumnTable):
         return np.strings.add(np.strings.add(self.network, "."), self.station)
 
     def to_frame(self) -> pd.DataFrame:
-        """Return a data frame with the columns of the stations file."""
+        """Return a data frame with the columns of the stations file.
+
+        Returns
+        -------
+        DataFrame
+            One row per station.
+        """
         import pandas as pd
 
         return pd.DataFrame(
@@ -98,6 +104,17 @@ class Stations(ColumnTable):
     @classmethod
     def from_frame(cls, frame: pd.DataFrame, *, notices: list[Notice] | None = None) -> Stations:
         """Take stations from a data frame with the columns of the stations file.
+
+        Parameters
+        ----------
+        frame : DataFrame
+            One row per station.
+        notices : list of Notice, optional
+            Remarks are appended here.
+
+        Returns
+        -------
+        Stations
 
         Raises
         ------
@@ -124,6 +141,10 @@ def read_stations(
         Remarks are appended here.
     progress : callable, optional
         Called with the bytes read and the bytes in all.
+
+    Returns
+    -------
+    Stations
 
     Raises
     ------
