@@ -80,8 +80,8 @@ def trace_distant(
     quality : {"standard", "thorough"}
         How close to the true first arrival a bent ray must come.
     face_nodes : int, optional
-        Coarse graph nodes inside each block edge, and squared inside each face;
-        by default that of the quality (2 or 3).
+        Coarse graph nodes inside each block edge, and squared inside each face (1 to
+        4); by default that of the quality (2 or 3), more along longer edges.
     previous : Rays, optional
         Rays of the same pairs in a similar model; changes of course are counted.
     threads : int, optional

@@ -57,8 +57,8 @@ def trace(
     quality : {"standard", "thorough"}
         How close to the true first arrival a bent ray must come.
     face_nodes : int, optional
-        Coarse graph nodes inside each block edge, and squared inside each face;
-        by default that of the quality (2 or 3).
+        Coarse graph nodes inside each block edge, and squared inside each face (1 to
+        4); by default that of the quality (2 or 3), more along longer edges.
     threads : int, optional
         Number of threads; all cores by default, one with an executor. The result
         does not depend on it.

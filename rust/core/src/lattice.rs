@@ -52,7 +52,16 @@ impl Lattice {
     /// A lattice with `per_edge` nodes inside each edge and `per_edge²` inside
     /// each face of a cube; in other blocks as many in all, shared out by length.
     pub fn new<C: Chart>(blocks: &Blocks<C>, per_edge: usize) -> Self {
-        let subdivisions = subdivisions(blocks, per_edge + 1);
+        Self::subdivided(blocks, subdivisions(blocks, per_edge + 1))
+    }
+
+    /// A lattice with `per_edge` nodes inside each edge and `per_edge²` inside
+    /// each face, whatever the blocks' shape.
+    pub fn uniform<C: Chart>(blocks: &Blocks<C>, per_edge: usize) -> Self {
+        Self::subdivided(blocks, [per_edge + 1; 3])
+    }
+
+    fn subdivided<C: Chart>(blocks: &Blocks<C>, subdivisions: [usize; 3]) -> Self {
         let sizes = [0, 1, 2].map(|axis| blocks.size(axis) * subdivisions[axis] + 1);
         let strides = [sizes[1] * sizes[2], sizes[2], 1];
         let surface = surface_nodes(subdivisions, strides);

@@ -10,7 +10,6 @@ use crate::entry::{CornerTimes, EarthWave, Surface};
 use crate::error::{CoreError, Result};
 use crate::fermat::straight_path;
 use crate::frame::{Chart, SphereChart};
-use crate::lattice::Lattice;
 use crate::monitor::Monitor;
 use crate::path::Path;
 use crate::tracer::{Beginning, Quality, Ray, Tracer};
@@ -179,7 +178,8 @@ pub fn trace_between<C: Chart>(
     let from_sources = distinct(pairs, 0) < distinct(pairs, 1);
     let (near, far) = if from_sources { (0, 1) } else { (1, 0) };
     let ends = [sources, receivers];
-    let lattice = Lattice::new(blocks, quality.coarse_nodes);
+    let quality = quality.suited_to(blocks);
+    let lattice = quality.lattice(blocks);
     let tracer = Tracer::new(blocks, &lattice, None, quality);
     let rays = per_group(
         pairs,
@@ -222,7 +222,8 @@ pub fn trace_distant(
     check_inside(blocks, "station", stations)?;
     check_pairs(pairs, waves.len(), stations.len())?;
     monitor.set_total(pairs.len() as u64);
-    let lattice = Lattice::new(blocks, quality.coarse_nodes);
+    let quality = quality.suited_to(blocks);
+    let lattice = quality.lattice(blocks);
     let surface = Surface::new(blocks, &lattice);
     let waves: Vec<Option<EarthWave<'_>>> = waves
         .tables

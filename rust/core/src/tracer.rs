@@ -30,12 +30,19 @@ const LEG_MARGIN: f64 = 2.0;
 /// Steps of the integral for the undisturbed time.
 const LEG_STEPS: usize = 24;
 
+/// Flatness beyond which graphs get more nodes …
+const FLAT_BLOCKS: f64 = 1.4;
+/// … so many more along each side of a fine face.
+const MORE_FINE_NODES: usize = 4;
+
 /// How finely to search and how hard to refine.
 #[derive(Debug, Clone, Copy)]
 pub struct Quality {
     /// Nodes inside each block edge of the coarse graph (and squared in each
     /// face).
     pub coarse_nodes: usize,
+    /// Whether every edge carries just that many, however long it is.
+    pub uniform_nodes: bool,
     /// Nodes along each side of a face of the fine graph; 0 leaves the fine
     /// search out.
     pub fine_nodes: usize,
@@ -57,6 +64,7 @@ impl Quality {
     pub fn standard() -> Self {
         Self {
             coarse_nodes: 2,
+            uniform_nodes: false,
             fine_nodes: 8,
             fine_bias: 0.0033,
             slack: 0.08,
@@ -70,11 +78,36 @@ impl Quality {
     pub fn thorough() -> Self {
         Self {
             coarse_nodes: 3,
+            uniform_nodes: false,
             fine_nodes: 12,
             fine_bias: 0.0016,
             slack: 0.05,
             first: effort(2, 4),
             last: effort(3, 20),
+        }
+    }
+}
+
+impl Quality {
+    /// The same level for a given model: flat blocks need more nodes on both
+    /// graphs for the same error.
+    #[must_use]
+    pub fn suited_to<C: Chart>(mut self, blocks: &Blocks<C>) -> Self {
+        if blocks.flatness() > FLAT_BLOCKS {
+            self.coarse_nodes += usize::from(!self.uniform_nodes);
+            self.fine_nodes += self.fine_nodes.min(MORE_FINE_NODES);
+            self.fine_bias *= (1.0 - MORE_FINE_NODES as f64 / self.fine_nodes as f64).powi(2);
+        }
+        self
+    }
+
+    /// The coarse graph's nodes in a model.
+    #[must_use]
+    pub fn lattice<C: Chart>(&self, blocks: &Blocks<C>) -> Lattice {
+        if self.uniform_nodes {
+            Lattice::uniform(blocks, self.coarse_nodes)
+        } else {
+            Lattice::new(blocks, self.coarse_nodes)
         }
     }
 }

@@ -76,11 +76,18 @@ fn dijkstra<C: Chart>(blocks: &Blocks<C>, lattice: &Lattice, source: Vec3) -> Ve
 }
 
 fn agree<C: Chart>(blocks: &Blocks<C>, per_edge: usize, random: &mut Random) {
-    let lattice = Lattice::new(blocks, per_edge);
-    let source = point_inside(blocks, random);
-    let expected = dijkstra(blocks, &lattice, source);
+    for lattice in [
+        Lattice::new(blocks, per_edge),
+        Lattice::uniform(blocks, per_edge),
+    ] {
+        agree_on(blocks, &lattice, point_inside(blocks, random));
+    }
+}
+
+fn agree_on<C: Chart>(blocks: &Blocks<C>, lattice: &Lattice, source: Vec3) {
+    let expected = dijkstra(blocks, lattice, source);
     let mut field = CoarseField::default();
-    CoarseSearch::new(blocks, &lattice)
+    CoarseSearch::new(blocks, lattice)
         .run(source, f32::INFINITY, &mut field, &Monitor::default())
         .expect("nobody interrupts");
     for (&got, &expected) in field.times().iter().zip(&expected) {

@@ -204,6 +204,7 @@ fn quality_named(name: &str, coarse_nodes: Option<usize>) -> PyResult<Quality> {
             return Err(unknown("face_nodes", "1 to 4", &nodes.to_string()));
         }
         quality.coarse_nodes = nodes;
+        quality.uniform_nodes = true;
     }
     Ok(quality)
 }
