@@ -209,6 +209,19 @@ def test_a_step_refuses_to_build_on_what_is_missing(files: SurveyFiles) -> None:
     assert "'residuals', which is still to do" in result.stderr
 
 
+@pytest.mark.parametrize("content", [b"foo\n", b"\xff\xfe\x00", b""])
+def test_a_spoilt_list_of_exclusions_says_how_to_write_it_again(
+    files: SurveyFiles, content: bytes
+) -> None:
+    folder = write_run_folder(files.picks.parent / "run", files)
+    assert call("residuals", folder).exit_code == 0
+    (folder / "exclusions.csv").write_bytes(content)
+    result = call("invert", folder)
+    assert result.exit_code == 2
+    assert "exclusions.csv: cannot be read" in result.stderr
+    assert "--again" in result.stderr
+
+
 def test_no_demo_in_a_folder_that_holds_something_else(tmp_path: Path) -> None:
     (tmp_path / "thesis.txt").write_text("chapter one", encoding="utf-8")
     result = call("demo", tmp_path)

@@ -172,6 +172,8 @@ def test_an_error_in_the_progress_callback_stops_the_work(flat_model, ends):
         ({"pairs": [[0.5, 1.0]]}, "pairs: expected integers"),
         ({"method": "curly"}, "method: expected one of bent, graph, straight"),
         ({"quality": "best"}, "quality: expected one of standard, thorough"),
+        ({"face_nodes": 5}, "face_nodes: expected 1 to 4, got 5"),
+        ({"threads": 0}, "threads: expected at least 1, got 0"),
     ],
 )
 def test_bad_arguments_are_named(flat_model, ends, change, message):

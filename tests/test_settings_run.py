@@ -71,3 +71,9 @@ def test_edges_that_are_no_numbers_are_named(tmp_path: Path) -> None:
     with pytest.raises(FileProblemsError) as caught:
         read(tmp_path, INPUTS + text)
     assert any("grid.depth_edges_km[2]" in problem for problem in caught.value.problems)
+
+
+def test_edges_that_fall_are_told_with_the_file(tmp_path: Path) -> None:
+    text = COARSE_GRID.replace("[-3.0, 20.0", "[500.0, 20.0")
+    with pytest.raises(FileProblemsError, match="grid: depth_edges_km: edges must rise"):
+        read(tmp_path, INPUTS + text)

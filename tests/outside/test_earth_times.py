@@ -104,7 +104,7 @@ def test_printed_tables_of_the_core(ak135: ReferenceEarth, table: str, limit_s: 
 
 
 def test_iasp91() -> None:
-    """Computed with a general-purpose library (iasp91: Kennett & Engdahl 1991)."""
+    """Computed with obspy.taup (iasp91: Kennett & Engdahl 1991)."""
     times = ReferenceEarth("iasp91").travel_time("P", [30.0, 60.0, 90.0])
     assert times == pytest.approx([370.26, 608.28, 781.33], abs=0.006)
 
@@ -163,7 +163,7 @@ def test_ray_parameter_of_the_reference_library(ak135: ReferenceEarth, taup: Tau
 
 
 def test_incidence_at_the_surface(ak135: ReferenceEarth) -> None:
-    """ak135 P from a surface source: values computed with a general library."""
+    """ak135 P from a surface source: values computed with obspy.taup."""
     angles = ak135.incidence_deg("P", [30.0, 60.0, 90.0])
     assert angles == pytest.approx([27.5, 21.0, 14.0], abs=0.05)
 

@@ -16,7 +16,7 @@ from rayloom.earth import PHASES, ReferenceEarth, phase_wave, standard_phase
 from rayloom.errors import InputError
 from rayloom.forward.core_arrays import block_model, checked_pairs, points_km, rays_of
 from rayloom.forward.joining import Part, joined, trace_in_parts
-from rayloom.forward.local import require_choice
+from rayloom.forward.local import require_choice, require_counts
 from rayloom.forward.rays import Rays
 from rayloom.forward.settings import DistantMethod, Quality
 from rayloom.model import SlownessModel
@@ -108,6 +108,7 @@ def trace_distant(
         raise InputError("distant events need a frame on the sphere", where="model")
     require_choice("method", method, get_args(DistantMethod))
     require_choice("quality", quality, get_args(Quality))
+    require_counts(face_nodes, threads)
     pair_rows = checked_pairs(pairs, len(events), len(stations))
     names = _phase_names(model, phases, len(pair_rows))
     if executor is not None and len(pair_rows):

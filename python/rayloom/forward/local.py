@@ -26,6 +26,8 @@ from rayloom.model import BlockGrid, SlownessModel
 
 Progress = Callable[[int, int], object]
 
+MOST_FACE_NODES = 4
+
 
 def trace(
     model: SlownessModel,
@@ -85,6 +87,7 @@ def trace(
     receiver_points = _inside("receivers", model.grid, receivers)
     require_choice("method", method, get_args(LocalMethod))
     require_choice("quality", quality, get_args(Quality))
+    require_counts(face_nodes, threads)
     pair_rows = checked_pairs(pairs, len(source_points), len(receiver_points))
     if executor is not None and len(pair_rows):
         part = partial(
@@ -116,6 +119,20 @@ def trace(
         progress=progress,
     )
     return rays_of(model.grid, arrays)
+
+
+def require_counts(face_nodes: int | None, threads: int | None) -> None:
+    """Refuse numbers of graph nodes and threads out of range.
+
+    Raises
+    ------
+    InputError
+        If one is.
+    """
+    if face_nodes is not None and not 1 <= face_nodes <= MOST_FACE_NODES:
+        raise InputError(f"expected 1 to {MOST_FACE_NODES}, got {face_nodes}", where="face_nodes")
+    if threads is not None and threads < 1:
+        raise InputError(f"expected at least 1, got {threads}", where="threads")
 
 
 def require_choice(name: str, value: str, allowed: tuple[str, ...]) -> None:

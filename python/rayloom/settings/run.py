@@ -12,7 +12,7 @@ from pydantic import BaseModel, ConfigDict, Field, field_validator, model_valida
 
 from rayloom.forward import ForwardSettings
 from rayloom.inversion import InversionSettings
-from rayloom.model import GridSettings
+from rayloom.model import BlockGrid, GridSettings
 from rayloom.outputs import OutputSettings
 from rayloom.residuals import ResidualSettings
 from rayloom.survey import SurveySettings
@@ -101,6 +101,12 @@ class RunSettings(BaseModel):
     outputs: RunOutputSettings = Field(
         default_factory=lambda: RunOutputSettings.model_validate({})
     )
+
+    @field_validator("grid")
+    @classmethod
+    def _grid_can_be_built(cls, given: GridSettings) -> GridSettings:
+        BlockGrid.from_spec(given)
+        return given
 
     @field_validator("inversion", mode="before")
     @classmethod

@@ -12,7 +12,7 @@ from pathlib import Path
 import numpy as np
 
 from rayloom.earth import ReferenceEarth
-from rayloom.errors import InputError
+from rayloom.errors import FileAccessError, InputError
 from rayloom.outputs.tables import LEFT_OUT_OF_INVERSION
 from rayloom.residuals import (
     Exclusions,
@@ -139,6 +139,8 @@ def read_back_residuals(
     ------
     InputError
         If anything is wrong with the table.
+    FileAccessError
+        If the list of exclusions cannot be read.
     """
     tables = Tables.of(folder, settings)
     data = read_residuals(
@@ -158,9 +160,15 @@ def _earlier_exclusions(path: Path) -> Exclusions:
 
     if not path.exists():
         return Exclusions()
-    table = pd.read_csv(path, dtype=str, keep_default_na=False)
-    table = table[table["reason"] != LEFT_OUT_OF_INVERSION]
-    return Exclusions(**{name: table[name].to_numpy(dtype=np.str_) for name in table.columns})
+    try:
+        table = pd.read_csv(path, dtype=str, keep_default_na=False)
+        table = table[table["reason"] != LEFT_OUT_OF_INVERSION]
+        return Exclusions(**{name: table[name].to_numpy(dtype=np.str_) for name in table.columns})
+    except (OSError, ValueError, KeyError, TypeError) as error:
+        raise FileAccessError(
+            f"{path}: cannot be read as the list of what was left out ({error}); "
+            f"write it again with: rayloom residuals {path.parent} --again"
+        ) from error
 
 
 def notice_lines(notices: Iterable[Notice]) -> list[str]:
