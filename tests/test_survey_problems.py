@@ -172,7 +172,7 @@ def test_lines_count_through_quoted_line_breaks(tmp_path: Path) -> None:
 def test_absent_file_and_folder_are_told(tmp_path: Path) -> None:
     with pytest.raises(FileAccessError, match="cannot be read"):
         read_stations(tmp_path / "absent.csv")
-    with pytest.raises(FileAccessError, match="cannot be read"):
+    with pytest.raises(FileAccessError, match="the folder is empty"):
         read_stations(tmp_path)
     with pytest.raises(FileAccessError, match="not a file name"):
         read_stations("nul\0name")
