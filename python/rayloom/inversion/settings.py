@@ -80,7 +80,7 @@ class InversionSettings(BaseModel):
     huber_k: Positive = Field(
         default=1.345, description="Standard deviations beyond which Huber weights fall."
     )
-    student_degrees: Positive = Field(
+    student_degrees_of_freedom: Positive = Field(
         default=4.0, description="Degrees of freedom of Student's t: few mean heavy tails."
     )
     outlier_std: Positive = Field(
@@ -141,7 +141,11 @@ class InversionSettings(BaseModel):
         if self.robust == "none":
             return LeastSquares()
         loss: RobustLoss
-        loss = Huber(self.huber_k) if self.robust == "huber" else StudentT(self.student_degrees)
+        loss = (
+            Huber(self.huber_k)
+            if self.robust == "huber"
+            else StudentT(self.student_degrees_of_freedom)
+        )
         return Rejecting(loss, self.outlier_std) if rejecting else loss
 
     @property

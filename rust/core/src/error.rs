@@ -8,7 +8,7 @@ use thiserror::Error;
 /// a caller can build a message without parsing text.
 #[derive(Debug, Clone, PartialEq, Eq, Error)]
 pub enum CoreError {
-    /// An argument does not satisfy its contract.
+    /// An argument is not what it should be.
     #[error("{what}: expected {expected}, got {got}")]
     Invalid {
         /// The argument or quantity concerned.

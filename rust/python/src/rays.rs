@@ -64,7 +64,6 @@ struct RayArrays {
     lengths_km: Py<PyArray1<f64>>,
     point_offsets: Py<PyArray1<i64>>,
     points_km: Py<PyArray2<f64>>,
-    segment_blocks: Py<PyArray1<i32>>,
 }
 
 impl RayArrays {
@@ -83,7 +82,6 @@ impl RayArrays {
                 .into_pyarray(py)
                 .reshape([points, 3])?
                 .unbind(),
-            segment_blocks: batch.segment_blocks.into_pyarray(py).unbind(),
         })
     }
 }

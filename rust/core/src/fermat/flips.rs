@@ -222,8 +222,7 @@ fn crossing_detours<C: Chart>(
             let plane = path.points[point][axis];
             let mut moved = on_plane(from, to, axis, plane);
             confine(blocks, &mut moved, new_before, axis, along, up);
-            let edge_range = blocks.range(before, along);
-            let edge = if up { edge_range.1 } else { edge_range.0 };
+            let edge = edge_of(blocks, before, along, up);
             let mut middle = Vec::with_capacity(4);
             if !join_left {
                 middle.push((
@@ -261,8 +260,7 @@ fn entry_detours<C: Chart>(blocks: &Blocks<C>, path: &Path, along: usize, up: bo
     let Some(next) = blocks.neighbour(block, 2 * along + usize::from(up)) else {
         return vec![onto_next_surface(blocks, path, along, up)];
     };
-    let range = blocks.range(block, along);
-    let edge = if up { range.1 } else { range.0 };
+    let edge = edge_of(blocks, block, along, up);
     let mut entry = old_entry;
     confine(blocks, &mut entry, next, axis, along, up);
     let joins = path.len() > 1 && path.blocks[1] == next;
@@ -297,8 +295,7 @@ fn onto_next_surface<C: Chart>(blocks: &Blocks<C>, path: &Path, along: usize, up
     let block = path.blocks[0];
     let axis = usize::from(path.axes[0]);
     let mut entry = path.points[0];
-    let (low, high) = blocks.range(block, along);
-    entry[along] = if up { high } else { low };
+    entry[along] = edge_of(blocks, block, along, up);
     let (low, high) = blocks.range(block, axis);
     let inset = INSIDE * (high - low);
     entry[axis] = entry[axis].clamp(low + inset, high - inset);
@@ -308,6 +305,12 @@ fn onto_next_surface<C: Chart>(blocks: &Blocks<C>, path: &Path, along: usize, up
         middle: vec![(block, path.points[1], path.axes[1])],
         entry: Some((entry, along as u8)),
     }
+}
+
+/// The upper or lower edge (km) of a block.
+fn edge_of<C: Chart>(blocks: &Blocks<C>, block: u32, along: usize, up: bool) -> f64 {
+    let (low, high) = blocks.range(block, along);
+    if up { high } else { low }
 }
 
 /// The point where the line from `from` to `to` (in grid coordinates) meets a

@@ -100,11 +100,6 @@ struct FaceSlot {
 }
 
 impl FineField {
-    /// Number of blocks the last search created.
-    pub fn block_count(&self) -> usize {
-        self.visited.len()
-    }
-
     /// Times (s) at the places of a face, if the last search filled it.
     pub(super) fn times_on(&self, face_id: usize, size: usize) -> Option<&[f32]> {
         let face = *self.face_slot.get(face_id)? as usize;
