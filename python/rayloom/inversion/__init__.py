@@ -2,8 +2,8 @@
 
 :func:`invert` is the call; :class:`InversionSettings` says what is believed
 and when to stop; :class:`InversionResult` carries the model and everything that
-was left unexplained. :class:`Problem` and :class:`WhitenedSystem` are the parts
-that appraisals build on.
+was left unexplained. :func:`linearise` freezes the last rays and weights
+of an inversion; trade-offs and appraisals start from there.
 """
 
 from rayloom.inversion.assembly import block_prior, build_problem
@@ -11,6 +11,7 @@ from rayloom.inversion.elimination import GroupMeans
 from rayloom.inversion.forward_map import ForwardMap, Prediction, Report
 from rayloom.inversion.groups import ParameterGroup
 from rayloom.inversion.inverting import invert
+from rayloom.inversion.linearised import LinearisedProblem, linearise
 from rayloom.inversion.outer import run_outer_loop
 from rayloom.inversion.priors import (
     IndependentPrior,
@@ -47,6 +48,7 @@ __all__ = [
     "Iteration",
     "LeastSquares",
     "LeftOutGroup",
+    "LinearisedProblem",
     "ParameterGroup",
     "Prediction",
     "Prior",
@@ -62,6 +64,7 @@ __all__ = [
     "damping_smoothing_prior",
     "history_frame",
     "invert",
+    "linearise",
     "load_state",
     "matern_prior",
     "resolution_trace",

@@ -63,7 +63,7 @@ def build_problem(
         model=model,
         forward=forward,
         block_prior=block_prior(model.grid, settings),
-        linear_groups=tuple(_linear_groups(data, rows, settings)),
+        linear_groups=linear_groups(data, rows, settings),
         settings=settings,
         reference_rays=rays,
         active=active,
@@ -90,9 +90,10 @@ def block_prior(grid: BlockGrid, settings: InversionSettings) -> SpectralPrior:
     )
 
 
-def _linear_groups(
+def linear_groups(
     data: Residuals, rows: DataRows, settings: InversionSettings
-) -> list[ParameterGroup]:
+) -> tuple[ParameterGroup, ...]:
+    """Lay out the unknowns whose columns do not depend on the model."""
     groups = []
     if settings.station_terms:
         groups.append(station_term_group(station_term_layout(rows), settings))
@@ -105,7 +106,7 @@ def _linear_groups(
                 standard_deviation_km=settings.mislocation_std_km,
             )
         )
-    return groups
+    return tuple(groups)
 
 
 def _rows_with_rays(

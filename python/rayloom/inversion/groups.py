@@ -78,6 +78,24 @@ def block_matrix(
     )
 
 
+def block_group(
+    path_lengths: csr_array, reference_slowness_s_per_km: NDArray[np.float64], prior: Prior
+) -> ParameterGroup:
+    """Group of the fractional slowness perturbations of all blocks.
+
+    Parameters
+    ----------
+    path_lengths : (rows, blocks) csr_array
+        Path of each ray in each block, km.
+    reference_slowness_s_per_km : (blocks,) array
+        Slowness that the perturbations refer to, s/km.
+    prior : Prior
+        What is believed of them beforehand.
+    """
+    matrix = block_matrix(path_lengths, reference_slowness_s_per_km)
+    return ParameterGroup(name="blocks", matrix=matrix, prior=prior)
+
+
 def station_term_layout(rows: DataRows) -> StationTermLayout:
     """List the station terms that the rows need: one per station name and phase."""
     phases, phase_code = np.unique(rows.phase, return_inverse=True)

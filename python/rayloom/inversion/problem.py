@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from rayloom.inversion.elimination import GroupMeans
 from rayloom.inversion.forward_map import ForwardMap, Prediction, Report
-from rayloom.inversion.groups import ParameterGroup, block_matrix
+from rayloom.inversion.groups import ParameterGroup, block_group
 from rayloom.inversion.priors import SpectralPrior
 from rayloom.inversion.robust import RobustFit, RobustLoss, robust_fit
 from rayloom.inversion.rows import DataRows, LeftOutGroup
@@ -177,11 +177,7 @@ class Problem:
     def system(self, traced: TracedModel, weights: NDArray[np.float64]) -> WhitenedSystem:
         """Linearise about a traced model."""
         paths = traced.rays.path_lengths[self.rows.ray]
-        blocks = ParameterGroup(
-            name="blocks",
-            matrix=block_matrix(paths, self.model.reference.ravel()),
-            prior=self.block_prior,
-        )
+        blocks = block_group(paths, self.model.reference.ravel(), self.block_prior)
         return WhitenedSystem.of_groups(
             (blocks, *self.linear_groups), self.means(weights), threads=self.settings.threads
         )
