@@ -1,5 +1,5 @@
 """The command line: :func:`main` is ``rayloom``."""
 
-from rayloom.cli.commands import main
+from rayloom.cli.main import main
 
 __all__ = ["main"]
