@@ -5,12 +5,19 @@ keeps beside its code; :func:`read_run_settings` and :func:`run_settings_text` c
 it from and to a file.
 """
 
-from rayloom.settings.run import EarthSettings, InputSettings, RunOutputSettings, RunSettings
+from rayloom.settings.run import (
+    EarthSettings,
+    InputSettings,
+    RunInversionSettings,
+    RunOutputSettings,
+    RunSettings,
+)
 from rayloom.settings.run_file import read_run_settings, run_settings_text
 
 __all__ = [
     "EarthSettings",
     "InputSettings",
+    "RunInversionSettings",
     "RunOutputSettings",
     "RunSettings",
     "read_run_settings",

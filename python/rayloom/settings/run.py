@@ -6,7 +6,7 @@ The main type is :class:`RunSettings`.
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Final
+from typing import Final, Literal, Self
 
 from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
 
@@ -64,6 +64,20 @@ class EarthSettings(BaseModel):
     model: str = Field(default="ak135", min_length=1)
 
 
+class RunInversionSettings(InversionSettings):
+    """How the model is found.
+
+    Attributes
+    ----------
+    wave : {"auto", "P", "S"}
+        Which arrivals are inverted: "P" for those that arrive as P waves, "S" for those that
+        arrive as S waves; "auto" makes one model of each wave that has residuals, with two in
+        the sub-folders P and S.
+    """
+
+    wave: Literal["auto", "P", "S"] = "auto"
+
+
 class RunOutputSettings(OutputSettings):
     """Figures and files.
 
@@ -97,7 +111,9 @@ class RunSettings(BaseModel):
     residuals: ResidualSettings = Field(default_factory=ResidualSettings)
     grid: GridSettings
     forward: ForwardSettings = Field(default_factory=ForwardSettings)
-    inversion: InversionSettings = Field(default_factory=InversionSettings)
+    inversion: RunInversionSettings = Field(
+        default_factory=lambda: RunInversionSettings.model_validate({})
+    )
     outputs: RunOutputSettings = Field(
         default_factory=lambda: RunOutputSettings.model_validate({})
     )
@@ -116,6 +132,22 @@ class RunSettings(BaseModel):
             verb = "belongs" if len(misplaced) == 1 else "belong"
             raise ValueError(f"{' and '.join(misplaced)} {verb} to [forward]")
         return given
+
+    def for_wave(self, wave: str) -> Self:
+        """Return the same settings with one wave chosen.
+
+        Parameters
+        ----------
+        wave : {"P", "S"}
+            The wave to invert.
+
+        Returns
+        -------
+        RunSettings
+        """
+        return self.model_copy(
+            update={"inversion": self.inversion.model_copy(update={"wave": wave})}
+        )
 
     def inversion_settings(self) -> InversionSettings:
         """Return the settings of the inversion with the tracing chosen in ``forward``.

@@ -11,7 +11,7 @@ from pathlib import Path
 
 import numpy as np
 
-from rayloom.earth import ReferenceEarth
+from rayloom.earth import PHASES, ReferenceEarth, phase_wave, standard_phase
 from rayloom.errors import FileAccessError, InputError
 from rayloom.outputs.tables import LEFT_OUT_OF_INVERSION
 from rayloom.residuals import (
@@ -133,7 +133,8 @@ def read_back_residuals(
 ) -> Residuals:
     """Read ``residuals.csv`` of a run folder, as computed or as edited since.
 
-    Its list of exclusions is that of ``exclusions.csv``.
+    Its list of exclusions is that of ``exclusions.csv``. The part of a run folder that
+    belongs to one wave has the rows of that wave only.
 
     Raises
     ------
@@ -151,7 +152,24 @@ def read_back_residuals(
         settings.residuals,
         survey_settings=settings.survey,
     )
-    return replace(data, excluded=_earlier_exclusions(folder.exclusions))
+    excluded = _earlier_exclusions(folder.exclusions)
+    if folder.wave is None:
+        return replace(data, excluded=excluded)
+    of_wave = data.wave == folder.wave
+    if not of_wave.any():
+        raise InputError(
+            f"holds no {folder.wave} residual, while inversion.wave asks for "
+            f"{settings.inversion.wave}",
+            where=str(folder.residuals),
+        )
+    return replace(data.select(of_wave), excluded=_of_wave(excluded, folder.wave))
+
+
+def _of_wave(excluded: Exclusions, wave: str) -> Exclusions:
+    """Leave out exclusions of the other wave; phases of neither are told for both."""
+    usual = [standard_phase(name) for name in excluded.phase.tolist()]
+    other = [name in PHASES and phase_wave(name) != wave for name in usual]
+    return excluded.select(~np.array(other, dtype=bool))
 
 
 def _earlier_exclusions(path: Path) -> Exclusions:

@@ -42,7 +42,7 @@ def export_results(folder: RunFolder, settings: RunSettings, reporter: Reporter)
 
 def _provenance(folder: RunFolder) -> dict[str, str]:
     """Tell what made the model: versions, hashes of the tables, seeds, machine."""
-    steps = Provenance(folder.provenance).steps
+    steps = {**Provenance(folder.run.provenance).steps, **Provenance(folder.provenance).steps}
     told: dict[str, str] = {}
     if "invert" in steps:
         invert = steps["invert"]

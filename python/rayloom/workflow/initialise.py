@@ -19,7 +19,13 @@ from rayloom.inversion import InversionSettings
 from rayloom.model import suggest_grid
 from rayloom.outputs.atomic import replacing, write_text
 from rayloom.residuals import Residuals, ResidualSettings
-from rayloom.settings import EarthSettings, InputSettings, RunSettings, run_settings_text
+from rayloom.settings import (
+    EarthSettings,
+    InputSettings,
+    RunInversionSettings,
+    RunSettings,
+    run_settings_text,
+)
 from rayloom.survey import Picks, Survey, SurveySettings
 from rayloom.workflow.data import Tables, is_table, residuals_from_tables
 from rayloom.workflow.folder import RunFolder
@@ -91,7 +97,8 @@ def initialise(
     reporter.begin("init", "reading the tables")
     settings = _suggested_settings(folder, tables, earth, copy, reporter)
     if inversion is not None:
-        settings = settings.model_copy(update={"inversion": inversion})
+        chosen = RunInversionSettings.model_validate(inversion.model_dump())
+        settings = settings.model_copy(update={"inversion": chosen})
     if copy:
         _copy(tables, folder)
     write_text(

@@ -51,7 +51,9 @@ def run_inversion(
     earth = read_earth(folder, settings.earth.model)
     data = read_back_residuals(folder, earth, settings)
     grid = BlockGrid.from_spec(settings.grid)
-    model = SlownessModel.from_earth(grid, earth, wave=_wave(data, reporter))
+    wave = settings.inversion.wave
+    _tell_waves(data, wave, reporter)
+    model = SlownessModel.from_earth(grid, earth, wave=wave)
     checkpoint = folder.checkpoints / f"invert_{fingerprint}.npz"
     resume = _resumable(checkpoint, reporter)
     log = _IterationLog(checkpoint, reporter, 0 if resume is None else resume.iteration + 1)
@@ -76,13 +78,11 @@ def run_inversion(
     )
 
 
-def _wave(data: Residuals, reporter: Reporter) -> str:
-    """Choose the wave that is inverted for: P where there is any."""
-    waves = np.unique(data.wave).tolist()
-    if len(waves) > 1:
-        unused = int(np.count_nonzero(data.wave != "P"))
-        reporter.note(f"P residuals are inverted; {unused} S residuals are left aside")
-    return "P" if "P" in waves else "S"
+def _tell_waves(data: Residuals, wave: str, reporter: Reporter) -> None:
+    """Tell which residuals the model is made from."""
+    aside = int(np.count_nonzero(data.wave != wave))
+    if aside:
+        reporter.note(f"{wave} residuals are inverted; {aside} of the other wave are left aside")
 
 
 class _IterationLog:

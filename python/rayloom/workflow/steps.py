@@ -28,6 +28,7 @@ STEPS: Final = (
         },
         settings=lambda settings: _sections(settings, "earth", "survey", "residuals"),
         work=lambda folder, settings, reporter: _residuals(folder, settings, reporter),
+        scope="run",
     ),
     Step(
         name="invert",
@@ -36,6 +37,7 @@ STEPS: Final = (
         work=lambda folder, settings, reporter: run_inversion(
             folder, settings, reporter, fingerprint=_inversion_fingerprint(folder, settings)
         ),
+        builds_on=("residuals",),
     ),
     Step(
         name="export",
@@ -44,6 +46,7 @@ STEPS: Final = (
         },
         settings=lambda settings: _sections(settings, "outputs"),
         work=export_results,
+        builds_on=("invert",),
     ),
 )
 """The steps in the order of the work."""

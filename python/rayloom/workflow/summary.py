@@ -4,11 +4,13 @@ from __future__ import annotations
 
 import math
 from collections import Counter
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
 from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.record import Provenance
+from rayloom.workflow.waves import wave_parts
 
 _ORDER = ("residuals", "invert", "export")
 _LABEL_WIDTH = 12
@@ -21,7 +23,7 @@ def summarise(path: str | Path, *, upto: str = "export") -> str:
     Parameters
     ----------
     path : str or pathlib.Path
-        The run folder.
+        The run folder, or its part of one wave.
     upto : {"residuals", "invert", "export"}
         The last step to tell of.
 
@@ -30,19 +32,33 @@ def summarise(path: str | Path, *, upto: str = "export") -> str:
     str
         A few lines: data, exclusions, misfit, model, files.
     """
-    folder = RunFolder(Path(path))
+    folder = RunFolder.at(path)
     told = _ORDER[: _ORDER.index(upto) + 1]
-    done = Provenance(folder.provenance).steps
-    steps = {name: done[name] for name in told if name in done}
     lines: list[tuple[str, str]] = []
-    if "residuals" in steps:
+    if "residuals" in Provenance(folder.run.provenance).steps:
         lines += _data_lines(folder)
-    if "invert" in steps:
-        lines += _model_lines(folder, steps["invert"].remarks.get("stopped_because", ""))
-    written = [name for step in steps.values() for name in step.outputs]
-    if written:
-        lines.append(("results", f"in {folder.path}: {_listing(written)}"))
+    parts = wave_parts(folder, folder.read_settings())
+    for part in parts:
+        lines += _part_lines(part.folder, told)
+    if len(parts) > 1:
+        lines += _file_lines(folder, [*told, "ratio"])
     return "\n".join(f"{label:<{_LABEL_WIDTH}}{text}" for label, text in lines)
+
+
+def _part_lines(home: RunFolder, told: Sequence[str]) -> list[tuple[str, str]]:
+    """Tell of one wave."""
+    lines = [] if home.wave is None else [(f"{home.wave} waves", "")]
+    steps = Provenance(home.provenance).steps
+    if "invert" in steps and "invert" in told:
+        lines += _model_lines(home, steps["invert"].remarks.get("stopped_because", ""))
+    return [*lines, *_file_lines(home, told)]
+
+
+def _file_lines(home: RunFolder, told: Sequence[str]) -> list[tuple[str, str]]:
+    """Name the files of the steps told of."""
+    steps = Provenance(home.provenance).steps
+    written = [name for step in told if step in steps for name in steps[step].outputs]
+    return [("results", f"in {home.path}: {_listing(written)}")] if written else []
 
 
 def _data_lines(folder: RunFolder) -> list[tuple[str, str]]:
