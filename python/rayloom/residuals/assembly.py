@@ -127,7 +127,7 @@ def read_residuals(
 
 
 @dataclass(frozen=True)
-class _Screened:
+class Screened:
     """Readings with what was computed beside them, and which of them are still in."""
 
     selection: Selection
@@ -147,7 +147,7 @@ def _assembled(
     notices: list[Notice],
 ) -> Residuals:
     readings = with_usual_names(readings)
-    screened = _screened(readings, stations, events, earth, settings, ready=ready)
+    screened = screen_readings(readings, stations, events, earth, settings, ready=ready)
     excluded = _exclusions(screened.selection, readings, stations, events)
     _check_any_left(screened.selection, excluded)
     kept = screened.selection.kept
@@ -175,7 +175,7 @@ def _assembled(
     )
 
 
-def _screened(
+def screen_readings(
     readings: Readings,
     stations: Stations,
     events: Events,
@@ -183,14 +183,43 @@ def _screened(
     settings: ResidualSettings,
     *,
     ready: bool,
-) -> _Screened:
+    everywhere: bool = False,
+) -> Screened:
+    """Predict readings and tell which of them are left out, and why.
+
+    Parameters
+    ----------
+    readings : Readings
+        Phases by their usual names.
+    stations, events : Stations, Events
+        The tables that the readings refer to.
+    earth : ReferenceEarth
+        The Earth of the predictions.
+    settings : ResidualSettings
+        Windows, limits, corrections.
+    ready : bool
+        Whether the readings are residuals already.
+    everywhere : bool
+        Predict readings outside the windows as well, which are left out all the same.
+
+    Returns
+    -------
+    Screened
+    """
     selection = Selection(len(readings))
     phase = readings.phase
     geometry = pair_geometry(events, stations, readings.event_index, readings.station_index)
     screen_phases(selection, phase, settings)
+    known = selection.kept.copy()
     screen_distances(selection, phase, geometry.distance_deg, settings)
     prediction = _predicted_where(
-        selection.kept, readings, geometry, stations, events, earth, settings
+        known if everywhere else selection.kept,
+        readings,
+        geometry,
+        stations,
+        events,
+        earth,
+        settings,
     )
     predicted_s = prediction.total_s
     screen_arrivals(selection, phase, geometry.distance_deg, predicted_s)
@@ -198,7 +227,7 @@ def _screened(
     screen_residuals(
         selection, readings.event_index, readings.station_index, phase, residual_s, settings
     )
-    return _Screened(selection, geometry, prediction, residual_s)
+    return Screened(selection, geometry, prediction, residual_s)
 
 
 def _predicted_where(

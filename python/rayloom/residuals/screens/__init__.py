@@ -1,0 +1,1 @@
+"""Screens: what looks wrong in the arrivals of a survey."""
