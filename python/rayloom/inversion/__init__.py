@@ -13,6 +13,7 @@ from rayloom.inversion.groups import ParameterGroup
 from rayloom.inversion.inverting import invert
 from rayloom.inversion.linearised import LinearisedProblem, linearise
 from rayloom.inversion.outer import run_outer_loop
+from rayloom.inversion.posterior import group_standard_deviation, posterior_variance
 from rayloom.inversion.priors import (
     IndependentPrior,
     Prior,
@@ -62,11 +63,13 @@ __all__ = [
     "block_prior",
     "build_problem",
     "damping_smoothing_prior",
+    "group_standard_deviation",
     "history_frame",
     "invert",
     "linearise",
     "load_state",
     "matern_prior",
+    "posterior_variance",
     "resolution_trace",
     "robust_fit",
     "run_outer_loop",
