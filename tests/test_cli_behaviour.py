@@ -20,7 +20,7 @@ from rayloom.cli.console import BarReporter, LineReporter
 from rayloom.cli.teaching import keep_examples
 from run_folder_cases import write_run_folder, write_small_survey
 
-COMMANDS = ("demo", "init", "run", "residuals", "invert", "export")
+COMMANDS = ("demo", "init", "run", "residuals", "invert", "export", "ratio")
 
 
 def test_version() -> None:

@@ -6,6 +6,7 @@ import json
 import shutil
 from pathlib import Path
 
+import numpy as np
 import pandas as pd
 import pytest
 
@@ -38,7 +39,7 @@ def add_s_picks(files: SurveyFiles, *, factor: float = 1.8) -> None:
     arrival_s = earth.travel_time("S", distance_deg, source_depth_km=33.0) + factor * delay_s
     time = origin + pd.to_timedelta(arrival_s, unit="s")
     added = rows[["event", "network", "station"]].assign(
-        phase="S", time=time.dt.strftime("%Y-%m-%dT%H:%M:%S.%fZ"), uncertainty_s=0.2
+        phase="S", time=time.dt.strftime("%Y-%m-%dT%H:%M:%S.%fZ"), uncertainty_s=0.1 * factor
     )
     pd.concat([picks, added]).to_csv(files.picks, index=False)
 
@@ -52,9 +53,20 @@ def files(tmp_path_factory: pytest.TempPathFactory) -> SurveyFiles:
 
 @pytest.fixture(scope="module")
 def finished(files: SurveyFiles, tmp_path_factory: pytest.TempPathFactory) -> Path:
-    folder = write_run_folder(tmp_path_factory.mktemp("finished") / "run", files)
+    folder = with_station_terms(
+        write_run_folder(tmp_path_factory.mktemp("finished") / "run", files)
+    )
     done = run(folder)
-    assert done == ["residuals", "invert P", "export P", "invert S", "export S"]
+    assert done == ["residuals", "invert P", "export P", "invert S", "export S", "ratio"]
+    return folder
+
+
+def with_station_terms(folder: Path) -> Path:
+    """Expect station terms of S to be 1.8 times those of P."""
+    path = folder / "rayloom.toml"
+    text = path.read_text(encoding="utf-8")
+    sizes = "station_term_std_s = { P = 0.2, S = 0.36 }"
+    path.write_text(text.replace("[inversion]", f"[inversion]\n{sizes}"), encoding="utf-8")
     return folder
 
 
@@ -80,7 +92,7 @@ def test_each_wave_has_a_model_and_tables_of_its_own(finished: Path) -> None:
 def test_a_wave_alone_gives_the_same_model_without_sub_folders(
     finished: Path, files: SurveyFiles, tmp_path: Path
 ) -> None:
-    folder = write_run_folder(tmp_path / "run", files)
+    folder = with_station_terms(write_run_folder(tmp_path / "run", files))
     choose(folder, "S")
     run_step(folder, "residuals")
     run_step(folder, "invert")
@@ -107,7 +119,37 @@ def test_steps_of_waves_are_recorded_beside_their_results(finished: Path) -> Non
     assert list(record["steps"]) == ["invert", "export"]
     assert record["steps"]["invert"]["settings"]["inversion"]["wave"] == "S"
     whole = json.loads((finished / "provenance.json").read_text(encoding="utf-8"))
-    assert list(whole["steps"]) == ["residuals"]
+    assert list(whole["steps"]) == ["residuals", "ratio"]
+
+
+def test_the_ratio_compares_the_two_models(finished: Path) -> None:
+    """S is P with every time 1.8 times as long, and so are the slownesses of ak135.
+
+    Where vp/vs of the reference is 1.8 the two problems are one, and the ratio is 1; in the
+    mantle it is 1.8 within 4 %.
+    """
+    import xarray
+
+    with xarray.open_dataset(finished / "ratio.nc", engine="h5netcdf") as ratio:
+        values = ratio["dlnvs_dlnvp"].values
+        shown = np.isfinite(values)
+        assert np.all(np.abs(ratio["dvp"].values[shown]) >= 0.5)
+        assert np.all(ratio["hits_p"].values[shown] >= 5)
+        assert shown.sum() > 15
+        assert np.median(values[shown]) == pytest.approx(1.0, abs=0.05)
+    assert (finished / "figures" / "ratio.png").exists()
+
+
+def test_the_ratio_needs_both_waves_done(finished: Path, tmp_path: Path) -> None:
+    folder = shutil.copytree(finished, tmp_path / "run")
+    (folder / "S" / "inversion.npz").unlink()
+    with pytest.raises(
+        InputError, match=r"'ratio' builds on 'invert S'.*inversion\.npz is missing"
+    ):
+        run_step(folder, "ratio")
+    choose(folder, "P")
+    with pytest.raises(InputError, match="this run inverts one"):
+        run_step(folder, "ratio")
 
 
 def test_the_summary_tells_of_both_waves(finished: Path) -> None:

@@ -15,7 +15,7 @@ from rayloom import __version__
 from rayloom.cli.beginning import demo, init
 from rayloom.cli.guard import GuardedGroup
 from rayloom.cli.running import run
-from rayloom.cli.stepping import export, invert, residuals
+from rayloom.cli.stepping import export, invert, ratio, residuals
 
 _CONTEXT = {"help_option_names": ["-h", "--help"], "max_content_width": 92}
 
@@ -39,7 +39,7 @@ def main() -> None:
     """
 
 
-COMMANDS: Final = (demo, init, run, residuals, invert, export)
+COMMANDS: Final = (demo, init, run, residuals, invert, export, ratio)
 """All commands in the order of the work."""
 
 for command in COMMANDS:

@@ -18,7 +18,8 @@ from rayloom.cli.teaching import TaughtCommand
 def run(ctx: click.Context, folder: Path, quiet: bool) -> None:
     """Do everything still to do in a run folder.
 
-    The steps are residuals, invert and export. A step is done when its results are missing
+    The steps are residuals, invert and export, the last two for each wave ([inversion]
+    wave), and ratio where there are two. A step is done when its results are missing
     or when its input files or its settings have changed since (told by their contents, not
     their dates), and the reason is printed. An inversion that was stopped goes on from its
     last finished iteration.
@@ -27,7 +28,8 @@ def run(ctx: click.Context, folder: Path, quiet: bool) -> None:
     Writes:  residuals.csv, exclusions.csv, residuals_after.csv, suspected_outliers.csv,
              station_terms.csv, mislocations.csv, history.csv, model.nc, inversion.npz,
              model.vts, rays.vtp, stations.vtp, events.vtp, figures/, report.html,
-             settings_used.toml, provenance.json
+             settings_used.toml, provenance.json. With P and S arrivals the results of
+             either go to DIR/P and DIR/S, and both side by side to ratio.nc
     Example: rayloom run highland
     """
     from rayloom.cli.console import listening

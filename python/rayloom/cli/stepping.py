@@ -1,4 +1,4 @@
-"""The commands that do one step of a run: ``residuals``, ``invert`` and ``export``."""
+"""The commands that do one step of a run: ``residuals``, ``invert``, ``export``, ``ratio``."""
 
 from __future__ import annotations
 
@@ -65,3 +65,21 @@ def export(ctx: click.Context, folder: Path, again: bool, quiet: bool) -> None:
     Example: rayloom export highland
     """
     one_step(ctx, "export", folder, again=again, quiet=quiet)
+
+
+@click.command(cls=TaughtCommand)
+@folder_argument
+@again_option
+@quiet_option
+@click.pass_context
+def ratio(ctx: click.Context, folder: Path, again: bool, quiet: bool) -> None:
+    """Set the P and the S model of a run side by side.
+
+    Maps d ln Vs / d ln Vp where both waves have enough rays and dVp is large enough, and
+    the ratio of P to S velocity.
+
+    Reads:   P/model.nc, S/model.nc; [outputs] ratio_min_hits, ratio_min_percent
+    Writes:  ratio.nc, figures/ratio.png
+    Example: rayloom ratio highland
+    """
+    one_step(ctx, "ratio", folder, again=again, quiet=quiet)

@@ -11,6 +11,7 @@ from rayloom.model.grid import BlockGrid, BlockWidths
 from rayloom.model.settings import EdgeSegment, GridSettings, SuggestionSettings
 from rayloom.model.slowness import SlownessModel
 from rayloom.model.suggest import GridSuggestion, suggest_grid
+from rayloom.model.wave_ratio import WaveRatio, wave_ratio
 
 __all__ = [
     "BlockGrid",
@@ -21,5 +22,7 @@ __all__ = [
     "GridSuggestion",
     "SlownessModel",
     "SuggestionSettings",
+    "WaveRatio",
     "suggest_grid",
+    "wave_ratio",
 ]

@@ -14,6 +14,7 @@ version 1.8, chapters 4, 5.6, 7.1 and appendix F.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
@@ -52,9 +53,35 @@ def dataset_of(model: SlownessModel) -> xarray.Dataset:
         Variables ``vp``, ``vp_reference``, ``dvp`` (``vs`` … for S), ``slowness``,
         ``slowness_reference`` and the model's fields, each of shape (nz, ny, nx).
     """
+    return block_dataset(
+        model.grid,
+        _block_variables(model),
+        title=f"Seismic {model.wave}-wave velocity of the Earth in blocks",
+        wave=model.wave,
+    )
+
+
+def block_dataset(
+    grid: BlockGrid, blocks: Mapping[str, tuple[Floats, FieldDescription]], **attributes: str
+) -> xarray.Dataset:
+    """Describe quantities per block as an xarray dataset.
+
+    Parameters
+    ----------
+    grid : BlockGrid
+        The blocks.
+    blocks : mapping of str to (ndarray of shape (nx, ny, nz), FieldDescription)
+        The quantities by name.
+    **attributes : str
+        What else the dataset says of itself.
+
+    Returns
+    -------
+    xarray.Dataset
+        With axes, bounds and geographic coordinates.
+    """
     import xarray
 
-    grid = model.grid
     placing = {} if grid.frame.is_flat else {"grid_mapping": "rotated_pole"}
     variables: dict[str, Any] = {
         name: (
@@ -62,7 +89,7 @@ def dataset_of(model: SlownessModel) -> xarray.Dataset:
             values.transpose(2, 1, 0),
             {"units": description.units, "long_name": description.long_name, **placing},
         )
-        for name, (values, description) in _block_variables(model).items()
+        for name, (values, description) in blocks.items()
     }
     if not grid.frame.is_flat:
         variables["rotated_pole"] = ((), np.int32(0), _rotated_pole(grid.frame))
@@ -71,12 +98,11 @@ def dataset_of(model: SlownessModel) -> xarray.Dataset:
         coords={**_axes(grid), **_geography(grid)},
         attrs={
             "Conventions": "CF-1.8",
-            "title": f"Seismic {model.wave}-wave velocity of the Earth in blocks",
             "source": f"rayloom {__version__}",
             "history": f"written by rayloom {__version__}",
             "comment": "Values are constant within a block; block edges are the axes' bounds. "
             "Perturbations are relative to the regional mean.",
-            "wave": model.wave,
+            **attributes,
         },
     )
 

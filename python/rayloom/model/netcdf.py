@@ -4,11 +4,14 @@ from __future__ import annotations
 
 import os
 from pathlib import Path
-from typing import Any, Final
+from typing import TYPE_CHECKING, Any, Final
 
 from rayloom.errors import FileAccessError, InputError
 from rayloom.model.dataset import dataset_of, model_of
 from rayloom.model.slowness import SlownessModel
+
+if TYPE_CHECKING:
+    import xarray
 
 ENGINE: Final = "h5netcdf"
 
@@ -28,7 +31,24 @@ def write(model: SlownessModel, path: Path) -> None:
     FileAccessError
         If the file cannot be written.
     """
-    dataset = dataset_of(model)
+    write_dataset(dataset_of(model), path)
+
+
+def write_dataset(dataset: xarray.Dataset, path: Path) -> None:
+    """Write a dataset of blocks under a temporary name, then give it its own.
+
+    Parameters
+    ----------
+    dataset : xarray.Dataset
+        As :func:`rayloom.model.dataset.block_dataset` makes it.
+    path : Path
+        The file, replaced if there.
+
+    Raises
+    ------
+    FileAccessError
+        If the file cannot be written.
+    """
     packed = {"zlib": True, "complevel": 4, "shuffle": True}
     encoding: dict[Any, dict[str, Any]] = {
         name: {"_FillValue": None, **(packed if variable.ndim == 3 else {})}

@@ -79,4 +79,16 @@ class OutputSettings(BaseModel):
     figure_formats: Annotated[tuple[Literal["png", "pdf", "svg"], ...], Field(min_length=1)] = (
         Field(("png",), description="Formats of every figure: png, pdf, svg.")
     )
+    ratio_min_hits: int = Field(
+        5,
+        ge=1,
+        description="Rays of P and of S that a block must have for d ln Vs / d ln Vp, where a "
+        "run inverts both waves.",
+    )
+    ratio_min_percent: float = Field(
+        0.5,
+        gt=0,
+        allow_inf_nan=False,
+        description="Size of dVp, percent, that a block must have for it.",
+    )
     dpi: int = Field(200, ge=50, le=1200, description="Dots per inch of png figures.")

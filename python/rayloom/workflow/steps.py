@@ -1,4 +1,4 @@
-"""The steps of a run: residuals, invert, export.
+"""The steps of a run: residuals, invert, export, and ratio where it inverts two waves.
 
 Each says which files it reads, which settings bear on its result, and does its work
 by calling the rooms. :data:`STEPS` lists them in order.
@@ -11,6 +11,7 @@ from typing import Any, Final
 
 from rayloom.outputs import write_exclusions_csv, write_residuals_csv
 from rayloom.settings import RunSettings
+from rayloom.workflow.comparing_waves import ratio_inputs, write_ratio
 from rayloom.workflow.data import Tables, is_table, read_earth, residuals_from_tables
 from rayloom.workflow.exporting import export_results
 from rayloom.workflow.folder import RunFolder
@@ -47,6 +48,17 @@ STEPS: Final = (
         settings=lambda settings: _sections(settings, "outputs"),
         work=export_results,
         builds_on=("invert",),
+    ),
+    Step(
+        name="ratio",
+        inputs=lambda folder, settings: {
+            **ratio_inputs(folder),
+            "stations": Tables.of(folder, settings).stations,
+        },
+        settings=lambda settings: _sections(settings, "outputs"),
+        work=write_ratio,
+        builds_on=("invert",),
+        scope="waves",
     ),
 )
 """The steps in the order of the work."""

@@ -12,19 +12,19 @@ from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.record import Provenance
 from rayloom.workflow.waves import wave_parts
 
-_ORDER = ("residuals", "invert", "export")
+_ORDER = ("residuals", "invert", "export", "ratio")
 _LABEL_WIDTH = 12
 _LOOK_FIRST = ("report.html", "figures/", "model.nc", "model.vts", "rays.vtp")
 
 
-def summarise(path: str | Path, *, upto: str = "export") -> str:
+def summarise(path: str | Path, *, upto: str = "ratio") -> str:
     """Tell what the steps done so far have found.
 
     Parameters
     ----------
     path : str or pathlib.Path
         The run folder, or its part of one wave.
-    upto : {"residuals", "invert", "export"}
+    upto : {"residuals", "invert", "export", "ratio"}
         The last step to tell of.
 
     Returns
@@ -41,7 +41,7 @@ def summarise(path: str | Path, *, upto: str = "export") -> str:
     for part in parts:
         lines += _part_lines(part.folder, told)
     if len(parts) > 1:
-        lines += _file_lines(folder, [*told, "ratio"])
+        lines += _joint_lines(folder) if "ratio" in told else []
     return "\n".join(f"{label:<{_LABEL_WIDTH}}{text}" for label, text in lines)
 
 
@@ -52,6 +52,14 @@ def _part_lines(home: RunFolder, told: Sequence[str]) -> list[tuple[str, str]]:
     if "invert" in steps and "invert" in told:
         lines += _model_lines(home, steps["invert"].remarks.get("stopped_because", ""))
     return [*lines, *_file_lines(home, told)]
+
+
+def _joint_lines(folder: RunFolder) -> list[tuple[str, str]]:
+    """Tell how P and S compare."""
+    step = Provenance(folder.provenance).steps.get("ratio")
+    if step is None:
+        return []
+    return [("S to P", step.remarks.get("ratio", "")), *_file_lines(folder, ["ratio"])]
 
 
 def _file_lines(home: RunFolder, told: Sequence[str]) -> list[tuple[str, str]]:
