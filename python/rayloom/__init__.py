@@ -14,7 +14,7 @@ if TYPE_CHECKING:
     from rayloom.forward import trace, trace_distant
     from rayloom.inversion import InversionSettings, invert
     from rayloom.model import BlockGrid, Frame, SlownessModel
-    from rayloom.residuals import compute_residuals
+    from rayloom.residuals import compute_residuals, read_residuals
     from rayloom.survey import read_survey
 
 _ROOMS = {
@@ -27,6 +27,7 @@ _ROOMS = {
     "Frame": "rayloom.model",
     "SlownessModel": "rayloom.model",
     "compute_residuals": "rayloom.residuals",
+    "read_residuals": "rayloom.residuals",
     "read_survey": "rayloom.survey",
 }
 
@@ -38,6 +39,7 @@ __all__ = [
     "SlownessModel",
     "compute_residuals",
     "invert",
+    "read_residuals",
     "read_survey",
     "trace",
     "trace_distant",

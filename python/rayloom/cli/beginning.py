@@ -47,7 +47,7 @@ def demo(ctx: click.Context, folder: Path, quiet: bool) -> None:
 @file_option(
     "--stations",
     "CSV: network, station, latitude, longitude, elevation_m; or StationXML or FDSN text. "
-    "A folder stands for all files in it.",
+    "A folder stands for all files in it; an option may be given several times.",
     required=True,
 )
 @file_option(
@@ -71,10 +71,10 @@ def demo(ctx: click.Context, folder: Path, quiet: bool) -> None:
 def init(
     ctx: click.Context,
     folder: Path,
-    stations: Path,
-    events: Path,
-    picks: Path | None,
-    residuals: Path | None,
+    stations: tuple[Path, ...],
+    events: tuple[Path, ...],
+    picks: tuple[Path, ...],
+    residuals: tuple[Path, ...],
     earth: str,
     copy: bool,
     force: bool,
@@ -95,7 +95,7 @@ def init(
     from rayloom.workflow import Tables, initialise
 
     ctx.meta[FOLDER] = folder
-    tables = Tables(stations=stations, events=events, picks=picks, residuals=residuals)
+    tables = Tables.given(stations=stations, events=events, picks=picks, residuals=residuals)
     with listening(quiet=quiet) as reporter:
         initialise(folder, tables, earth=earth, copy=copy, force=force, reporter=reporter)
     click.echo(f"Wrote {folder / 'rayloom.toml'}. Look it through, then: rayloom run {folder}")

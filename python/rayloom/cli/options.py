@@ -33,12 +33,13 @@ def again_option(command: Command) -> Command:
 
 
 def file_option(name: str, columns: str, *, required: bool = False) -> Callable[..., Any]:
-    """Take a file, ``columns`` saying what it holds."""
+    """Take a file, or several by giving it again, ``columns`` saying what they hold."""
     return click.option(
         name,
         type=click.Path(path_type=Path),
         metavar="FILE",
         required=required,
+        multiple=True,
         help=columns,
     )
 

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from pathlib import Path
 
 import numpy as np
 
@@ -27,6 +26,7 @@ from rayloom.residuals.screening import (
 from rayloom.residuals.settings import ResidualSettings
 from rayloom.residuals.table import Residuals
 from rayloom.survey import Events, Notice, Stations, Survey, SurveySettings
+from rayloom.survey.formats import Source
 from rayloom.survey.tables import BoolArray, FloatArray
 
 
@@ -70,7 +70,7 @@ def compute_residuals(
 
 
 def read_residuals(
-    path: str | Path,
+    path: Source,
     stations: Stations,
     events: Events,
     earth: ReferenceEarth,
@@ -86,8 +86,8 @@ def read_residuals(
 
     Parameters
     ----------
-    path : str or Path
-        The file (CSV).
+    path : path, sequence of paths or DataFrame
+        Files (CSV), folders of files, or a data frame with their columns.
     stations, events : Stations, Events
         Tables that the residuals refer to.
     earth : ReferenceEarth

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from pathlib import Path
 from typing import Final
 
 import numpy as np
@@ -11,6 +10,7 @@ import numpy as np
 from rayloom.earth import standard_phase
 from rayloom.survey import Events, Notice, Stations, Survey, SurveySettings
 from rayloom.survey.columns import ColumnReader, Span
+from rayloom.survey.formats import Source, read_table
 from rayloom.survey.references import find_events, find_stations
 from rayloom.survey.repeats import drop_repeats
 from rayloom.survey.tables import (
@@ -22,7 +22,7 @@ from rayloom.survey.tables import (
     TimeArray,
     seconds_between,
 )
-from rayloom.survey.text_table import TextTable, read_text_table
+from rayloom.survey.text_table import TextTable
 from rayloom.survey.uncertainty import read_uncertainty
 
 _TYPICAL_TRAVEL: Final = np.timedelta64(720, "s")
@@ -77,13 +77,13 @@ def travel_times_of(survey: Survey) -> Readings:
 
 
 def read_ready_residuals(
-    path: str | Path,
+    path: Source,
     stations: Stations,
     events: Events,
     settings: SurveySettings,
     notices: list[Notice],
 ) -> Readings:
-    """Read a residuals file (CSV); a station's epoch is that of a typical arrival.
+    """Read residuals from CSV; a station's epoch is that of a typical arrival.
 
     Raises
     ------
@@ -92,7 +92,7 @@ def read_ready_residuals(
     FileProblemsError
         With every problem of the file: line, column, value, what was expected.
     """
-    table = read_text_table(path)
+    table = read_table(path, "residuals")
     reader = ColumnReader(table)
     reader.require(_REQUIRED, (*_REQUIRED, "uncertainty_s", "quality"))
     event, network, station = (reader.text(name) for name in ("event", "network", "station"))

@@ -6,9 +6,16 @@ The main type is :class:`RunSettings`.
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Final, Literal, Self
+from typing import Annotated, Final, Literal, Self
 
-from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+from pydantic import (
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    field_validator,
+    model_validator,
+)
 
 from rayloom.forward import ForwardSettings
 from rayloom.inversion import InversionSettings
@@ -21,27 +28,43 @@ TRACING_KEYS: Final = ("method", "quality", "threads")
 """Keys of ``forward`` that the inversion takes over."""
 
 
+def _name_or_names(given: object) -> object:
+    """Take the name of a file, or a list of names."""
+    names = given if isinstance(given, list | tuple) else [given]
+    if not names or not all(isinstance(name, str | Path) for name in names):
+        raise ValueError(
+            f"got {given!r}, expected the name of a file in quotes, or a list of such names"
+        )
+    return given
+
+
+FileNames = Annotated[Path | tuple[Path, ...], BeforeValidator(_name_or_names)]
+"""A file, or several that are read as one table; a folder stands for all files in it."""
+
+
 class InputSettings(BaseModel):
     """Tables to read, relative to this folder. Give picks, or residuals if you have them already.
 
+    Each is a file, a folder of files, or a list of either, as in picks = ["a.csv", "b.csv"].
+
     Attributes
     ----------
-    stations : path
+    stations : path or list of paths
         CSV with network, station, latitude, longitude, elevation_m; StationXML; FDSN text.
-    events : path
+    events : path or list of paths
         CSV with event, time, latitude, longitude, depth_km; QuakeML; FDSN text.
-    picks : path, optional
+    picks : path or list of paths, optional
         CSV with event, network, station, phase, time, uncertainty_s; QuakeML.
-    residuals : path, optional
+    residuals : path or list of paths, optional
         event, network, station, phase, residual_s, uncertainty_s.
     """
 
     model_config = ConfigDict(extra="forbid", frozen=True)
 
-    stations: Path
-    events: Path
-    picks: Path | None = None
-    residuals: Path | None = None
+    stations: FileNames
+    events: FileNames
+    picks: FileNames | None = None
+    residuals: FileNames | None = None
 
     @model_validator(mode="after")
     def _one_kind_of_data(self) -> InputSettings:

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Final
 import numpy as np
 
 from rayloom.survey.columns import ColumnReader, Span
-from rayloom.survey.formats import Paths, Progress, read_table
+from rayloom.survey.formats import Progress, Source, read_table
 from rayloom.survey.notices import Notice
 from rayloom.survey.problems import Problems
 from rayloom.survey.spans import LATITUDE, LONGITUDE
@@ -110,7 +110,7 @@ class Events(ColumnTable):
 
 
 def read_events(
-    path: Paths, *, notices: list[Notice] | None = None, progress: Progress | None = None
+    path: Source, *, notices: list[Notice] | None = None, progress: Progress | None = None
 ) -> Events:
     """Read events from CSV, QuakeML or the text of an FDSN event service.
 
@@ -120,8 +120,9 @@ def read_events(
 
     Parameters
     ----------
-    path : path or sequence of paths
-        Files, or folders of files; formats are told by contents.
+    path : path, sequence of paths or DataFrame
+        Files, or folders of files, formats told by contents; or a data frame with
+        the columns of the CSV file.
     notices : list of Notice, optional
         Remarks are appended here.
     progress : callable, optional

@@ -10,7 +10,7 @@ import numpy as np
 from rayloom.survey.catalogues import picks_of_survey
 from rayloom.survey.columns import ColumnReader
 from rayloom.survey.events import Events
-from rayloom.survey.formats import Paths, Progress, read_table
+from rayloom.survey.formats import Progress, Source, read_table
 from rayloom.survey.notices import Notice
 from rayloom.survey.references import find_events, find_stations
 from rayloom.survey.repeats import drop_repeats
@@ -122,7 +122,7 @@ class Picks(ColumnTable):
 
 
 def read_picks(
-    path: Paths,
+    path: Source,
     stations: Stations,
     events: Events,
     *,
@@ -141,8 +141,9 @@ def read_picks(
 
     Parameters
     ----------
-    path : path or sequence of paths
-        Files, or folders of files; formats are told by contents.
+    path : path, sequence of paths or DataFrame
+        Files, or folders of files, formats told by contents; or a data frame with
+        the columns of the CSV file.
     stations, events : Stations, Events
         Tables that the picks refer to.
     settings : SurveySettings, optional

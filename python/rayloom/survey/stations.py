@@ -9,7 +9,7 @@ import numpy as np
 
 from rayloom.survey.columns import ColumnReader
 from rayloom.survey.epochs import tidy_epochs
-from rayloom.survey.formats import Paths, Progress, read_table
+from rayloom.survey.formats import Progress, Source, read_table
 from rayloom.survey.notices import Notice
 from rayloom.survey.spans import BURIAL, ELEVATION, LATITUDE, LONGITUDE
 from rayloom.survey.tables import (
@@ -125,7 +125,7 @@ class Stations(ColumnTable):
 
 
 def read_stations(
-    path: Paths, *, notices: list[Notice] | None = None, progress: Progress | None = None
+    path: Source, *, notices: list[Notice] | None = None, progress: Progress | None = None
 ) -> Stations:
     """Read stations from CSV, StationXML or the text of an FDSN station service.
 
@@ -135,8 +135,9 @@ def read_stations(
 
     Parameters
     ----------
-    path : path or sequence of paths
-        Files, or folders of files; formats are told by contents.
+    path : path, sequence of paths or DataFrame
+        Files, or folders of files, formats told by contents; or a data frame with
+        the columns of the CSV file.
     notices : list of Notice, optional
         Remarks are appended here.
     progress : callable, optional

@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from rayloom.survey.events import Events, read_events
-from rayloom.survey.formats import Paths, Progress, total_bytes
+from rayloom.survey.formats import Progress, Source, total_bytes
 from rayloom.survey.network import remote_stations
 from rayloom.survey.notices import Notice, few
 from rayloom.survey.picks import Picks, read_picks
@@ -37,18 +37,18 @@ class Survey:
 
 def read_survey(
     *,
-    stations: Paths,
-    events: Paths,
-    picks: Paths,
+    stations: Source,
+    events: Source,
+    picks: Source,
     settings: SurveySettings | None = None,
     progress: Progress | None = None,
 ) -> Survey:
-    """Read a survey from CSV, StationXML, QuakeML or the text of FDSN web services.
+    """Read a survey from CSV, StationXML, QuakeML, FDSN text or data frames.
 
     Parameters
     ----------
-    stations, events, picks : path or sequence of paths
-        Files, or folders of files; their contents are described at
+    stations, events, picks : path, sequence of paths or DataFrame
+        Files, folders of files, or data frames; their contents are described at
         :func:`read_stations`, :func:`read_events` and :func:`read_picks`. One
         QuakeML file may serve as events and picks.
     settings : SurveySettings, optional
@@ -82,7 +82,7 @@ def read_survey(
 
 
 def _stages(
-    progress: Progress | None, stations: Paths, events: Paths, picks: Paths
+    progress: Progress | None, stations: Source, events: Source, picks: Source
 ) -> list[Progress | None]:
     """Give each stage of the reading a progress of its own that counts on from the last."""
     if progress is None:

@@ -5,8 +5,8 @@ The main function is :func:`residuals_from_tables`.
 
 from __future__ import annotations
 
-from collections.abc import Iterable
-from dataclasses import dataclass, replace
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass, fields, replace
 from pathlib import Path
 
 import numpy as np
@@ -27,6 +27,10 @@ from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.reporting import Reporter
 
 _SHOWN_PER_KIND = 3
+_BYTES_PER_KB = 1000
+
+TableFiles = Path | tuple[Path, ...]
+"""A file or folder, or several that make one table."""
 
 
 @dataclass(frozen=True)
@@ -35,37 +39,66 @@ class Tables:
 
     Parameters
     ----------
-    stations, events : pathlib.Path
-        Tables of stations and events.
-    picks, residuals : pathlib.Path, optional
+    stations, events : pathlib.Path or tuple of pathlib.Path
+        Tables of stations and events; several files or folders make one table.
+    picks, residuals : pathlib.Path or tuple of pathlib.Path, optional
         Picks, or residuals where these are ready: one of the two.
     """
 
-    stations: Path
-    events: Path
-    picks: Path | None = None
-    residuals: Path | None = None
+    stations: TableFiles
+    events: TableFiles
+    picks: TableFiles | None = None
+    residuals: TableFiles | None = None
+
+    @classmethod
+    def given(cls, **named: Sequence[Path]) -> Tables:
+        """Return the tables that lists of files make, one file standing for itself."""
+        return cls(
+            **{
+                name: paths[0] if len(paths) == 1 else tuple(paths)
+                for name, paths in named.items()
+                if paths
+            }
+        )
 
     @classmethod
     def of(cls, folder: RunFolder, settings: RunSettings) -> Tables:
         """Return the tables that the settings of a run folder name."""
         named = settings.inputs
         return cls(
-            stations=folder.resolve(named.stations),
-            events=folder.resolve(named.events),
-            picks=None if named.picks is None else folder.resolve(named.picks),
-            residuals=None if named.residuals is None else folder.resolve(named.residuals),
+            **{
+                field.name: folder.resolve_each(getattr(named, field.name))
+                for field in fields(cls)
+                if getattr(named, field.name) is not None
+            }
         )
 
-    def files(self) -> dict[str, Path]:
-        """Return the tables by what they hold."""
-        named = {
-            "stations": self.stations,
-            "events": self.events,
-            "picks": self.picks,
-            "residuals": self.residuals,
-        }
-        return {name: path for name, path in named.items() if path is not None}
+    def by_content(self) -> dict[str, TableFiles]:
+        """Return the tables that are given by what they hold."""
+        named = {field.name: getattr(self, field.name) for field in fields(self)}
+        return {name: paths for name, paths in named.items() if paths is not None}
+
+    def files(self, *contents: str) -> dict[str, Path]:
+        """Return every file or folder by what it holds, numbered where there are several.
+
+        Parameters
+        ----------
+        *contents : str
+            Only tables that hold these; all if none is named.
+
+        Returns
+        -------
+        dict of pathlib.Path
+            ``{"stations": …, "picks 1": …, "picks 2": …}``.
+        """
+        found = {}
+        for name, paths in self.by_content().items():
+            if contents and name not in contents:
+                continue
+            several = paths if isinstance(paths, tuple) else (paths,)
+            for number, path in enumerate(several, start=1):
+                found[name if len(several) == 1 else f"{name} {number}"] = path
+        return found
 
 
 def read_earth(folder: RunFolder, model: str) -> ReferenceEarth:
@@ -116,7 +149,7 @@ def residuals_from_tables(
     if tables.residuals is not None:
         data, notices = _ready(tables, tables.residuals, earth, survey, residuals)
     else:
-        data, notices = _computed(tables, earth, survey, residuals)
+        data, notices = _computed(tables, earth, survey, residuals, reporter)
     reporter.note(
         f"{len(data.stations)} stations, {len(data.events)} events, "
         f"{len(data.residual_s)} residuals to use"
@@ -214,19 +247,29 @@ def exclusion_lines(data: Residuals) -> list[str]:
 
 
 def _computed(
-    tables: Tables, earth: ReferenceEarth, survey: SurveySettings, residuals: ResidualSettings
+    tables: Tables,
+    earth: ReferenceEarth,
+    survey: SurveySettings,
+    residuals: ResidualSettings,
+    reporter: Reporter,
 ) -> tuple[Residuals, list[Notice]]:
     if tables.picks is None:
         raise InputError("neither picks nor residuals are named", where="inputs")
     read = read_survey(
-        stations=tables.stations, events=tables.events, picks=tables.picks, settings=survey
+        stations=tables.stations,
+        events=tables.events,
+        picks=tables.picks,
+        settings=survey,
+        progress=lambda done, total: reporter.progress(
+            "reading tables, kB", done // _BYTES_PER_KB, total // _BYTES_PER_KB
+        ),
     )
     return compute_residuals(read, earth, residuals), read.notices
 
 
 def _ready(
     tables: Tables,
-    table: Path,
+    table: TableFiles,
     earth: ReferenceEarth,
     survey: SurveySettings,
     residuals: ResidualSettings,

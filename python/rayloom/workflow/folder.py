@@ -102,6 +102,12 @@ class RunFolder:
         """Return where a file named in the settings is."""
         return named if named.is_absolute() else (self.run.path / named).resolve()
 
+    def resolve_each(self, named: Path | tuple[Path, ...]) -> Path | tuple[Path, ...]:
+        """Return where a file, or several, named in the settings are."""
+        if isinstance(named, tuple):
+            return tuple(self.resolve(name) for name in named)
+        return self.resolve(named)
+
     def read_settings(self) -> RunSettings:
         """Read ``rayloom.toml``.
 

@@ -119,8 +119,8 @@ def _suggested_settings(
     for reason in suggestion.reasons:
         reporter.note(reason)
     named = {
-        name: _named_in(folder, file, copied_to=INPUTS if copy else None)
-        for name, file in tables.files().items()
+        name: _each_named_in(folder, files, copied_to=INPUTS if copy else None)
+        for name, files in tables.by_content().items()
     }
     return RunSettings(
         inputs=InputSettings(**named),
@@ -141,6 +141,14 @@ def _usable_part(data: Residuals) -> Survey:
         data.uncertainty_s,
     )
     return Survey(data.stations, data.events, picks)
+
+
+def _each_named_in(
+    folder: RunFolder, files: Path | tuple[Path, ...], *, copied_to: str | None
+) -> Path | tuple[Path, ...]:
+    if isinstance(files, tuple):
+        return tuple(_named_in(folder, file, copied_to=copied_to) for file in files)
+    return _named_in(folder, files, copied_to=copied_to)
 
 
 def _named_in(folder: RunFolder, file: Path, *, copied_to: str | None) -> Path:

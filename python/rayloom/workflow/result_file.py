@@ -6,7 +6,7 @@ the last bit; :func:`load_result` joins it with them again.
 
 from __future__ import annotations
 
-from dataclasses import fields
+from dataclasses import astuple, fields
 from pathlib import Path
 from typing import Any
 
@@ -21,6 +21,7 @@ from rayloom.inversion import (
     InversionState,
     Iteration,
     LeftOutGroup,
+    StructureDemand,
 )
 from rayloom.model import BlockGrid, SlownessModel
 from rayloom.outputs import replacing
@@ -58,6 +59,9 @@ def save_result(path: str | Path, result: InversionResult) -> None:
     """
     arrays: dict[str, Any] = {name: getattr(result, name) for name in _ROW_ARRAYS}
     arrays |= {f"term_{phase}": terms for phase, terms in result.station_terms_s.items()}
+    arrays |= {f"error_of_term_{phase}": std for phase, std in result.station_term_std_s.items()}
+    if result.structure is not None:
+        arrays["structure"] = np.array(astuple(result.structure))
     arrays |= _ray_arrays(result.rays) | _state_arrays(result.state)
     counts = result.counts
     arrays |= {
@@ -124,17 +128,25 @@ def _result(arrays: dict[str, Any], data: Residuals, model: SlownessModel) -> In
         data=data,
         model=model,
         history=state.history,
-        station_terms_s={
-            name.removeprefix("term_"): terms
-            for name, terms in arrays.items()
-            if name.startswith("term_")
-        },
+        station_terms_s=_by_phase(arrays, "term_"),
+        station_term_std_s=_by_phase(arrays, "error_of_term_"),
+        structure=(
+            StructureDemand(*arrays["structure"].tolist()) if "structure" in arrays else None
+        ),
         rays=_rays(arrays, model.grid),
         stopped_because=str(arrays["stopped_because"]),
         counts=Counts(count, groups, untraced, left_out),
         state=state,
         **{name: arrays[name] for name in _ROW_ARRAYS},
     )
+
+
+def _by_phase(arrays: dict[str, Any], prefix: str) -> dict[str, Any]:
+    return {
+        name.removeprefix(prefix): values
+        for name, values in arrays.items()
+        if name.startswith(prefix)
+    }
 
 
 def _ray_arrays(rays: object) -> dict[str, Any]:

@@ -53,7 +53,7 @@ STEPS: Final = (
         name="ratio",
         inputs=lambda folder, settings: {
             **ratio_inputs(folder),
-            "stations": Tables.of(folder, settings).stations,
+            **Tables.of(folder, settings).files("stations"),
         },
         settings=lambda settings: _sections(settings, "outputs"),
         work=write_ratio,
@@ -84,10 +84,8 @@ def _earth_table(folder: RunFolder, settings: RunSettings) -> Files:
 
 
 def _inversion_inputs(folder: RunFolder, settings: RunSettings) -> Files:
-    tables = Tables.of(folder, settings)
     return {
-        "stations": tables.stations,
-        "events": tables.events,
+        **Tables.of(folder, settings).files("stations", "events"),
         "residuals.csv": folder.residuals,
         **_earth_table(folder, settings),
     }

@@ -7,6 +7,6 @@ by their contents.
 
 from __future__ import annotations
 
-from rayloom.survey.formats.reading import Paths, Progress, read_table, total_bytes
+from rayloom.survey.formats.reading import Paths, Progress, Source, read_table, total_bytes
 
-__all__ = ["Paths", "Progress", "read_table", "total_bytes"]
+__all__ = ["Paths", "Progress", "Source", "read_table", "total_bytes"]

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Sequence
 from pathlib import Path
-from typing import Final
+from typing import TYPE_CHECKING, Final, TypeAlias, TypeGuard
 
-from rayloom.errors import FileAccessError
+from rayloom.errors import FileAccessError, InputError
 from rayloom.survey.formats.fdsn_text import read_fdsn_events, read_fdsn_stations
 from rayloom.survey.formats.parsing import Advance
 from rayloom.survey.formats.quake_ml import read_quake_ml_events, read_quake_ml_picks
@@ -20,10 +20,22 @@ from rayloom.survey.formats.recognition import (
 from rayloom.survey.formats.station_xml import read_station_xml
 from rayloom.survey.notices import Notice, few
 from rayloom.survey.problems import FileLine, Problems
-from rayloom.survey.text_table import TextTable, csv_table, read_bytes, unreadable
+from rayloom.survey.text_table import (
+    TextTable,
+    csv_table,
+    read_bytes,
+    text_table_of_frame,
+    unreadable,
+)
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 Paths = str | Path | Sequence[str | Path]
 """A file, a folder of files, or several of either."""
+
+Source: TypeAlias = "Paths | pd.DataFrame"
+"""What a table is read from: files, or a data frame with the columns of a file."""
 
 Progress = Callable[[int, int], None]
 """Hears the bytes read and the bytes in all."""
@@ -36,22 +48,23 @@ _EXPECTED: Final[dict[Content, str]] = {
     "stations": "stations as CSV, StationXML or FDSN station text",
     "events": "events as CSV, QuakeML or FDSN event text",
     "picks": "picks as CSV or QuakeML",
+    "residuals": "residuals as CSV",
 }
 
 
 def read_table(
-    paths: Paths, content: Content, *, fit: Fit | None = None, progress: Progress | None = None
+    paths: Source, content: Content, *, fit: Fit | None = None, progress: Progress | None = None
 ) -> TextTable:
-    """Read stations, events or picks as one table of text.
+    """Read stations, events, picks or residuals as one table of text.
 
     Of a folder, the files that hold such content count, told by what stands in
     them; subfolders and hidden files do not.
 
     Parameters
     ----------
-    paths : path or sequence of paths
-        Files or folders.
-    content : {"stations", "events", "picks"}
+    paths : path, sequence of paths or DataFrame
+        Files or folders; or a data frame with the columns of the CSV file.
+    content : {"stations", "events", "picks", "residuals"}
         What they hold.
     fit : callable, optional
         Applied to each table that comes from a catalogue (QuakeML).
@@ -67,6 +80,8 @@ def read_table(
     MissingExtraError
         If a file is XML and obspy is not installed.
     """
+    if _is_frame(paths):
+        return text_table_of_frame(paths, f"{content} frame")
     files, passed_over = _files(paths, content)
     sizes = [_size(file) for file in files]
     tables = []
@@ -84,8 +99,14 @@ def read_table(
     return table
 
 
-def total_bytes(paths: Paths, content: Content) -> int:
+def _is_frame(source: Source) -> TypeGuard[pd.DataFrame]:
+    return not isinstance(source, str | Path | Sequence) and hasattr(source, "to_csv")
+
+
+def total_bytes(paths: Source, content: Content) -> int:
     """Return how many bytes :func:`read_table` is going to read."""
+    if _is_frame(paths):
+        return 0
     return sum(_size(file) for file in _files(paths, content)[0])
 
 
@@ -156,8 +177,14 @@ def _joined(tables: list[TextTable]) -> TextTable:
     return TextTable(columns, lines, problems, remarks)
 
 
-def _files(paths: Paths, content: Content) -> tuple[list[str | Path], list[Notice]]:
+def _files(paths: Source, content: Content) -> tuple[list[str | Path], list[Notice]]:
     """List the files to read and remark on those of a folder that are passed over."""
+    if not isinstance(paths, str | Path | Sequence):
+        raise InputError(
+            f"a {type(paths).__name__} is no table; expected {_EXPECTED[content]}, "
+            "or a data frame",
+            where=content,
+        )
     named = [paths] if isinstance(paths, str | Path) else list(paths)
     if not named:
         raise FileAccessError(f"no file is given; expected {_EXPECTED[content]}")

@@ -8,7 +8,7 @@ from typing import Final, Literal
 from rayloom.survey.formats.fdsn_text import fdsn_content
 from rayloom.survey.formats.xml_outline import root_name
 
-Content = Literal["stations", "events", "picks"]
+Content = Literal["stations", "events", "picks", "residuals"]
 """What a person wants to read."""
 
 Format = Literal["CSV", "FDSN text", "StationXML", "QuakeML", "XML"]
@@ -23,6 +23,7 @@ _HOLDS: Final[dict[Format, tuple[Content, ...]]] = {
 }
 _CSV_MARKS: Final[tuple[tuple[Content, set[str]], ...]] = (
     ("picks", {"event", "station", "phase", "time"}),
+    ("residuals", {"event", "station", "phase", "residual_s"}),
     ("events", {"event", "time", "latitude", "longitude"}),
     ("stations", {"network", "station", "latitude", "longitude"}),
 )
