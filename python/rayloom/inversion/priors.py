@@ -7,7 +7,7 @@ three methods of :class:`Prior`.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Protocol
 
 import numpy as np
@@ -129,6 +129,10 @@ class SpectralPrior:
     def whiten(self, parameters: NDArray[np.float64]) -> NDArray[np.float64]:
         """Whitened unknowns of block values: inverse of :meth:`colour`."""
         return self.modes.analyse(parameters / self.scale) / self.amplitude
+
+    def times(self, factor: float) -> SpectralPrior:
+        """Return the same field with its standard deviation multiplied by ``factor``."""
+        return replace(self, scale=factor * self.scale)
 
     def standard_deviation(self) -> NDArray[np.float64]:
         """Exact marginal standard deviation of each block, (blocks,)."""
