@@ -1,0 +1,1 @@
+"""What an inverted model is worth: coverage, restoration, resolution and errors."""
