@@ -6,26 +6,34 @@ then posterior errors and the expectations of misfit and penalty are exact.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import pytest
 from numpy.typing import NDArray
+from scipy.stats import norm
 
-from inversion_cases import plain_settings, small_case
+from inversion_cases import SLOWNESS, Case, plain_settings, small_case
 from rayloom.inversion import (
+    Huber,
     InversionResult,
+    InversionSettings,
+    LeastSquares,
     LinearisedProblem,
     group_standard_deviation,
     invert,
     linearise,
     posterior_variance,
 )
+from rayloom.inversion.expectation import share_of_square
+from rayloom.inversion.robust import Rejecting
 
 Floats = NDArray[np.float64]
 
 STATIONS = 18
 TRUTHS = 40
+REPEATS = 8
+QUICK = {"station_term_errors": False, "model_tolerance": 0.1}
 SETTINGS = plain_settings(
     station_terms=True,
     station_term_std_s=0.1 * np.sqrt((STATIONS - 1) / STATIONS),
@@ -111,4 +119,75 @@ def test_errors_by_conjugate_gradients_are_those_of_dense_algebra(runs: list[Run
         posterior_variance(system, anything, tolerance=1e-10),
         np.diag(anything.T @ covariance @ anything),
         rtol=1e-6,
+    )
+
+
+def without_structure(seed: int, *, share: float = 0.0) -> Case:
+    """Return noise, station terms and origin times alone, and a share of the structure."""
+    case = small_case(seed=seed, events=40)
+    change = SLOWNESS * (case.forward.lengths @ case.perturbation)
+    residual = case.data.residual_s - (1.0 - share) * change
+    return replace(case, data=replace(case.data, residual_s=residual))
+
+
+def test_pure_noise_gives_a_flat_model_and_the_run_says_so() -> None:
+    """Blocks lie within their posterior errors of zero.
+
+    An estimate of nothing has the variance C^½ R (I − R) C^½, R the resolution,
+    no larger than the posterior's C^½ (I − R) C^½ (textbook).
+    """
+    scaled = []
+    settings = InversionSettings.model_validate(QUICK)
+    for seed in range(3):
+        case = without_structure(seed)
+        result = invert(case.data, case.model, settings, forward=case.forward)
+        assert result.structure is not None
+        assert not result.structure.demanded
+        assert "do not demand any structure" in result.structure.sentence()
+        system = linearise(result, settings).system
+        found = result.model.slowness_s_per_km / result.model.reference - 1.0
+        scaled.append(found.ravel() / group_standard_deviation(system, "blocks"))
+    assert np.std(scaled) <= 1.0
+    assert np.abs(scaled).max() <= 4.0
+
+
+def test_a_fifth_of_the_structure_is_noticed() -> None:
+    """The other side of the test: structure of 0.4 % is told from noise."""
+    settings = InversionSettings.model_validate(QUICK)
+    for seed in range(3):
+        case = without_structure(seed, share=0.2)
+        result = invert(case.data, case.model, settings, forward=case.forward)
+        assert result.structure is not None
+        assert result.structure.demanded
+        assert "the data demand structure" in result.structure.sentence()
+
+
+@pytest.mark.parametrize("robust", ["huber", "student_t"])
+def test_weighted_misfit_has_its_expectation_for_gaussian_errors(robust: str) -> None:
+    """Robust weights lower χ², and its expectation by as much: 2Φ(k) − 1 for Huber.
+
+    Compared within three standard errors of the mean of the runs, and 1 %.
+    """
+    settings = InversionSettings.model_validate(
+        QUICK | {"robust": robust, "mislocation": False, "station_term_std_s": 0.1}
+    )
+    ratio, kept = [], []
+    for seed in range(REPEATS):
+        case = small_case(seed=500 + seed, events=30)
+        last = invert(case.data, case.model, settings, forward=case.forward).history[-1]
+        ratio.append(last.chi2 / last.chi2_expected)
+        kept.append(last.rms_kept_s / last.rms_kept_expected_s)
+    assert abs(np.mean(ratio) - 1.0) <= 3.0 * np.std(ratio) / np.sqrt(REPEATS) + 0.01
+    assert np.mean(kept) == pytest.approx(1.0, abs=0.05)
+
+
+def test_huber_weights_leave_the_textbook_share_of_a_square() -> None:
+    """E[w u²] = 2Φ(k/τ) − 1 for u of standard deviation τ, over τ² (textbook integral)."""
+    for spread in (0.7, 1.0):
+        expected = 2.0 * norm.cdf(1.345 / spread) - 1.0
+        assert share_of_square(Huber(1.345), spread) == pytest.approx(expected, abs=1e-6)
+    inside = norm.cdf(4.0) - norm.cdf(-4.0)
+    expected = 1.0 - 8.0 * norm.pdf(4.0) / inside
+    assert share_of_square(Rejecting(LeastSquares(), 4.0), 1.0) == pytest.approx(
+        expected, abs=1e-5
     )

@@ -34,7 +34,14 @@ from rayloom.inversion.state import (
     load_state,
     save_state,
 )
-from rayloom.inversion.system import Solution, WhitenedSystem, resolution_trace, solve
+from rayloom.inversion.structure import StructureDemand
+from rayloom.inversion.system import (
+    Solution,
+    WhitenedSystem,
+    resolution_trace,
+    resolved_parameters,
+    solve,
+)
 
 __all__ = [
     "Counts",
@@ -57,6 +64,7 @@ __all__ = [
     "Report",
     "Solution",
     "SpectralPrior",
+    "StructureDemand",
     "StudentT",
     "WhitenedSystem",
     "ZeroSumPrior",
@@ -71,6 +79,7 @@ __all__ = [
     "matern_prior",
     "posterior_variance",
     "resolution_trace",
+    "resolved_parameters",
     "robust_fit",
     "run_outer_loop",
     "save_state",

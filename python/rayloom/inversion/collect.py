@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Final, TypeVar
 import numpy as np
 from numpy.typing import NDArray
 
+from rayloom.inversion.finishing import Finish
 from rayloom.inversion.groups import station_term_layout
 from rayloom.inversion.measure import suspected_outliers
 from rayloom.inversion.outer import Outcome
@@ -22,7 +23,9 @@ Value = TypeVar("Value", bound=np.generic)
 _NO_RAY: Final = "no ray"
 
 
-def collect_result(data: Residuals, problem: Problem, outcome: Outcome) -> InversionResult:
+def collect_result(
+    data: Residuals, problem: Problem, outcome: Outcome, finish: Finish
+) -> InversionResult:
     """Name and order everything that the loop found.
 
     Parameters
@@ -33,6 +36,8 @@ def collect_result(data: Residuals, problem: Problem, outcome: Outcome) -> Inver
         The problem.
     outcome : Outcome
         Where its loop ended.
+    finish : Finish
+        What was worked out about its last model.
     """
     fit, traced = outcome.fit, outcome.traced
     suspected = suspected_outliers(fit, outlier_std=problem.settings.outlier_std)
@@ -52,6 +57,7 @@ def collect_result(data: Residuals, problem: Problem, outcome: Outcome) -> Inver
         model=_with_coverage(problem, outcome),
         history=outcome.state.history,
         station_terms_s=_station_terms(data, problem, used, parameters.get("station_terms")),
+        station_term_std_s=_station_terms(data, problem, used, finish.station_term_std),
         mislocation_km=_mislocation(data, problem, used, parameters.get("mislocation")),
         predicted_s=np.asarray(data.residual_s, dtype=np.float64) - after,
         residual_after_s=after,
@@ -70,6 +76,7 @@ def collect_result(data: Residuals, problem: Problem, outcome: Outcome) -> Inver
             left_out_groups=problem.left_out,
         ),
         state=outcome.state,
+        structure=finish.structure,
     )
 
 

@@ -9,6 +9,7 @@ from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]
 
 from rayloom.inversion.assembly import build_problem
 from rayloom.inversion.collect import collect_result
+from rayloom.inversion.finishing import finish
 from rayloom.inversion.forward_map import ForwardMap, Report
 from rayloom.inversion.outer import run_outer_loop
 from rayloom.inversion.result import InversionResult
@@ -48,8 +49,8 @@ def invert(
     settings : InversionSettings, optional
         Defaults if not given.
     progress : callable, optional
-        Told (stage, done, total) with stage "tracing" or "solving"; total 0
-        means unknown.
+        Told (stage, done, total) with stage "tracing", "solving" or "errors of
+        station terms"; total 0 means unknown.
     checkpoint : callable, optional
         Given the :class:`InversionState` after each accepted model.
     resume : InversionState, optional
@@ -73,4 +74,4 @@ def invert(
     with threadpool_limits(limits=1):
         problem = build_problem(data, model, settings, forward=forward, report=progress)
         outcome = run_outer_loop(problem, resume=resume, report=progress, checkpoint=checkpoint)
-        return collect_result(data, problem, outcome)
+        return collect_result(data, problem, outcome, finish(problem, outcome, progress))

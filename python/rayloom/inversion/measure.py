@@ -7,12 +7,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from rayloom.inversion.expectation import ExpectedMisfit, expected_misfit
 from rayloom.inversion.forward_map import Report
 from rayloom.inversion.problem import Problem, TracedModel
 from rayloom.inversion.robust import RobustFit
 from rayloom.inversion.state import Iteration
 from rayloom.inversion.step import PlannedStep, TakenStep, plan_step
-from rayloom.inversion.system import WhitenedSystem, resolution_trace
+from rayloom.inversion.system import WhitenedSystem, resolved_parameters
 
 _PROBE_TOLERANCE = 1e-4
 
@@ -93,14 +94,20 @@ def measure(
     chi2 = _squared(stage.system.whiten_rows(traced.unexplained_s))
     chi2_reference = _squared(stage.system.whiten_rows(problem.rows.residual_s))
     prior_misfit = _squared(traced.white)
+    resolved = _resolved(problem, stage) if planned is not None else None
+    expected = _expected(problem, stage, kept, resolved)
     return Iteration(
         iteration=iteration,
         rms_s=_rms(fit.centred_s[traced.active]),
         rms_weighted_s=float(np.sqrt(_ratio(chi2, float(np.sum(precision))))),
         rms_kept_s=_rms(fit.centred_s[kept]),
+        rms_kept_expected_s=expected.rms_kept_s,
         chi2=chi2,
-        chi2_expected=_expected_chi2(problem, stage) if planned is not None else float("nan"),
+        chi2_expected=expected.chi2,
         chi2_kept=_squared(fit.standardised[kept]),
+        chi2_kept_expected=expected.chi2_kept,
+        resolved=float(np.sum(resolved)) if resolved is not None else float("nan"),
+        resolved_blocks=float(resolved[0]) if resolved is not None else float("nan"),
         prior_misfit=prior_misfit,
         objective=fit.misfit + prior_misfit,
         variance_reduction_percent=100.0 * (1.0 - _ratio(chi2, chi2_reference)),
@@ -123,19 +130,37 @@ def measure(
     )
 
 
-def _expected_chi2(problem: Problem, stage: Stage) -> float:
-    """(N − N_g) − tr H over rows with weight, tr H by a few probes to about 1 %."""
+def _resolved(problem: Problem, stage: Stage) -> NDArray[np.float64] | None:
+    """Parameters of each group that the data resolve, by a few probes to about 1 %."""
     settings = problem.settings
     if settings.trace_probes == 0:
-        return float("nan")
-    resolved = resolution_trace(
+        return None
+    return resolved_parameters(
         stage.system,
         probes=settings.trace_probes,
         seed=settings.seed,
         tolerance=max(_PROBE_TOLERANCE, settings.solver_tolerance),
         max_iterations=settings.solver_max_iterations,
     )
-    return float(np.sum(stage.fit.weights > 0.0)) - stage.system.means.count - resolved
+
+
+def _expected(
+    problem: Problem,
+    stage: Stage,
+    kept: NDArray[np.bool_],
+    resolved: NDArray[np.float64] | None,
+) -> ExpectedMisfit:
+    if resolved is None:
+        return ExpectedMisfit(float("nan"), float("nan"), float("nan"))
+    return expected_misfit(
+        problem.settings.loss(rejecting=stage.rejecting),
+        scale=stage.fit.scale,
+        outlier_std=problem.settings.outlier_std,
+        weighted=stage.fit.weights > 0.0,
+        kept=kept,
+        uncertainty_s=problem.rows.uncertainty_s,
+        lost=stage.system.means.count + float(np.sum(resolved)),
+    )
 
 
 def _model_rms_percent(traced: TracedModel) -> float:

@@ -7,6 +7,8 @@ group.
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -22,6 +24,7 @@ def posterior_variance(
     *,
     tolerance: float = 1e-3,
     max_iterations: int = 500,
+    progress: Callable[[int, int], None] | None = None,
 ) -> NDArray[np.float64]:
     """Posterior variances bᵀ (ÃᵀÃ + I)⁻¹ b of linear functions bᵀz.
 
@@ -40,6 +43,8 @@ def posterior_variance(
         Share of a variance below which a step ends the sum.
     max_iterations : int, optional
         Most steps per batch of columns.
+    progress : callable, optional
+        Told (columns done, columns).
 
     Returns
     -------
@@ -51,12 +56,16 @@ def posterior_variance(
     Dubrulle, A. A. (2001). Retooling the method of block conjugate gradients.
     Electron. Trans. Numer. Anal. 12, 216-233 (the variant with QR factors).
     """
-    batches = np.array_split(np.arange(columns.shape[1]), -(-columns.shape[1] // _COLUMNS_AT_ONCE))
-    parts = [
-        _batch(system, columns[:, batch], tolerance=tolerance, max_iterations=max_iterations)
-        for batch in batches
-    ]
-    return np.concatenate(parts) if parts else np.zeros(0)
+    count = columns.shape[1]
+    variance = np.zeros(count)
+    for start in range(0, count, _COLUMNS_AT_ONCE):
+        batch = slice(start, min(start + _COLUMNS_AT_ONCE, count))
+        variance[batch] = _batch(
+            system, columns[:, batch], tolerance=tolerance, max_iterations=max_iterations
+        )
+        if progress is not None:
+            progress(batch.stop, count)
+    return variance
 
 
 def group_standard_deviation(
@@ -65,6 +74,7 @@ def group_standard_deviation(
     *,
     tolerance: float = 1e-3,
     max_iterations: int = 500,
+    progress: Callable[[int, int], None] | None = None,
 ) -> NDArray[np.float64]:
     """Posterior standard deviation of each parameter of a group.
 
@@ -74,7 +84,7 @@ def group_standard_deviation(
         The operator Ã.
     name : str
         Name of the group, "station_terms" for instance.
-    tolerance, max_iterations
+    tolerance, max_iterations, progress
         As for :func:`posterior_variance`.
 
     Returns
@@ -91,7 +101,11 @@ def group_standard_deviation(
     for parameter, unit in enumerate(np.eye(group.size)):
         columns[start : start + group.size, parameter] = group.prior.colour_adjoint(unit)
     variance = posterior_variance(
-        system, columns, tolerance=tolerance, max_iterations=max_iterations
+        system,
+        columns,
+        tolerance=tolerance,
+        max_iterations=max_iterations,
+        progress=progress,
     )
     return np.sqrt(variance)
 

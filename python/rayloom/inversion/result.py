@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from rayloom.inversion.forward_map import Prediction
 from rayloom.inversion.rows import LeftOutGroup
 from rayloom.inversion.state import InversionState, Iteration, history_frame
+from rayloom.inversion.structure import StructureDemand
 from rayloom.model import SlownessModel
 
 if TYPE_CHECKING:
@@ -86,6 +87,11 @@ class InversionResult:
         N, N_g and what is left out.
     state : InversionState
         State to resume from.
+    station_term_std_s : dict of str to (stations,) array
+        Posterior standard deviations of ``station_terms_s`` for its last weights
+        and rays and the uncertainties as they stand, s; empty if not worked out.
+    structure : StructureDemand or None
+        Whether the data demand structure in the blocks; None if not worked out.
     """
 
     data: Residuals
@@ -105,6 +111,8 @@ class InversionResult:
     stopped_because: str
     counts: Counts
     state: InversionState
+    station_term_std_s: dict[str, NDArray[np.float64]] = field(default_factory=dict)
+    structure: StructureDemand | None = None
 
     def history_frame(self) -> pd.DataFrame:
         """Return the history as a table, one row per iteration.
@@ -161,12 +169,13 @@ class InversionResult:
         return frame.iloc[order].reset_index(drop=True)
 
     def station_term_frame(self) -> pd.DataFrame:
-        """Return the station terms by name: network, station, phase, term_s, picks.
+        """Return the station terms by name.
 
         Returns
         -------
         DataFrame
-            Terms in s, late positive.
+            ``network``, ``station``, ``phase``, ``term_s`` (late positive),
+            ``standard_error_s`` (NaN if not worked out), ``picks``.
         """
         import pandas as pd
 
@@ -177,6 +186,7 @@ class InversionResult:
             rows = self.used & (phases == phase)
             picks = np.bincount(data.station_index[rows], minlength=terms.size)
             known = np.isfinite(terms)
+            errors = self.station_term_std_s.get(phase, np.full(terms.size, np.nan))
             parts.append(
                 pd.DataFrame(
                     {
@@ -184,11 +194,12 @@ class InversionResult:
                         "station": np.asarray(data.stations.station).astype(str)[known],
                         "phase": phase,
                         "term_s": terms[known],
+                        "standard_error_s": errors[known],
                         "picks": picks[known],
                     }
                 )
             )
-        columns = ["network", "station", "phase", "term_s", "picks"]
+        columns = ["network", "station", "phase", "term_s", "standard_error_s", "picks"]
         return pd.concat(parts, ignore_index=True) if parts else pd.DataFrame(columns=columns)
 
     def mislocation_frame(self) -> pd.DataFrame:

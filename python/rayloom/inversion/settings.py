@@ -62,6 +62,10 @@ class InversionSettings(BaseModel):
         description="Expected size of the station terms, s: one number, or one per wave "
         "such as { P = 0.2, S = 0.5 }.",
     )
+    station_term_errors: bool = Field(
+        default=True,
+        description="Work out the standard error of each station term about the last model.",
+    )
     mislocation: bool = Field(
         default=True, description="Solve for the shift of each event from its catalogue position."
     )

@@ -27,16 +27,19 @@ class Iteration:
         Root mean square of all residuals about the means of their groups, s.
     rms_weighted_s : float
         The same weighted by robust weight over squared uncertainty, s.
-    rms_kept_s : float
-        The same over the picks not suspected as outliers, s.
+    rms_kept_s, rms_kept_expected_s : float
+        The same over the picks not suspected as outliers, and its expectation if
+        the uncertainties are right, s.
     chi2, chi2_expected : float
-        Weighted squared residuals Σ w (r/σ)² and their expectation
-        (N − N_g) − tr H if the uncertainties are right, N and N_g counting rows
-        and groups that have weight; NaN where not estimated. Huber weights
-        lower chi2 even for Gaussian errors, at most to the share
-        2Φ(k) − 1 (0.82 for k = 1.345) of its expectation.
-    chi2_kept : float
-        Σ (r/σ)² over the picks not suspected as outliers.
+        Weighted squared residuals Σ w (r/σ)² and their expectation if the
+        uncertainties are right and the errors Gaussian: (N − N_g) − tr H, N and
+        N_g counting rows and groups that have weight, times the share of a
+        square that the robust weights leave; NaN where not estimated.
+    chi2_kept, chi2_kept_expected : float
+        Σ (r/σ)² over the picks not suspected as outliers, whatever their weight,
+        and its expectation.
+    resolved, resolved_blocks : float
+        tr H, how many parameters the data resolve, in all and among the blocks.
     prior_misfit : float
         ‖z‖², squared distance from the prior in standard deviations.
     objective : float
@@ -72,9 +75,13 @@ class Iteration:
     rms_s: float
     rms_weighted_s: float
     rms_kept_s: float
+    rms_kept_expected_s: float
     chi2: float
     chi2_expected: float
     chi2_kept: float
+    chi2_kept_expected: float
+    resolved: float
+    resolved_blocks: float
     prior_misfit: float
     objective: float
     variance_reduction_percent: float

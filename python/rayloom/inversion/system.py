@@ -197,9 +197,26 @@ def resolution_trace(
 ) -> float:
     """Estimate tr H, the number of parameters that the data resolve.
 
+    Parameters
+    ----------
+    system, probes, seed, tolerance, max_iterations
+        As for :func:`resolved_parameters`, whose sum it is.
+    """
+    resolved = resolved_parameters(
+        system, probes=probes, seed=seed, tolerance=tolerance, max_iterations=max_iterations
+    )
+    return float(np.sum(resolved))
+
+
+def resolved_parameters(
+    system: WhitenedSystem, *, probes: int, seed: int, tolerance: float, max_iterations: int
+) -> NDArray[np.float64]:
+    """Estimate how many parameters of each group the data resolve; their sum is tr H.
+
     H = Ã (ÃᵀÃ + I)⁻¹ Ãᵀ maps data to predicted data. With independent random
     signs v, vᵀ(I − QQᵀ) H (I − QQᵀ)v has the mean tr H and a standard deviation
-    of at most √(2 tr H), divided by the square root of the number of probes.
+    of at most √(2 tr H), divided by the square root of the number of probes;
+    the share of H that runs through a group's columns counts that group's.
 
     Parameters
     ----------
@@ -212,6 +229,11 @@ def resolution_trace(
     tolerance, max_iterations
         As for :func:`solve`.
 
+    Returns
+    -------
+    (groups,) array
+        In the order of the groups.
+
     References
     ----------
     Hutchinson, M. F. (1990). A stochastic estimator of the trace of the
@@ -220,10 +242,14 @@ def resolution_trace(
     """
     random = np.random.default_rng(seed)
     takes_part = system.means.root_weights > 0.0
-    total = 0.0
+    total = np.zeros(len(system.groups))
     for _ in range(probes):
         signs = random.choice([-1.0, 1.0], size=takes_part.size)
         probe = system.means.project(np.where(takes_part, signs, 0.0))
         found = solve(system, probe, tolerance=tolerance, max_iterations=max_iterations)
-        total += float(probe @ system.times(found.white))
+        image = system.transposed_times(probe)
+        total += [
+            part @ solved
+            for part, solved in zip(system.split(image), system.split(found.white), strict=True)
+        ]
     return total / probes

@@ -174,16 +174,20 @@ def _outcome(result: InversionResult) -> list[tuple[str, str]]:
     percent = result.model.perturbation_percent
     hits = result.model.fields.get("hits")
     seen = percent[hits > 0] if hits is not None and np.any(hits > 0) else percent.ravel()
-    expected = f" (expected {last.chi2_expected:.0f})" if np.isfinite(last.chi2_expected) else ""
     return [
         ("Iterations", f"{last.iteration}; stopped: {result.stopped_because}"),
         ("RMS residual", f"{first.rms_s:.3f} s → {last.rms_s:.3f} s, all picks"),
         (
             "RMS without suspected outliers",
-            f"{first.rms_kept_s:.3f} s → {last.rms_kept_s:.3f} s",
+            f"{first.rms_kept_s:.3f} s → {last.rms_kept_s:.3f} s"
+            f"{_expected(last.rms_kept_expected_s, '{:.3f} s')}",
         ),
         ("Variance reduction", f"{last.variance_reduction_percent:.1f} % (robustly weighted)"),
-        ("χ²", f"{last.chi2:.0f}{expected}"),
+        ("χ², robustly weighted", f"{last.chi2:.0f}{_expected(last.chi2_expected)}"),
+        (
+            "χ² without suspected outliers",
+            f"{last.chi2_kept:.0f}{_expected(last.chi2_kept_expected)}",
+        ),
         (
             "Perturbation in blocks crossed by rays",
             f"RMS {last.model_rms_percent:.2f} %, from {seen.min():.1f} % to "
@@ -192,9 +196,16 @@ def _outcome(result: InversionResult) -> list[tuple[str, str]]:
     ]
 
 
+def _expected(value: float, form: str = "{:.0f}") -> str:
+    return f" (expected {form.format(value)})" if np.isfinite(value) else ""
+
+
 def _remarks(result: InversionResult) -> list[str]:
     last = result.history[-1]
     remarks = []
+    if result.structure is not None:
+        sentence = result.structure.sentence()
+        remarks.append(f"{sentence[0].upper()}{sentence[1:]}.")
     if np.isfinite(last.chi2_expected) and last.chi2_expected > 0:
         ratio = last.chi2 / last.chi2_expected
         if ratio > 1.3:

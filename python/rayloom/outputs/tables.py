@@ -172,7 +172,7 @@ def write_exclusions_csv(
 
 
 def write_station_terms_csv(path: str | Path, result: InversionResult) -> None:
-    """Write the station terms: network, station, phase, term_s, picks.
+    """Write the station terms and their standard errors, one row per station and phase.
 
     Parameters
     ----------

@@ -69,12 +69,16 @@ def run_inversion(
         for problem, count in result.rays.problems.items():
             reporter.note(f"{count} rays missing: {problem}")
     reporter.note(f"stopped: {result.stopped_because}")
+    remarks = {"stopped_because": result.stopped_because}
+    if result.structure is not None:
+        remarks["structure"] = result.structure.sentence()
+        reporter.note(remarks["structure"])
     files = _write(folder, result, linear_system=settings.outputs.linear_system)
     _clear(folder.checkpoints)
     return Outcome(
         files=files,
         seeds={"trace_probes": settings.inversion.seed},
-        remarks={"stopped_because": result.stopped_because},
+        remarks=remarks,
     )
 
 

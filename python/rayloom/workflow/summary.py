@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections import Counter
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -50,7 +50,7 @@ def _part_lines(home: RunFolder, told: Sequence[str]) -> list[tuple[str, str]]:
     lines = [] if home.wave is None else [(f"{home.wave} waves", "")]
     steps = Provenance(home.provenance).steps
     if "invert" in steps and "invert" in told:
-        lines += _model_lines(home, steps["invert"].remarks.get("stopped_because", ""))
+        lines += _model_lines(home, steps["invert"].remarks)
     return [*lines, *_file_lines(home, told)]
 
 
@@ -90,7 +90,7 @@ def _data_lines(folder: RunFolder) -> list[tuple[str, str]]:
     return lines
 
 
-def _model_lines(folder: RunFolder, stopped_because: str) -> list[tuple[str, str]]:
+def _model_lines(folder: RunFolder, remarks: Mapping[str, str]) -> list[tuple[str, str]]:
     import pandas as pd
 
     history = pd.read_csv(folder.file("history.csv"))
@@ -113,7 +113,8 @@ def _model_lines(folder: RunFolder, stopped_because: str) -> list[tuple[str, str
             f"{int(last['iteration'])} iterations, perturbation rms "
             f"{last['model_rms_percent']:.2f} %, relative to the regional mean",
         ),
-        ("stopped", stopped_because),
+        *([("", remarks["structure"])] if "structure" in remarks else []),
+        ("stopped", remarks.get("stopped_because", "")),
     ]
 
 
