@@ -57,6 +57,11 @@ def demo(ctx: click.Context, folder: Path, quiet: bool) -> None:
 )
 @file_option("--picks", "CSV: event, network, station, phase, time, uncertainty_s; or QuakeML.")
 @file_option("--residuals", "CSV with residual_s in place of time, if you have residuals ready.")
+@file_option(
+    "--crust",
+    "CSV of the crust below stations: network, station, crust_thickness_km or column.",
+    multiple=False,
+)
 @click.option(
     "--earth",
     default="ak135",
@@ -75,6 +80,7 @@ def init(
     events: tuple[Path, ...],
     picks: tuple[Path, ...],
     residuals: tuple[Path, ...],
+    crust: Path | None,
     earth: str,
     copy: bool,
     force: bool,
@@ -95,7 +101,13 @@ def init(
     from rayloom.workflow import Tables, initialise
 
     ctx.meta[FOLDER] = folder
-    tables = Tables.given(stations=stations, events=events, picks=picks, residuals=residuals)
+    tables = Tables.given(
+        stations=stations,
+        events=events,
+        picks=picks,
+        residuals=residuals,
+        crust=() if crust is None else (crust,),
+    )
     with listening(quiet=quiet) as reporter:
         initialise(folder, tables, earth=earth, copy=copy, force=force, reporter=reporter)
     click.echo(f"Wrote {folder / 'rayloom.toml'}. Look it through, then: rayloom run {folder}")

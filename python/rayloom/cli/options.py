@@ -32,14 +32,16 @@ def again_option(command: Command) -> Command:
     )(command)
 
 
-def file_option(name: str, columns: str, *, required: bool = False) -> Callable[..., Any]:
+def file_option(
+    name: str, columns: str, *, required: bool = False, multiple: bool = True
+) -> Callable[..., Any]:
     """Take a file, or several by giving it again, ``columns`` saying what they hold."""
     return click.option(
         name,
         type=click.Path(path_type=Path),
         metavar="FILE",
         required=required,
-        multiple=True,
+        multiple=multiple,
         help=columns,
     )
 

@@ -10,6 +10,7 @@ from rayloom.earth.geodesy import (
     geocentric_latitude_deg,
     geographic_latitude_deg,
 )
+from rayloom.earth.local_column import LocalColumn, column_delay_s, moho_km
 from rayloom.earth.model_table import ModelTable
 from rayloom.earth.phases import PHASES, phase_wave, standard_phase
 from rayloom.earth.reference import ReferenceEarth
@@ -18,12 +19,15 @@ from rayloom.earth.time_table import TimeTable
 __all__ = [
     "PHASES",
     "DistanceAzimuth",
+    "LocalColumn",
     "ModelTable",
     "ReferenceEarth",
     "TimeTable",
+    "column_delay_s",
     "distance_azimuth_deg",
     "geocentric_latitude_deg",
     "geographic_latitude_deg",
+    "moho_km",
     "phase_wave",
     "standard_phase",
 ]

@@ -2,9 +2,7 @@
 
 from __future__ import annotations
 
-import csv
-import math
-from collections.abc import Iterator, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 from importlib import resources
 from pathlib import Path
@@ -13,11 +11,20 @@ from typing import Final
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from rayloom.errors import FileAccessError, FileProblemsError, InputError
+from rayloom.earth.csv_columns import read_columns
+from rayloom.errors import FileProblemsError, InputError
 from rayloom.units import EARTH_RADIUS_KM
 
 COLUMNS: Final = ("depth_km", "vp_km_s", "vs_km_s", "density")
 """Columns of a model file; density in g/cm³."""
+
+PLAUSIBLE: Final = {
+    "vp_km_s": (0.2, 20.0, "km/s"),
+    "vs_km_s": (0.05, 12.0, "km/s"),
+    "density": (0.5, 20.0, "g/cm³"),
+}
+"""Least and largest value of each column and its unit: anything in the Earth, from loose
+soil to the inner core, with room to spare."""
 
 PUBLISHED: Final = ("ak135", "iasp91")
 """Models that come with the package."""
@@ -102,19 +109,11 @@ class ModelTable:
         FileProblemsError
             With every line that is wrong.
         """
-        name = str(path)
-        try:
-            text = Path(path).read_text(encoding="utf-8-sig")
-        except UnicodeDecodeError as error:
-            raise FileProblemsError(name, ["not a text file; expected CSV in UTF-8"]) from error
-        except OSError as error:
-            raise FileAccessError(f"{name}: cannot be read: {error.strerror}") from error
-        columns, lines, problems = _parse(text)
-        if not problems:
-            problems = _problems(columns, [f"line {line}" for line in lines])
+        columns = read_columns(path, COLUMNS)
+        problems = _problems(columns.values, columns.labels)
         if problems:
-            raise FileProblemsError(name, problems)
-        return cls(*(_read_only(column) for column in columns))
+            raise FileProblemsError(str(path), problems)
+        return cls(*(_read_only(column) for column in columns.values))
 
     @classmethod
     def published(cls, name: str) -> ModelTable:
@@ -161,52 +160,6 @@ def _read_only(column: NDArray[np.float64]) -> NDArray[np.float64]:
     return column
 
 
-def _parse(text: str) -> tuple[list[NDArray[np.float64]], list[int], list[str]]:
-    """Columns of a CSV text, the line of each row, and what could not be read."""
-    rows = _rows(text)
-    header = next(rows, None)
-    if header is None:
-        return [], [], ["no header; expected " + ",".join(COLUMNS)]
-    names = [name.strip() for name in header[1]]
-    missing = [column for column in COLUMNS if column not in names]
-    if missing:
-        return [], [], [f"line {header[0]}: column {', '.join(missing)} missing from the header"]
-    places = [names.index(column) for column in COLUMNS]
-    values: list[list[float]] = []
-    lines: list[int] = []
-    problems: list[str] = []
-    for line, cells in rows:
-        row = []
-        for column, place in zip(COLUMNS, places, strict=True):
-            cell = cells[place].strip() if place < len(cells) else ""
-            number = _number(cell)
-            if number is None:
-                problems.append(f"line {line}, {column}: expected a number, got {cell!r}")
-            else:
-                row.append(number)
-        values.append(row)
-        lines.append(line)
-    if problems:
-        return [], lines, problems
-    table = np.array(values, dtype=np.float64).reshape(-1, len(COLUMNS))
-    return [np.ascontiguousarray(column) for column in table.T], lines, []
-
-
-def _rows(text: str) -> Iterator[tuple[int, list[str]]]:
-    reader = csv.reader(text.splitlines())
-    for cells in reader:
-        if any(cell.strip() for cell in cells) and not cells[0].lstrip().startswith("#"):
-            yield reader.line_num, cells
-
-
-def _number(cell: str) -> float | None:
-    try:
-        number = float(cell)
-    except ValueError:
-        return None
-    return number if math.isfinite(number) else None
-
-
 def _problems(columns: Sequence[NDArray[np.float64]], labels: Sequence[str]) -> list[str]:
     """List what keeps four columns from being a model of the Earth."""
     depth, vp, vs, density = columns
@@ -222,6 +175,7 @@ def _problems(columns: Sequence[NDArray[np.float64]], labels: Sequence[str]) -> 
 def _value_problems(columns: Sequence[NDArray[np.float64]], labels: Sequence[str]) -> list[str]:
     found = []
     for name, column in zip(COLUMNS[1:], columns, strict=True):
+        low, high, unit = PLAUSIBLE[name]
         fluid = name == "vs_km_s"
         good = np.isfinite(column) & ((column >= 0.0) if fluid else (column > 0.0))
         expected = "0 (fluid) or more" if fluid else "a positive number"
@@ -229,7 +183,23 @@ def _value_problems(columns: Sequence[NDArray[np.float64]], labels: Sequence[str
             f"{labels[row]}, {name}: expected {expected}, got {column[row]}"
             for row in np.flatnonzero(~good).tolist()
         ]
-    return found
+        odd = good & ~((column >= low) & (column <= high) | (fluid & (column == 0.0)))
+        found += [
+            f"{labels[row]}, {name}: expected {low:g} to {high:g} {unit}, got {column[row]:g}"
+            for row in np.flatnonzero(odd).tolist()
+        ]
+    return found or _ratio_problems(columns[0], columns[1], labels)
+
+
+def _ratio_problems(
+    vp: NDArray[np.float64], vs: NDArray[np.float64], labels: Sequence[str]
+) -> list[str]:
+    """Find rows that no elastic body can have: vs² < ¾ vp², the bulk modulus being positive."""
+    return [
+        f"{labels[row]}, vs_km_s: expected less than {np.sqrt(0.75):.3f} of vp_km_s "
+        f"({vp[row]:g}), got {vs[row]:g} (columns swapped?)"
+        for row in np.flatnonzero(vs**2 >= 0.75 * vp**2).tolist()
+    ]
 
 
 def _depth_problems(depth: NDArray[np.float64], labels: Sequence[str]) -> list[str]:

@@ -8,6 +8,8 @@ turn geocentric here.
 from __future__ import annotations
 
 from rayloom.residuals.assembly import compute_residuals, read_residuals
+from rayloom.residuals.crust import StationCrust, crust_files, read_crust
+from rayloom.residuals.crust_listing import crust_frame
 from rayloom.residuals.exclusions import Exclusions
 from rayloom.residuals.settings import ResidualSettings
 from rayloom.residuals.table import Residuals
@@ -16,6 +18,10 @@ __all__ = [
     "Exclusions",
     "ResidualSettings",
     "Residuals",
+    "StationCrust",
     "compute_residuals",
+    "crust_files",
+    "crust_frame",
+    "read_crust",
     "read_residuals",
 ]

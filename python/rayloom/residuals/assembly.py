@@ -8,6 +8,7 @@ import numpy as np
 
 from rayloom.earth import ReferenceEarth, phase_wave
 from rayloom.errors import InputError
+from rayloom.residuals.crust import StationCrust
 from rayloom.residuals.exclusions import Exclusions, Selection
 from rayloom.residuals.prediction import Geometry, Prediction, pair_geometry, predict
 from rayloom.residuals.readings import (
@@ -31,7 +32,11 @@ from rayloom.survey.tables import BoolArray, FloatArray
 
 
 def compute_residuals(
-    survey: Survey, earth: ReferenceEarth, settings: ResidualSettings | None = None
+    survey: Survey,
+    earth: ReferenceEarth,
+    settings: ResidualSettings | None = None,
+    *,
+    crust: StationCrust | None = None,
 ) -> Residuals:
     """Turn the picks of a survey into residuals.
 
@@ -47,6 +52,8 @@ def compute_residuals(
         The Earth of the predictions.
     settings : ResidualSettings, optional
         Distance windows, corrections, limits.
+    crust : StationCrust, optional
+        Crust below stations, part of the prediction unless the settings say no.
 
     Returns
     -------
@@ -66,6 +73,7 @@ def compute_residuals(
         settings or ResidualSettings(),
         ready=False,
         notices=[],
+        crust=crust,
     )
 
 
@@ -77,6 +85,7 @@ def read_residuals(
     settings: ResidualSettings | None = None,
     *,
     survey_settings: SurveySettings | None = None,
+    crust: StationCrust | None = None,
 ) -> Residuals:
     """Read residuals that others computed, and screen them like computed ones.
 
@@ -96,6 +105,8 @@ def read_residuals(
         Distance windows, limits.
     survey_settings : SurveySettings, optional
         Uncertainty by default and of each quality class.
+    crust : StationCrust, optional
+        Crust below stations, part of the predicted times.
 
     Returns
     -------
@@ -123,6 +134,7 @@ def read_residuals(
         settings or ResidualSettings(),
         ready=True,
         notices=notices,
+        crust=crust,
     )
 
 
@@ -145,9 +157,12 @@ def _assembled(
     *,
     ready: bool,
     notices: list[Notice],
+    crust: StationCrust | None,
 ) -> Residuals:
     readings = with_usual_names(readings)
-    screened = screen_readings(readings, stations, events, earth, settings, ready=ready)
+    screened = screen_readings(
+        readings, stations, events, earth, settings, ready=ready, crust=crust
+    )
     excluded = _exclusions(screened.selection, readings, stations, events)
     _check_any_left(screened.selection, excluded)
     kept = screened.selection.kept
@@ -170,6 +185,7 @@ def _assembled(
         predicted_s=prediction.total_s,
         ellipticity_s=prediction.ellipticity_s,
         elevation_s=prediction.elevation_s,
+        crust_s=prediction.crust_s,
         excluded=excluded,
         notices=[*notices, *window_notices(settings), *lost],
     )
@@ -184,6 +200,7 @@ def screen_readings(
     *,
     ready: bool,
     everywhere: bool = False,
+    crust: StationCrust | None = None,
 ) -> Screened:
     """Predict readings and tell which of them are left out, and why.
 
@@ -201,6 +218,8 @@ def screen_readings(
         Whether the readings are residuals already.
     everywhere : bool
         Predict readings outside the windows as well, which are left out all the same.
+    crust : StationCrust, optional
+        Crust below stations.
 
     Returns
     -------
@@ -220,6 +239,7 @@ def screen_readings(
         events,
         earth,
         settings,
+        crust,
     )
     predicted_s = prediction.total_s
     screen_arrivals(selection, phase, geometry.distance_deg, predicted_s)
@@ -238,6 +258,7 @@ def _predicted_where(
     events: Events,
     earth: ReferenceEarth,
     settings: ResidualSettings,
+    crust: StationCrust | None,
 ) -> Prediction:
     """Predict the rows that are still in; the others are NaN."""
     used = readings.select(kept)
@@ -251,6 +272,7 @@ def _predicted_where(
         geometry.select(kept),
         ellipticity=settings.ellipticity,
         elevation=settings.elevation,
+        crust=crust if settings.crust else None,
     )
     columns = {}
     for name in Prediction.column_names():

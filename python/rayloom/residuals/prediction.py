@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
 from rayloom.earth import ReferenceEarth, distance_azimuth_deg, geocentric_latitude_deg
+from rayloom.residuals.crust import StationCrust
 from rayloom.survey import Events, Stations
-from rayloom.survey.tables import ColumnTable, FloatArray, IndexArray, TextArray
+from rayloom.survey.tables import ColumnTable, FloatArray, IndexArray, TextArray, no_floats
 
 
 @dataclass(frozen=True, eq=False)
@@ -35,16 +36,24 @@ class Prediction(ColumnTable):
     travel_s, ellipticity_s, elevation_s : (n,) float arrays
         Time in the spherical Earth from the event's depth to sea level; what
         ellipticity adds; what elevation and burial add; s.
+    crust_s : (n,) float array, optional
+        What the local crust adds, s; 0 if not given.
     """
 
     travel_s: FloatArray
     ellipticity_s: FloatArray
     elevation_s: FloatArray
+    crust_s: FloatArray = field(default_factory=no_floats)
+
+    def __post_init__(self) -> None:
+        if not len(self.crust_s):
+            object.__setattr__(self, "crust_s", np.zeros(len(self.travel_s)))
+        super().__post_init__()
 
     @property
     def total_s(self) -> FloatArray:
         """Predicted travel time, s, shape (n,); NaN where there is no arrival."""
-        return np.asarray(self.travel_s + self.ellipticity_s + self.elevation_s)
+        return np.asarray(self.travel_s + self.ellipticity_s + self.elevation_s + self.crust_s)
 
 
 def pair_geometry(
@@ -76,6 +85,7 @@ def predict(
     *,
     ellipticity: bool,
     elevation: bool,
+    crust: StationCrust | None = None,
 ) -> Prediction:
     """Predict travel times of event-station pairs.
 
@@ -96,13 +106,15 @@ def predict(
         Distance and directions of the pairs.
     ellipticity, elevation : bool
         Whether these parts are computed; they are 0 otherwise.
+    crust : StationCrust, optional
+        Crust below stations that replaces that of the Earth.
 
     Returns
     -------
     Prediction
         NaN where the phase does not arrive.
     """
-    parts = np.zeros((3, len(phase)))
+    parts = np.zeros((4, len(phase)))
     latitude_deg = geocentric_latitude_deg(events.latitude_deg)[event_index]
     depth_km = events.depth_km[event_index]
     height_km = -stations.depth_km[station_index]
@@ -116,4 +128,7 @@ def predict(
             )
         if elevation:
             parts[2, rows] = earth.elevation_s(name, distance_deg, source_km, height_km[rows])
-    return Prediction(parts[0], parts[1], parts[2])
+        if crust is not None:
+            parameter_s = earth.ray_parameter(name, distance_deg, source_km)
+            parts[3, rows] = crust.delay_s(earth, stations, station_index[rows], name, parameter_s)
+    return Prediction(*parts)

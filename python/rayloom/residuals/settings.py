@@ -41,6 +41,8 @@ class ResidualSettings(BaseModel):
         Whether predictions contain the ellipticity of the Earth.
     elevation : bool
         Whether predictions contain the elevation and burial of the station.
+    crust : bool
+        Whether predictions contain the local crust, where a table of it is given.
     max_residual_s : float
         Picks further than this from the median of their group, in s, are left
         out as gross errors.
@@ -59,6 +61,9 @@ class ResidualSettings(BaseModel):
     )
     ellipticity: bool = Field(default=True, description="correct for the Earth's ellipticity")
     elevation: bool = Field(default=True, description="correct for elevation and burial")
+    crust: bool = Field(
+        default=True, description="correct for local crust where inputs.crust tells of it"
+    )
     max_residual_s: float = Field(
         default=5.0,
         gt=0.0,

@@ -6,6 +6,8 @@ from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from rayloom.earth import ReferenceEarth
 from rayloom.residuals.exclusions import Exclusions
 from rayloom.residuals.files import write_frame
@@ -49,6 +51,8 @@ class Residuals(ColumnTable):
         Predicted travel time, s, its corrections included.
     ellipticity_s, elevation_s : (n,) float arrays
         The parts of it due to ellipticity and to elevation and burial, s.
+    crust_s : (n,) float array, optional
+        The part of it due to local crust, s; 0 if not given.
     relative_residual_s : (n,) float array, optional
         Residual minus the median of its group (event, phase), s; computed if
         not given.
@@ -73,11 +77,14 @@ class Residuals(ColumnTable):
     predicted_s: FloatArray
     ellipticity_s: FloatArray
     elevation_s: FloatArray
+    crust_s: FloatArray = field(default_factory=no_floats)
     relative_residual_s: FloatArray = field(default_factory=no_floats)
     excluded: Exclusions = field(default_factory=Exclusions)
     notices: list[Notice] = field(default_factory=list)
 
     def __post_init__(self) -> None:
+        if not len(self.crust_s):
+            object.__setattr__(self, "crust_s", np.zeros(len(self.residual_s)))
         if len(self.residual_s) and not len(self.relative_residual_s):
             group = group_numbers(self.event_index, self.phase)
             relative_s = relative_to_median_s(self.residual_s, group)

@@ -57,6 +57,10 @@ class InputSettings(BaseModel):
         CSV with event, network, station, phase, time, uncertainty_s; QuakeML.
     residuals : path or list of paths, optional
         event, network, station, phase, residual_s, uncertainty_s.
+    crust : path, optional
+        Local crust below stations, replacing that of the Earth: CSV with network, station, and
+        crust_thickness_km (with vp_km_s, vs_km_s if known) or column, the name of a CSV file
+        with depth_km, vp_km_s, vs_km_s.
     """
 
     model_config = ConfigDict(extra="forbid", frozen=True)
@@ -65,6 +69,7 @@ class InputSettings(BaseModel):
     events: FileNames
     picks: FileNames | None = None
     residuals: FileNames | None = None
+    crust: Path | None = None
 
     @model_validator(mode="after")
     def _one_kind_of_data(self) -> InputSettings:

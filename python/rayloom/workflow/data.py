@@ -8,6 +8,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, fields, replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 
@@ -18,11 +19,21 @@ from rayloom.residuals import (
     Exclusions,
     Residuals,
     ResidualSettings,
+    StationCrust,
     compute_residuals,
+    crust_files,
+    read_crust,
     read_residuals,
 )
 from rayloom.settings import RunSettings
-from rayloom.survey import Notice, SurveySettings, read_events, read_stations, read_survey
+from rayloom.survey import (
+    Notice,
+    Stations,
+    SurveySettings,
+    read_events,
+    read_stations,
+    read_survey,
+)
 from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.reporting import Reporter
 
@@ -43,35 +54,41 @@ class Tables:
         Tables of stations and events; several files or folders make one table.
     picks, residuals : pathlib.Path or tuple of pathlib.Path, optional
         Picks, or residuals where these are ready: one of the two.
+    crust : pathlib.Path, optional
+        Local crust below stations.
     """
 
     stations: TableFiles
     events: TableFiles
     picks: TableFiles | None = None
     residuals: TableFiles | None = None
+    crust: Path | None = None
 
     @classmethod
     def given(cls, **named: Sequence[Path]) -> Tables:
         """Return the tables that lists of files make, one file standing for itself."""
-        return cls(
-            **{
-                name: paths[0] if len(paths) == 1 else tuple(paths)
-                for name, paths in named.items()
-                if paths
-            }
-        )
+        tables: dict[str, Any] = {
+            name: paths[0] if len(paths) == 1 else tuple(paths)
+            for name, paths in named.items()
+            if paths
+        }
+        return cls(**tables)
 
     @classmethod
     def of(cls, folder: RunFolder, settings: RunSettings) -> Tables:
-        """Return the tables that the settings of a run folder name."""
+        """Return the tables that the settings of a run folder name.
+
+        A table of crust that is switched off does not count.
+        """
         named = settings.inputs
-        return cls(
-            **{
-                field.name: folder.resolve_each(getattr(named, field.name))
-                for field in fields(cls)
-                if getattr(named, field.name) is not None
-            }
-        )
+        if not settings.residuals.crust:
+            named = named.model_copy(update={"crust": None})
+        tables: dict[str, Any] = {
+            field.name: folder.resolve_each(getattr(named, field.name))
+            for field in fields(cls)
+            if getattr(named, field.name) is not None
+        }
+        return cls(**tables)
 
     def by_content(self) -> dict[str, TableFiles]:
         """Return the tables that are given by what they hold."""
@@ -89,16 +106,17 @@ class Tables:
         Returns
         -------
         dict of pathlib.Path
-            ``{"stations": …, "picks 1": …, "picks 2": …}``.
+            ``{"stations": …, "picks 1": …, "picks 2": …}``. The files that a table of
+            crust names stand beside it.
         """
-        found = {}
+        found: dict[str, Path] = {}
         for name, paths in self.by_content().items():
             if contents and name not in contents:
                 continue
             several = paths if isinstance(paths, tuple) else (paths,)
             for number, path in enumerate(several, start=1):
                 found[name if len(several) == 1 else f"{name} {number}"] = path
-        return found
+        return found | (crust_files(found["crust"]) if "crust" in found else {})
 
 
 def read_earth(folder: RunFolder, model: str) -> ReferenceEarth:
@@ -161,6 +179,15 @@ def residuals_from_tables(
     return data
 
 
+def station_crust(
+    tables: Tables, stations: Stations, notices: list[Notice] | None = None
+) -> StationCrust | None:
+    """Read the crust below stations, if a table of it is given."""
+    if tables.crust is None:
+        return None
+    return read_crust(tables.crust, stations, notices=notices)
+
+
 def read_back_residuals(
     folder: RunFolder, earth: ReferenceEarth, settings: RunSettings
 ) -> Residuals:
@@ -177,13 +204,15 @@ def read_back_residuals(
         If the list of exclusions cannot be read.
     """
     tables = Tables.of(folder, settings)
+    stations = read_stations(tables.stations)
     data = read_residuals(
         folder.residuals,
-        read_stations(tables.stations),
+        stations,
         read_events(tables.events),
         earth,
         settings.residuals,
         survey_settings=settings.survey,
+        crust=station_crust(tables, stations),
     )
     excluded = _earlier_exclusions(folder.exclusions)
     if folder.wave is None:
@@ -264,7 +293,9 @@ def _computed(
             "reading tables, kB", done // _BYTES_PER_KB, total // _BYTES_PER_KB
         ),
     )
-    return compute_residuals(read, earth, residuals), read.notices
+    notices = list(read.notices)
+    crust = station_crust(tables, read.stations, notices)
+    return compute_residuals(read, earth, residuals, crust=crust), notices
 
 
 def _ready(
@@ -277,5 +308,14 @@ def _ready(
     notices: list[Notice] = []
     stations = read_stations(tables.stations, notices=notices)
     events = read_events(tables.events, notices=notices)
-    data = read_residuals(table, stations, events, earth, residuals, survey_settings=survey)
+    crust = station_crust(tables, stations, notices)
+    if crust is not None:
+        detail = (
+            "residuals that are ready are taken as they are; inputs.crust bears on their "
+            "predicted times only"
+        )
+        notices.append(Notice("warning", "crust_not_applied", "inputs.crust", detail))
+    data = read_residuals(
+        table, stations, events, earth, residuals, survey_settings=survey, crust=crust
+    )
     return data, notices

@@ -9,7 +9,7 @@ import os
 import shutil
 import time
 from pathlib import Path
-from typing import Final
+from typing import Any, Final
 
 import numpy as np
 
@@ -118,7 +118,7 @@ def _suggested_settings(
     suggestion = suggest_grid(_usable_part(data), model)
     for reason in suggestion.reasons:
         reporter.note(reason)
-    named = {
+    named: dict[str, Any] = {
         name: _each_named_in(folder, files, copied_to=INPUTS if copy else None)
         for name, files in tables.by_content().items()
     }
@@ -168,11 +168,22 @@ def _earth_named(folder: RunFolder, earth: str) -> str:
 
 
 def _copy(tables: Tables, folder: RunFolder) -> None:
-    paths = {path.resolve() for path in tables.files().values()}
-    if len({path.name for path in paths}) < len(paths):
+    kept = {path.resolve(): path.name for path in tables.files().values()}
+    if tables.crust is not None:
+        base = tables.crust.resolve().parent
+        kept |= {
+            path.resolve(): os.path.relpath(path.resolve(), base)
+            for path in tables.files("crust").values()
+        }
+    if any(name.startswith("..") for name in kept.values()):
+        raise InputError(
+            "the table of crust names column files outside its own folder; move them there, or "
+            "leave out --copy"
+        )
+    if len({*kept.values()}) < len(kept):
         raise InputError("two tables have the same name; rename one, or leave out --copy")
-    for path in paths:
-        target = folder.path / INPUTS / path.name
+    for path, name in kept.items():
+        target = folder.path / INPUTS / name
         if target.exists() and target.samefile(path):
             continue
         with replacing(target) as temporary:

@@ -9,10 +9,17 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any, Final
 
-from rayloom.outputs import write_exclusions_csv, write_residuals_csv
+from rayloom.outputs import write_exclusions_csv, write_residuals_csv, write_table
+from rayloom.residuals import crust_frame
 from rayloom.settings import RunSettings
 from rayloom.workflow.comparing_waves import ratio_inputs, write_ratio
-from rayloom.workflow.data import Tables, is_table, read_earth, residuals_from_tables
+from rayloom.workflow.data import (
+    Tables,
+    is_table,
+    read_earth,
+    residuals_from_tables,
+    station_crust,
+)
 from rayloom.workflow.exporting import export_results
 from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.inverting import run_inversion
@@ -65,8 +72,9 @@ STEPS: Final = (
 
 
 def _residuals(folder: RunFolder, settings: RunSettings, reporter: Reporter) -> Outcome:
+    tables = Tables.of(folder, settings)
     data = residuals_from_tables(
-        Tables.of(folder, settings),
+        tables,
         read_earth(folder, settings.earth.model),
         survey=settings.survey,
         residuals=settings.residuals,
@@ -74,7 +82,11 @@ def _residuals(folder: RunFolder, settings: RunSettings, reporter: Reporter) -> 
     )
     write_residuals_csv(folder.residuals, data)
     write_exclusions_csv(folder.exclusions, data)
-    files = (folder.residuals, folder.exclusions)
+    files = [folder.residuals, folder.exclusions]
+    crust = station_crust(tables, data.stations)
+    if crust is not None:
+        files.append(folder.file("station_crust.csv"))
+        write_table(files[-1], crust_frame(data, crust))
     return Outcome(files={path.name: path for path in files})
 
 
@@ -85,7 +97,7 @@ def _earth_table(folder: RunFolder, settings: RunSettings) -> Files:
 
 def _inversion_inputs(folder: RunFolder, settings: RunSettings) -> Files:
     return {
-        **Tables.of(folder, settings).files("stations", "events"),
+        **Tables.of(folder, settings).files("stations", "events", "crust"),
         "residuals.csv": folder.residuals,
         **_earth_table(folder, settings),
     }
