@@ -13,6 +13,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.sparse import csr_array
 
 
 @dataclass(frozen=True)
@@ -45,6 +46,11 @@ class GroupMeans:
         """Apply I − QQᵀ to a (rows,) vector; symmetric and idempotent."""
         sums = np.bincount(self._slot, weights=self._unit * values)
         return values - self._unit * sums[self._slot]
+
+    def columns(self) -> csr_array:
+        """Q itself, one column per group, (rows, groups)."""
+        rows = np.arange(self._unit.size)
+        return csr_array((self._unit, (rows, self._slot)))
 
     @property
     def count(self) -> int:
