@@ -6,13 +6,17 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
+from rayloom.errors import InputError
 from rayloom.inversion import (
     IndependentPrior,
+    InversionSettings,
     Prior,
     ZeroSumPrior,
+    block_prior,
     damping_smoothing_prior,
     matern_prior,
 )
+from rayloom.inversion.depth_prior import coupling_across_edges
 from rayloom.model import BlockGrid, Frame
 
 Floats = NDArray[np.float64]
@@ -115,3 +119,49 @@ def test_zero_sum_prior_sums_to_zero_with_the_deviation_asked() -> None:
     np.testing.assert_allclose(
         np.sqrt(np.diag(covariance)), [0.2, 0.2, 0.2, 0.5, 0.5, 0.0], atol=1e-12
     )
+
+
+@pytest.mark.parametrize("share", [0.0, 0.2])
+def test_decoupled_depths_are_a_smaller_flux_across_one_edge(share: float) -> None:
+    """Against the dense operator whose vertical flux is reduced across that edge alone."""
+    coupling = coupling_across_edges(SPHERE, [35.0, 900.0], share)
+    assert coupling is not None
+    prior = matern_prior(
+        SPHERE,
+        standard_deviation=0.03,
+        horizontal_km=50.0,
+        vertical_km=25.0,
+        depth_coupling=coupling,
+    )
+    volume, across, along = dense_differences(SPHERE)
+    depth = np.broadcast_to(SPHERE.depth_centres_km, SPHERE.shape).ravel()
+    apart = (depth[:, None] < 35.0) != (depth < 35.0)
+    weak = np.where(apart, (1.0 - share) * along, 0.0)
+    along = along - weak + np.diag(weak.sum(axis=1))
+    operator = np.diag(np.sqrt(volume)) @ (
+        np.eye(volume.size) + (50.0**2 * across + 25.0**2 * along) / volume[:, None]
+    )
+    covariance = np.linalg.inv(operator.T @ operator)
+    scale = 0.03 / np.sqrt(np.diag(covariance))
+    expected = scale[:, None] * covariance * scale
+    np.testing.assert_allclose(dense(prior) @ dense(prior).T, expected, atol=1e-14)
+    if share == 0.0:
+        assert np.abs((dense(prior) @ dense(prior).T)[apart]).max() < 1e-15
+
+
+def test_the_deviation_follows_the_table_over_depth() -> None:
+    """Linear in between, constant beyond; the marginal deviations stay exact."""
+    settings = InversionSettings(
+        prior_std_percent=2.0,
+        prior_factor_by_depth=((10.0, 1.5), (60.0, 0.5)),
+        decoupled_depths_km=(35.0,),
+    )
+    prior = block_prior(SPHERE, settings)
+    expected = np.interp(SPHERE.depth_centres_km, [10.0, 60.0], [3.0, 1.0])
+    found = 100.0 * prior.standard_deviation().reshape(SPHERE.shape)
+    np.testing.assert_allclose(found, np.broadcast_to(expected, SPHERE.shape), rtol=1e-12)
+
+
+def test_a_decoupled_depth_within_a_layer_is_refused_by_name() -> None:
+    with pytest.raises(InputError, match=r"40 km lies within .* from 35 to 55 km"):
+        block_prior(SPHERE, InversionSettings(prior_std_percent=2.0, decoupled_depths_km=(40.0,)))

@@ -21,6 +21,10 @@ from rayloom.inversion import InversionSettings, invert
         ({"min_picks_per_event": 1}, "min_picks_per_event"),
         ({"robust": "l1"}, "robust"),
         ({"outlier_std": 1.0}, "outlier_std"),
+        ({"prior_factor_by_depth": [[100, 2.0], [50, 1.0]]}, "prior_factor_by_depth"),
+        ({"prior_factor_by_depth": [[0, -2.0]]}, "prior_factor_by_depth"),
+        ({"prior_factor_by_depth": [[0, 2.0]], "prior": "damping"}, "prior_factor_by_depth"),
+        ({"decoupled_share": 1.5}, "decoupled_share"),
     ],
 )
 def test_values_outside_their_range_are_refused_by_name(

@@ -146,6 +146,7 @@ def matern_prior(
     standard_deviation: float | NDArray[np.float64],
     horizontal_km: float,
     vertical_km: float,
+    depth_coupling: NDArray[np.float64] | None = None,
 ) -> SpectralPrior:
     """Field with covariance σ² e^(−ρ), ρ² = (Δh/ℓ_h)² + (Δz/ℓ_v)².
 
@@ -162,6 +163,9 @@ def matern_prior(
         Marginal standard deviation σ, in the unit of the field.
     horizontal_km, vertical_km : float
         Distances ℓ_h and ℓ_v at which the correlation falls to 1/e, km.
+    depth_coupling : (nz − 1,) array, optional
+        Factor of the flux ∇·H∇ across each inner edge in depth, 1 if not given:
+        blocks on either side of a small one hardly correlate.
 
     References
     ----------
@@ -169,14 +173,19 @@ def matern_prior(
     Gaussian fields and Gaussian Markov random fields: the stochastic partial
     differential equation approach. J. R. Statist. Soc. B 73, 423-498.
     """
-    modes = TensorModes.of_grid(grid)
+    modes = TensorModes.of_grid(grid, depth_coupling)
     amplitude = 1.0 / (1.0 + modes.eigenvalues(horizontal_km**2, vertical_km**2))
     scale = standard_deviation / np.sqrt(modes.variance(amplitude**2))
     return SpectralPrior(modes=modes, amplitude=amplitude.ravel(), scale=scale)
 
 
 def damping_smoothing_prior(
-    grid: BlockGrid, *, damping: float, horizontal_km: float, vertical_km: float
+    grid: BlockGrid,
+    *,
+    damping: float,
+    horizontal_km: float,
+    vertical_km: float,
+    depth_coupling: NDArray[np.float64] | None = None,
 ) -> SpectralPrior:
     """Classical penalty on size and on first differences, weighted by volume.
 
@@ -194,8 +203,11 @@ def damping_smoothing_prior(
         a block of mean volume if nothing is smoothed.
     horizontal_km, vertical_km : float
         Weights of the differences per km.
+    depth_coupling : (nz − 1,) array, optional
+        Factor of the penalty on the squared difference across each inner edge in
+        depth, 1 if not given.
     """
-    modes = TensorModes.of_grid(grid)
+    modes = TensorModes.of_grid(grid, depth_coupling)
     precision = damping**2 + modes.eigenvalues(horizontal_km**2, vertical_km**2)
     return SpectralPrior(
         modes=modes,

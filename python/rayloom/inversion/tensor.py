@@ -40,16 +40,22 @@ class AxisModes:
     values: NDArray[np.float64]
 
     @classmethod
-    def from_widths(cls, widths_km: NDArray[np.float64]) -> AxisModes:
+    def from_widths(
+        cls, widths_km: NDArray[np.float64], coupling_share: NDArray[np.float64] | None = None
+    ) -> AxisModes:
         """Diagonalise the finite-volume second difference.
 
         Parameters
         ----------
         widths_km : (n,) array
             Widths of the cells along the axis, km; they may differ.
+        coupling_share : (n − 1,) array, optional
+            Factor of the flux between each two neighbours; 1 if not given.
         """
         between_centres = 0.5 * (widths_km[1:] + widths_km[:-1])
         coupling = 1.0 / between_centres
+        if coupling_share is not None:
+            coupling = coupling * coupling_share
         diagonal = np.zeros_like(widths_km)
         diagonal[:-1] += coupling
         diagonal[1:] += coupling
@@ -74,13 +80,23 @@ class TensorModes:
     relative_volumes: NDArray[np.float64]
 
     @classmethod
-    def of_grid(cls, grid: BlockGrid) -> TensorModes:
-        """Diagonalise a block grid, its metric taken at the middle of the box."""
+    def of_grid(
+        cls, grid: BlockGrid, depth_coupling: NDArray[np.float64] | None = None
+    ) -> TensorModes:
+        """Diagonalise a block grid, its metric taken at the middle of the box.
+
+        Parameters
+        ----------
+        grid : BlockGrid
+            The blocks.
+        depth_coupling : (nz − 1,) array, optional
+            Factor of the flux across each inner edge in depth; 1 if not given.
+        """
         widths = grid.widths
         volumes = widths.x_km[:, None, None] * widths.y_km[:, None] * widths.depth_km
         x = AxisModes.from_widths(widths.x_km)
         y = AxisModes.from_widths(widths.y_km)
-        z = AxisModes.from_widths(widths.depth_km)
+        z = AxisModes.from_widths(widths.depth_km, depth_coupling)
         return cls(axes=(x, y, z), relative_volumes=volumes / volumes.mean())
 
     @property
