@@ -11,6 +11,7 @@ from rayloom.model.grid import BlockGrid, BlockWidths
 from rayloom.model.settings import EdgeSegment, GridSettings, SuggestionSettings
 from rayloom.model.slowness import SlownessModel
 from rayloom.model.suggest import GridSuggestion, suggest_grid
+from rayloom.model.transfer import with_perturbation_of
 from rayloom.model.wave_ratio import WaveRatio, wave_ratio
 
 __all__ = [
@@ -25,4 +26,5 @@ __all__ = [
     "WaveRatio",
     "suggest_grid",
     "wave_ratio",
+    "with_perturbation_of",
 ]

@@ -101,9 +101,22 @@ class RunInversionSettings(InversionSettings):
         Which arrivals are inverted: "P" for those that arrive as P waves, "S" for those that
         arrive as S waves; "auto" makes one model of each wave that has residuals, with two in
         the sub-folders P and S.
+    starting_model : path or one per wave, optional
+        netCDF file of rayloom whose perturbation the iterations start from; where its blocks
+        differ, block means are taken. Such as { P = "p.nc", S = "s.nc" } for two waves. It
+        bears on the course of the iterations alone: what is believed beforehand, and where
+        data are silent found again, is the prior.
     """
 
     wave: Literal["auto", "P", "S"] = "auto"
+    starting_model: Path | dict[Literal["P", "S"], Path] | None = None
+
+    def starting_model_of(self, wave: str) -> Path | None:
+        """Return the file of the starting model of one wave, None if there is none."""
+        chosen = self.starting_model
+        if not isinstance(chosen, dict):
+            return chosen
+        return {str(key): path for key, path in chosen.items()}.get(wave)
 
 
 class RunOutputSettings(OutputSettings):

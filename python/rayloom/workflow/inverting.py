@@ -6,7 +6,7 @@ from pathlib import Path
 
 import numpy as np
 
-from rayloom.errors import RayloomError
+from rayloom.errors import InputError, RayloomError
 from rayloom.forward import Rays
 from rayloom.inversion import (
     InversionResult,
@@ -15,7 +15,7 @@ from rayloom.inversion import (
     load_state,
     save_state,
 )
-from rayloom.model import BlockGrid, SlownessModel
+from rayloom.model import BlockGrid, SlownessModel, with_perturbation_of
 from rayloom.outputs import write_linear_system, write_tables
 from rayloom.residuals import Residuals
 from rayloom.settings import RunSettings
@@ -53,7 +53,7 @@ def run_inversion(
     grid = BlockGrid.from_spec(settings.grid)
     wave = settings.inversion.wave
     _tell_waves(data, wave, reporter)
-    model = SlownessModel.from_earth(grid, earth, wave=wave)
+    model = starting_model(folder, settings, SlownessModel.from_earth(grid, earth, wave=wave))
     checkpoint = folder.checkpoints / f"invert_{fingerprint}.npz"
     resume = _resumable(checkpoint, reporter)
     log = _IterationLog(checkpoint, reporter, 0 if resume is None else resume.iteration + 1)
@@ -80,6 +80,30 @@ def run_inversion(
         seeds={"trace_probes": settings.inversion.seed},
         remarks=remarks,
     )
+
+
+def starting_model_files(folder: RunFolder, settings: RunSettings) -> Files:
+    """Name the file of the starting model, if there is one."""
+    named = settings.inversion.starting_model_of(settings.inversion.wave)
+    return {} if named is None else {"starting_model": folder.resolve(named)}
+
+
+def starting_model(
+    folder: RunFolder, settings: RunSettings, reference: SlownessModel
+) -> SlownessModel:
+    """Give a reference model the perturbation that the iterations start from.
+
+    Raises
+    ------
+    InputError
+        If the file is no model of the same wave, or covers none of the blocks.
+    """
+    for path in starting_model_files(folder, settings).values():
+        try:
+            return with_perturbation_of(reference, SlownessModel.read_netcdf(path))
+        except InputError as error:
+            raise InputError(str(error), where=f"inversion.starting_model, {path}") from error
+    return reference
 
 
 def _tell_waves(data: Residuals, wave: str, reporter: Reporter) -> None:

@@ -22,7 +22,7 @@ from rayloom.workflow.data import (
 )
 from rayloom.workflow.exporting import export_results
 from rayloom.workflow.folder import RunFolder
-from rayloom.workflow.inverting import run_inversion
+from rayloom.workflow.inverting import run_inversion, starting_model_files
 from rayloom.workflow.plan import Files, Outcome, Step
 from rayloom.workflow.record import content_hashes, fingerprint
 from rayloom.workflow.reporting import Reporter
@@ -99,6 +99,7 @@ def _inversion_inputs(folder: RunFolder, settings: RunSettings) -> Files:
     return {
         **Tables.of(folder, settings).files("stations", "events", "crust"),
         "residuals.csv": folder.residuals,
+        **starting_model_files(folder, settings),
         **_earth_table(folder, settings),
     }
 
