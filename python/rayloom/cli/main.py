@@ -16,6 +16,7 @@ from rayloom.cli.beginning import demo, init
 from rayloom.cli.guard import GuardedGroup
 from rayloom.cli.running import run
 from rayloom.cli.stepping import export, invert, ratio, residuals
+from rayloom.cli.tradeoff import tradeoff
 
 _CONTEXT = {"help_option_names": ["-h", "--help"], "max_content_width": 92}
 
@@ -39,7 +40,7 @@ def main() -> None:
     """
 
 
-COMMANDS: Final = (demo, init, run, residuals, invert, export, ratio)
+COMMANDS: Final = (demo, init, run, residuals, invert, tradeoff, export, ratio)
 """All commands in the order of the work."""
 
 for command in COMMANDS:

@@ -5,6 +5,7 @@ keeps beside its code; :func:`read_run_settings` and :func:`run_settings_text` c
 it from and to a file.
 """
 
+from rayloom.settings.changing import change_run_settings
 from rayloom.settings.run import (
     EarthSettings,
     InputSettings,
@@ -20,6 +21,7 @@ __all__ = [
     "RunInversionSettings",
     "RunOutputSettings",
     "RunSettings",
+    "change_run_settings",
     "read_run_settings",
     "run_settings_text",
 ]

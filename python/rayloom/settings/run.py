@@ -19,6 +19,7 @@ from pydantic import (
 
 from rayloom.forward import ForwardSettings
 from rayloom.inversion import InversionSettings
+from rayloom.inversion.tradeoff import TradeoffSettings
 from rayloom.model import BlockGrid, GridSettings
 from rayloom.outputs import OutputSettings
 from rayloom.residuals import ResidualSettings
@@ -140,7 +141,7 @@ class RunSettings(BaseModel):
 
     Attributes
     ----------
-    inputs, earth, survey, residuals, grid, forward, inversion, outputs : settings
+    inputs, earth, survey, residuals, grid, forward, inversion, tradeoff, outputs : settings
         In the order of the work.
     """
 
@@ -155,6 +156,7 @@ class RunSettings(BaseModel):
     inversion: RunInversionSettings = Field(
         default_factory=lambda: RunInversionSettings.model_validate({})
     )
+    tradeoff: TradeoffSettings = Field(default_factory=TradeoffSettings)
     outputs: RunOutputSettings = Field(
         default_factory=lambda: RunOutputSettings.model_validate({})
     )

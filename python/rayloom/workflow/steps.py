@@ -26,6 +26,7 @@ from rayloom.workflow.inverting import run_inversion, starting_model_files
 from rayloom.workflow.plan import Files, Outcome, Step
 from rayloom.workflow.record import content_hashes, fingerprint
 from rayloom.workflow.reporting import Reporter
+from rayloom.workflow.tradeoff import TRADEOFF
 
 STEPS: Final = (
     Step(
@@ -47,6 +48,7 @@ STEPS: Final = (
         ),
         builds_on=("residuals",),
     ),
+    TRADEOFF,
     Step(
         name="export",
         inputs=lambda folder, _: {

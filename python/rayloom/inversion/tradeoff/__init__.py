@@ -15,6 +15,7 @@ from rayloom.inversion.tradeoff.choice import (
 )
 from rayloom.inversion.tradeoff.cross_validation import EventScores, cross_validate
 from rayloom.inversion.tradeoff.curve import Accuracy, Curve, curvature, measure_curve
+from rayloom.inversion.tradeoff.explanation import explain
 from rayloom.inversion.tradeoff.marginal import MarginalSystem, TermElimination
 from rayloom.inversion.tradeoff.recommendation import Recommendation, recommend
 from rayloom.inversion.tradeoff.settings import TradeoffSettings
@@ -45,6 +46,7 @@ __all__ = [
     "curvature",
     "discrepancy_damping",
     "evidence_damping",
+    "explain",
     "gcv_damping",
     "measure_curve",
     "plausible",

@@ -52,6 +52,11 @@ class TriedPrior:
         Correlation lengths, km.
     chi2, chi2_expected : float
         Weighted squared residuals, and (N − N_g) − tr H.
+    block_misfit_norm : float
+        Norm of the misfit once terms of stations and events have taken their share:
+        the ordinate of the L-curve.
+    block_norm : float
+        Norm of the blocks' whitened unknowns for a standard deviation of 1 %: its abscissa.
     prior_misfit : float
         Squared norm of all whitened unknowns.
     objective_per_datum : float
@@ -78,6 +83,8 @@ class TriedPrior:
     correlation_vertical_km: float
     chi2: float
     chi2_expected: float
+    block_misfit_norm: float
+    block_norm: float
     prior_misfit: float
     objective_per_datum: float
     resolved_parameters: float
@@ -154,6 +161,14 @@ class Tradeoff:
     def equally_good(self) -> tuple[TriedPrior, ...]:
         """The rows of all priors as good as that."""
         return tuple(row for row in self.rows if row.equally_good)
+
+    @property
+    def share_of_sign_kept(self) -> float:
+        """Share of the volume crossed by rays whose sign all equally good models keep."""
+        crossed = self.model.fields["hits"] > 0
+        volumes = np.broadcast_to(self.model.grid.volumes_km3, crossed.shape)[crossed]
+        kept = self.agreement.sign[crossed] != 0.0
+        return float(volumes @ kept / volumes.sum())
 
     def frame(self) -> pd.DataFrame:
         """Return the table, one column per field of :class:`TriedPrior`."""
@@ -299,7 +314,7 @@ class _Sweep:
         for damping in self._damping.tolist():
             final = system.final_residual(found.residual(damping))
             white = system.unknowns(final, damping=damping)
-            fractional = system.blocks.parameters(white)[0]
+            fractional = self._problem.prior_mean + system.blocks.parameters(white)[0]
             yield (100.0 * (1.0 / (1.0 + fractional) - 1.0)).reshape(
                 self._problem.model.grid.shape
             )
@@ -323,6 +338,8 @@ class _Sweep:
             correlation_vertical_km=vertical_km,
             chi2=float(curve.chi2[column]),
             chi2_expected=float(curve.chi2_expected[column]),
+            block_misfit_norm=float(curve.marginal_norm[column]),
+            block_norm=float(curve.solution_norm[column]),
             prior_misfit=float(curve.objective[column] - curve.chi2[column]),
             objective_per_datum=float(curve.objective[column] / curve.free_count),
             resolved_parameters=float(curve.resolved[column]),
