@@ -12,6 +12,7 @@ from rayloom.residuals.crust import StationCrust, crust_files, read_crust
 from rayloom.residuals.crust_listing import crust_frame
 from rayloom.residuals.exclusions import Exclusions
 from rayloom.residuals.settings import ResidualSettings
+from rayloom.residuals.summary_rays import SummaryRays, summarise_rays
 from rayloom.residuals.table import Residuals
 
 __all__ = [
@@ -19,9 +20,11 @@ __all__ = [
     "ResidualSettings",
     "Residuals",
     "StationCrust",
+    "SummaryRays",
     "compute_residuals",
     "crust_files",
     "crust_frame",
     "read_crust",
     "read_residuals",
+    "summarise_rays",
 ]

@@ -46,6 +46,12 @@ class ResidualSettings(BaseModel):
     max_residual_s : float
         Picks further than this from the median of their group, in s, are left
         out as gross errors.
+    summary_distance_km : float, optional
+        Events whose hypocentres all lie within this of each other, in km, enter the
+        inversion as one, with one summary residual per station and phase
+        (:func:`rayloom.residuals.summarise_rays`); each by itself if not given.
+    summary_systematic_s : float
+        What the picks of such events at one station have in common, in s.
     """
 
     model_config = ConfigDict(extra="forbid", frozen=True)
@@ -68,6 +74,20 @@ class ResidualSettings(BaseModel):
         default=5.0,
         gt=0.0,
         description="picks further than this from their group's median are left out, in s",
+    )
+
+    summary_distance_km: float | None = Field(
+        default=None,
+        gt=0.0,
+        le=1000.0,
+        description="events whose hypocentres all lie within this of each other, in km, enter the "
+        "inversion as one; each by itself if not given",
+    )
+    summary_systematic_s: float = Field(
+        default=0.05,
+        ge=0.0,
+        le=10.0,
+        description="error that the picks of such events at one station have in common, in s",
     )
 
     @field_validator("distance_min_deg", "distance_max_deg")

@@ -20,10 +20,12 @@ from rayloom.residuals import (
     Residuals,
     ResidualSettings,
     StationCrust,
+    SummaryRays,
     compute_residuals,
     crust_files,
     read_crust,
     read_residuals,
+    summarise_rays,
 )
 from rayloom.settings import RunSettings
 from rayloom.survey import (
@@ -191,6 +193,27 @@ def station_crust(
 def read_back_residuals(
     folder: RunFolder, earth: ReferenceEarth, settings: RunSettings
 ) -> Residuals:
+    """Read ``residuals.csv`` of a run folder as the inversion takes it.
+
+    They are those of :func:`read_back_picks`, summed up over nearby events where the
+    settings say so.
+    """
+    picks = read_back_picks(folder, earth, settings)
+    summary = summary_of(picks, settings)
+    return picks if summary is None else summary.data
+
+
+def summary_of(data: Residuals, settings: RunSettings) -> SummaryRays | None:
+    """Sum up residuals of nearby events, or return None where the settings do not ask for it."""
+    distance_km = settings.residuals.summary_distance_km
+    if distance_km is None:
+        return None
+    return summarise_rays(
+        data, distance_km=distance_km, systematic_s=settings.residuals.summary_systematic_s
+    )
+
+
+def read_back_picks(folder: RunFolder, earth: ReferenceEarth, settings: RunSettings) -> Residuals:
     """Read ``residuals.csv`` of a run folder, as computed or as edited since.
 
     Its list of exclusions is that of ``exclusions.csv``. The part of a run folder that

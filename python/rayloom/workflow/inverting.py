@@ -16,10 +16,10 @@ from rayloom.inversion import (
     save_state,
 )
 from rayloom.model import BlockGrid, SlownessModel, with_perturbation_of
-from rayloom.outputs import write_linear_system, write_tables
-from rayloom.residuals import Residuals
+from rayloom.outputs import write_linear_system, write_table, write_tables
+from rayloom.residuals import Residuals, SummaryRays
 from rayloom.settings import RunSettings
-from rayloom.workflow.data import read_back_residuals, read_earth
+from rayloom.workflow.data import read_back_picks, read_earth, summary_of
 from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.plan import Files, Outcome
 from rayloom.workflow.reporting import Reporter
@@ -49,10 +49,13 @@ def run_inversion(
         The files written.
     """
     earth = read_earth(folder, settings.earth.model)
-    data = read_back_residuals(folder, earth, settings)
+    picks = read_back_picks(folder, earth, settings)
+    summary = summary_of(picks, settings)
+    data = picks if summary is None else summary.data
     grid = BlockGrid.from_spec(settings.grid)
     wave = settings.inversion.wave
     _tell_waves(data, wave, reporter)
+    _tell_summary(picks, summary, reporter)
     model = starting_model(folder, settings, SlownessModel.from_earth(grid, earth, wave=wave))
     checkpoint = folder.checkpoints / f"invert_{fingerprint}.npz"
     resume = _resumable(checkpoint, reporter)
@@ -74,6 +77,9 @@ def run_inversion(
         remarks["structure"] = result.structure.sentence()
         reporter.note(remarks["structure"])
     files = _write(folder, result, linear_system=settings.outputs.linear_system)
+    if summary is not None:
+        files["summary_clusters.csv"] = folder.file("summary_clusters.csv")
+        write_table(files["summary_clusters.csv"], summary.members)
     _clear(folder.checkpoints)
     return Outcome(
         files=files,
@@ -111,6 +117,17 @@ def _tell_waves(data: Residuals, wave: str, reporter: Reporter) -> None:
     aside = int(np.count_nonzero(data.wave != wave))
     if aside:
         reporter.note(f"{wave} residuals are inverted; {aside} of the other wave are left aside")
+
+
+def _tell_summary(picks: Residuals, summary: SummaryRays | None, reporter: Reporter) -> None:
+    if summary is None:
+        return
+    clusters = summary.members["cluster"].nunique()
+    reporter.note(
+        f"{len(picks.residual_s)} residuals of {len(summary.members)} events summed up to "
+        f"{len(summary.data.residual_s)} of {clusters} clusters; {summary.downweighted} picks "
+        "stand beyond three standard deviations of their cluster and count less"
+    )
 
 
 class _IterationLog:

@@ -28,6 +28,9 @@ from rayloom.workflow.record import content_hashes, fingerprint
 from rayloom.workflow.reporting import Reporter
 from rayloom.workflow.tradeoff import TRADEOFF
 
+SUMMARY_KEYS: Final = ("summary_distance_km", "summary_systematic_s")
+"""Keys of ``residuals`` that bear on the inversion, not on residuals of single events."""
+
 STEPS: Final = (
     Step(
         name="residuals",
@@ -35,7 +38,7 @@ STEPS: Final = (
             **Tables.of(folder, settings).files(),
             **_earth_table(folder, settings),
         },
-        settings=lambda settings: _sections(settings, "earth", "survey", "residuals"),
+        settings=lambda settings: _residual_settings(settings),
         work=lambda folder, settings, reporter: _residuals(folder, settings, reporter),
         scope="run",
     ),
@@ -92,6 +95,14 @@ def _residuals(folder: RunFolder, settings: RunSettings, reporter: Reporter) -> 
     return Outcome(files={path.name: path for path in files})
 
 
+def _residual_settings(settings: RunSettings) -> dict[str, Any]:
+    """Give all that bears on residuals of single events."""
+    chosen = _sections(settings, "earth", "survey", "residuals")
+    for key in SUMMARY_KEYS:
+        del chosen["residuals"][key]
+    return chosen
+
+
 def _earth_table(folder: RunFolder, settings: RunSettings) -> Files:
     model = settings.earth.model
     return {"earth": folder.resolve(Path(model))} if is_table(model) else {}
@@ -119,6 +130,7 @@ def _inversion_settings(settings: RunSettings) -> dict[str, Any]:
     chosen = _sections(settings, "earth", "grid", "forward", "inversion")
     for section in ("forward", "inversion"):
         chosen[section].pop("threads", None)
+    chosen["residuals"] = {key: getattr(settings.residuals, key) for key in SUMMARY_KEYS}
     chosen["outputs"] = {"linear_system": settings.outputs.linear_system}
     return chosen
 
