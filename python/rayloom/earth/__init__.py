@@ -11,12 +11,13 @@ from rayloom.earth.geodesy import (
     geographic_latitude_deg,
 )
 from rayloom.earth.local_column import LocalColumn, column_delay_s, moho_km
-from rayloom.earth.model_table import ModelTable
+from rayloom.earth.model_table import LARGEST_VS_OVER_VP, ModelTable
 from rayloom.earth.phases import PHASES, phase_wave, standard_phase
 from rayloom.earth.reference import ReferenceEarth
 from rayloom.earth.time_table import TimeTable
 
 __all__ = [
+    "LARGEST_VS_OVER_VP",
     "PHASES",
     "DistanceAzimuth",
     "LocalColumn",

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from rayloom.earth.csv_columns import read_columns
-from rayloom.earth.model_table import PLAUSIBLE
+from rayloom.earth.model_table import LARGEST_VS_OVER_VP, PLAUSIBLE
 from rayloom.earth.structure import HIGHEST_KM, EarthStructure
 from rayloom.errors import FileProblemsError, InputError
 from rayloom.units import EARTH_RADIUS_KM
@@ -276,8 +276,8 @@ def _speed_problems(vp: Floats, vs: Floats, labels: Sequence[str]) -> list[str]:
             for row in np.flatnonzero(~((speed >= low) & (speed <= high))).tolist()
         ]
     found += [
-        f"{labels[row]}, vs_km_s: expected less than {np.sqrt(0.75):.3f} of vp_km_s "
+        f"{labels[row]}, vs_km_s: expected less than {LARGEST_VS_OVER_VP:.3f} of vp_km_s "
         f"({vp[row]:g}), got {vs[row]:g} (columns swapped?)"
-        for row in np.flatnonzero(vs**2 >= 0.75 * vp**2).tolist()
+        for row in np.flatnonzero(vs >= LARGEST_VS_OVER_VP * vp).tolist()
     ]
     return found

@@ -12,7 +12,13 @@ from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
-from rayloom.earth import LocalColumn, ReferenceEarth, column_delay_s, phase_wave
+from rayloom.earth import (
+    LARGEST_VS_OVER_VP,
+    LocalColumn,
+    ReferenceEarth,
+    column_delay_s,
+    phase_wave,
+)
 from rayloom.errors import FileAccessError, FileProblemsError
 from rayloom.survey import Notice, Stations
 from rayloom.survey.columns import ColumnReader, Span
@@ -250,8 +256,8 @@ def _check_rows(crust: StationCrust, table: TextTable) -> None:
         ),
         (np.asarray(named & fast), "vp_km_s and vs_km_s stand in the column file; leave them out"),
         (
-            np.asarray(crust.vs_km_s**2 >= 0.75 * crust.vp_km_s**2),
-            f"column vs_km_s: expected less than {np.sqrt(0.75):.3f} of vp_km_s (swapped?)",
+            np.asarray(crust.vs_km_s >= LARGEST_VS_OVER_VP * crust.vp_km_s),
+            f"column vs_km_s: expected less than {LARGEST_VS_OVER_VP:.3f} of vp_km_s (swapped?)",
         ),
     ]
     if table.columns.get("network") and table.columns.get("station"):
