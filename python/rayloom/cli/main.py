@@ -14,6 +14,7 @@ import click
 from rayloom import __version__
 from rayloom.cli.beginning import demo, init
 from rayloom.cli.guard import GuardedGroup
+from rayloom.cli.importing import import_model
 from rayloom.cli.running import run
 from rayloom.cli.stepping import export, invert, ratio, residuals
 from rayloom.cli.tradeoff import tradeoff
@@ -40,7 +41,7 @@ def main() -> None:
     """
 
 
-COMMANDS: Final = (demo, init, run, residuals, invert, tradeoff, export, ratio)
+COMMANDS: Final = (demo, init, run, residuals, invert, tradeoff, export, import_model, ratio)
 """All commands in the order of the work."""
 
 for command in COMMANDS:

@@ -6,6 +6,7 @@ was left unexplained. :func:`linearise` freezes the last rays and weights
 of an inversion; trade-offs and appraisals start from there.
 """
 
+from rayloom.inversion.adopting import adopt_model
 from rayloom.inversion.assembly import block_prior, build_problem
 from rayloom.inversion.elimination import GroupMeans
 from rayloom.inversion.forward_map import ForwardMap, Prediction, Report
@@ -68,6 +69,7 @@ __all__ = [
     "StudentT",
     "WhitenedSystem",
     "ZeroSumPrior",
+    "adopt_model",
     "block_prior",
     "build_problem",
     "damping_smoothing_prior",

@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rayloom.errors import InputError
+from rayloom.inversion.depth_prior import coupling_across_edges, factor_of_blocks
 from rayloom.inversion.forward_map import ForwardMap, Report
 from rayloom.inversion.groups import (
     ParameterGroup,
@@ -73,6 +74,7 @@ def build_problem(
 
 def block_prior(grid: BlockGrid, settings: InversionSettings) -> SpectralPrior:
     """Build the prior of fractional slowness perturbations that the settings choose."""
+    coupling = coupling_across_edges(grid, settings.decoupled_depths_km, settings.decoupled_share)
     if settings.prior == "damping":
         horizontal_km, vertical_km = settings.smoothing_km
         return damping_smoothing_prior(
@@ -80,13 +82,17 @@ def block_prior(grid: BlockGrid, settings: InversionSettings) -> SpectralPrior:
             damping=settings.damping,
             horizontal_km=horizontal_km,
             vertical_km=vertical_km,
+            depth_coupling=coupling,
         )
     horizontal_km, vertical_km = settings.correlation_km
     return matern_prior(
         grid,
-        standard_deviation=settings.prior_std_percent / 100.0,
+        standard_deviation=0.01
+        * settings.prior_std_percent
+        * factor_of_blocks(grid, settings.prior_factor_by_depth),
         horizontal_km=horizontal_km,
         vertical_km=vertical_km,
+        depth_coupling=coupling,
     )
 
 

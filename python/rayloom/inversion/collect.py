@@ -23,23 +23,19 @@ Value = TypeVar("Value", bound=np.generic)
 _NO_RAY: Final = "no ray"
 
 
-def collect_result(
-    data: Residuals, problem: Problem, outcome: Outcome, finish: Finish
-) -> InversionResult:
+def collect_result(data: Residuals, outcome: Outcome, finish: Finish) -> InversionResult:
     """Name and order everything that the loop found.
 
     Parameters
     ----------
     data : Residuals
         The table that the problem was built from.
-    problem : Problem
-        The problem.
     outcome : Outcome
         Where its loop ended.
     finish : Finish
         What was worked out about its last model.
     """
-    fit, traced = outcome.fit, outcome.traced
+    problem, fit, traced = outcome.problem, outcome.fit, outcome.traced
     suspected = suspected_outliers(fit, outlier_std=problem.settings.outlier_std)
     parameters = _linear_parameters(problem, traced.white)
     count = len(data.residual_s)
@@ -49,6 +45,7 @@ def collect_result(
         table[problem.rows.data_row] = values
         return table
 
+    factor = outcome.state.uncertainty_factor
     used = in_table(traced.active, False)
     after = in_table(fit.centred_s, np.nan)
     because = _left_out_because(data, problem, used)
@@ -77,6 +74,7 @@ def collect_result(
         ),
         state=outcome.state,
         structure=finish.structure,
+        uncertainty_factor=None if factor is None else in_table(factor, 1.0),
     )
 
 

@@ -52,6 +52,10 @@ class GroupMeans:
         rows = np.arange(self._unit.size)
         return csr_array((self._unit, (rows, self._slot)))
 
+    def leverage(self) -> NDArray[np.float64]:
+        """Diagonal of QQᵀ, (rows,): what each row bears on its own mean."""
+        return self._unit**2
+
     @property
     def count(self) -> int:
         """Number of means eliminated: groups with at least one row of weight."""

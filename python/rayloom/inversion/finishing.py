@@ -11,7 +11,6 @@ from rayloom.inversion.forward_map import Report
 from rayloom.inversion.measure import suspected_outliers
 from rayloom.inversion.outer import Outcome
 from rayloom.inversion.posterior import group_standard_deviation
-from rayloom.inversion.problem import Problem
 from rayloom.inversion.structure import StructureDemand, structure_demand
 
 
@@ -31,19 +30,17 @@ class Finish:
     structure: StructureDemand | None
 
 
-def finish(problem: Problem, outcome: Outcome, report: Report | None) -> Finish:
+def finish(outcome: Outcome, report: Report | None) -> Finish:
     """Work out what belongs to the last model alone.
 
     Parameters
     ----------
-    problem : Problem
-        The problem.
     outcome : Outcome
         Where its loop ended.
     report : callable, optional
         Told ("errors of station terms", terms done, terms).
     """
-    traced, fit = outcome.traced, outcome.fit
+    problem, traced, fit = outcome.problem, outcome.traced, outcome.fit
     suspected = suspected_outliers(fit, outlier_std=problem.settings.outlier_std)
     names = [group.name for group in problem.linear_groups]
     deviation = None

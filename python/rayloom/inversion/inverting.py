@@ -74,4 +74,4 @@ def invert(
     with threadpool_limits(limits=1):
         problem = build_problem(data, model, settings, forward=forward, report=progress)
         outcome = run_outer_loop(problem, resume=resume, report=progress, checkpoint=checkpoint)
-        return collect_result(data, problem, outcome, finish(problem, outcome, progress))
+        return collect_result(data, outcome, finish(outcome, progress))

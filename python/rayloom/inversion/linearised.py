@@ -43,6 +43,9 @@ class LinearisedProblem:
         Robust weights; 0 in rows that take no part.
     white : (unknowns,) array
         Whitened unknowns of the model that the inversion found.
+    prior_mean : (blocks,) array
+        Fractional slowness perturbation of z = 0: the blocks hold it plus what
+        :meth:`WhitenedSystem.parameters` gives of z.
     """
 
     model: SlownessModel
@@ -51,6 +54,7 @@ class LinearisedProblem:
     target_s: NDArray[np.float64]
     weights: NDArray[np.float64]
     white: NDArray[np.float64]
+    prior_mean: NDArray[np.float64]
 
     @property
     def right_hand_side(self) -> NDArray[np.float64]:
@@ -80,7 +84,8 @@ class LinearisedProblem:
 
     def perturbation_percent(self, white: NDArray[np.float64]) -> NDArray[np.float64]:
         """Velocity perturbation of whitened unknowns, (nx, ny, nz), percent."""
-        fractional = self.system.parameters(white)[0].reshape(self.model.grid.shape)
+        blocks = self.prior_mean + self.system.parameters(white)[0]
+        fractional = blocks.reshape(self.model.grid.shape)
         return np.asarray(100.0 * (1.0 / (1.0 + fractional) - 1.0))
 
 
@@ -99,6 +104,7 @@ def linearise(result: InversionResult, settings: InversionSettings) -> Linearise
         wave=result.model.wave,
         min_picks_per_event=settings.min_picks_per_event,
     )
+    rows = replace(rows, uncertainty_s=result.uncertainty_s[rows.data_row])
     blocks = block_group(
         result.rays.path_lengths[rows.ray],
         result.model.reference.ravel(),
@@ -118,4 +124,16 @@ def linearise(result: InversionResult, settings: InversionSettings) -> Linearise
         target_s=np.where(weights > 0.0, target_s, 0.0),
         weights=weights,
         white=result.state.white,
+        prior_mean=_prior_mean(result, settings, system),
     )
+
+
+def _prior_mean(
+    result: InversionResult, settings: InversionSettings, system: WhitenedSystem
+) -> NDArray[np.float64]:
+    """Take what the data added off the model that was found."""
+    model = result.model
+    if settings.prior_mean == "reference":
+        return np.zeros(model.grid.block_count)
+    found = (model.slowness_s_per_km / model.reference).ravel() - 1.0
+    return np.asarray(found - system.parameters(result.state.white)[0])

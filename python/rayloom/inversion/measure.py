@@ -71,6 +71,7 @@ def measure(
     planned: PlannedStep | None,
     taken: TakenStep | None,
     seconds: float,
+    uncertainty_change: float = 0.0,
 ) -> Iteration:
     """Fill the row of the history that describes a traced model.
 
@@ -86,6 +87,8 @@ def measure(
         How it was reached; None for the starting model.
     seconds : float
         Time the iteration took before these measures, s.
+    uncertainty_change : float, optional
+        Largest change of the logarithm of an uncertainty before it.
     """
     traced, fit, settings = stage.traced, stage.fit, problem.settings
     suspected = suspected_outliers(fit, outlier_std=settings.outlier_std)
@@ -120,6 +123,7 @@ def measure(
         group_count=stage.system.means.count,
         downweighted=int(np.sum(traced.active & (fit.weights < 1.0))),
         suspected_outliers=int(np.sum(suspected)),
+        uncertainty_change_percent=100.0 * float(np.expm1(uncertainty_change)),
         residual_scale=fit.scale,
         step_length=taken.length if taken else 0.0,
         step_gain=taken.gain if taken else 0.0,

@@ -96,17 +96,29 @@ class Problem:
         """Number of unknowns of all groups."""
         return self.block_prior.size + sum(group.size for group in self.linear_groups)
 
+    @property
+    def starting_perturbation(self) -> NDArray[np.float64]:
+        """Fractional slowness perturbation of the starting model, (blocks,)."""
+        return (self.model.slowness_s_per_km / self.model.reference).ravel() - 1.0
+
+    @property
+    def prior_mean(self) -> NDArray[np.float64]:
+        """Fractional slowness perturbation that the prior is centred on, (blocks,)."""
+        if self.settings.prior_mean == "starting_model":
+            return self.starting_perturbation
+        return np.zeros(self.block_prior.size)
+
     def starting_unknowns(self) -> NDArray[np.float64]:
         """Whitened unknowns of the starting model; the linear groups start at zero."""
-        ratio = self.model.slowness_s_per_km / self.model.reference
+        beyond = self.starting_perturbation - self.prior_mean
         white = np.zeros(self.unknown_count)
-        if np.any(ratio != 1.0):
-            white[: self.block_prior.size] = self.block_prior.whiten(ratio.ravel() - 1.0)
+        if np.any(beyond):
+            white[: self.block_prior.size] = self.block_prior.whiten(beyond)
         return white
 
     def model_of(self, white: NDArray[np.float64]) -> SlownessModel | None:
         """Model of whitened unknowns, or None if it is too far from the reference."""
-        perturbation = self.block_prior.colour(white[: self.block_prior.size])
+        perturbation = self.block_prior.colour(white[: self.block_prior.size]) + self.prior_mean
         ratio = 1.0 + perturbation.reshape(self.model.grid.shape)
         if ratio.min() < 1.0 / _LARGEST_RATIO or ratio.max() > _LARGEST_RATIO:
             return None
@@ -188,7 +200,7 @@ class Problem:
         grid = self.model.grid
         for values in (grid.x_edges, grid.y_edges, grid.depth_edges_km, self.model.reference):
             digest.update(np.ascontiguousarray(values).tobytes())
-        for values in (self.block_prior.amplitude, self.block_prior.scale):
+        for values in (self.block_prior.amplitude, self.block_prior.scale, self.prior_mean):
             digest.update(values.tobytes())
         for group in self.linear_groups:
             digest.update(f"{group.name} {group.size}".encode())

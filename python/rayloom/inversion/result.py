@@ -70,7 +70,7 @@ class InversionResult:
     weights : (rows,) array
         Robust weights, 0 to 1 (Student's t: up to (ν + 1)/ν).
     standardised : (rows,) array
-        ``residual_after_s`` over the pick's uncertainty.
+        ``residual_after_s`` over :attr:`uncertainty_s`.
     suspected_outlier : (rows,) bool array
         Rows beyond ``outlier_std``.
     used : (rows,) bool array
@@ -92,6 +92,9 @@ class InversionResult:
         and rays and the uncertainties as they stand, s; empty if not worked out.
     structure : StructureDemand or None
         Whether the data demand structure in the blocks; None if not worked out.
+    uncertainty_factor : (rows,) array or None
+        By which ``rescale_uncertainties`` multiplied the uncertainties of the data,
+        1 where a row was left out; None if not asked for.
     """
 
     data: Residuals
@@ -113,6 +116,13 @@ class InversionResult:
     state: InversionState
     station_term_std_s: dict[str, NDArray[np.float64]] = field(default_factory=dict)
     structure: StructureDemand | None = None
+    uncertainty_factor: NDArray[np.float64] | None = None
+
+    @property
+    def uncertainty_s(self) -> NDArray[np.float64]:
+        """Uncertainties that the last model assumes, (rows,), s."""
+        given = np.asarray(self.data.uncertainty_s, dtype=np.float64)
+        return given if self.uncertainty_factor is None else given * self.uncertainty_factor
 
     def history_frame(self) -> pd.DataFrame:
         """Return the history as a table, one row per iteration.
@@ -153,6 +163,30 @@ class InversionResult:
                 "suspected_outlier": self.suspected_outlier,
                 "left_out_because": self.left_out_because,
             }
+        )
+
+    def uncertainty_frame(self) -> pd.DataFrame:
+        """Return how uncertainties were rescaled, one row per phase and station.
+
+        Returns
+        -------
+        DataFrame
+            ``phase``, ``network``, ``station``, ``picks``, ``factor`` and
+            ``median_uncertainty_s`` after it; no rows if not asked for.
+        """
+        columns = ["phase", "network", "station"]
+        frame = self.residual_frame().assign(after_s=self.uncertainty_s)
+        if self.uncertainty_factor is None:
+            return frame.head(0)[columns].assign(picks=[], factor=[], median_uncertainty_s=[])
+        frame = frame.assign(factor=self.uncertainty_factor)[self.used]
+        return (
+            frame.groupby(columns)
+            .agg(
+                picks=("factor", "size"),
+                factor=("factor", "median"),
+                median_uncertainty_s=("after_s", "median"),
+            )
+            .reset_index()
         )
 
     def outlier_frame(self) -> pd.DataFrame:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from typing import Annotated, Literal, Self
 
 from pydantic import BaseModel, ConfigDict, Field, model_validator
@@ -9,6 +10,7 @@ from pydantic import BaseModel, ConfigDict, Field, model_validator
 from rayloom.inversion.robust import Huber, LeastSquares, Rejecting, RobustLoss, StudentT
 
 Positive = Annotated[float, Field(gt=0.0, allow_inf_nan=False)]
+Finite = Annotated[float, Field(allow_inf_nan=False)]
 NotNegative = Annotated[float, Field(ge=0.0, allow_inf_nan=False)]
 
 
@@ -43,6 +45,25 @@ class InversionSettings(BaseModel):
         description="Distances at which the correlation of two perturbations falls to 1/e: "
         "horizontal and vertical, km.",
     )
+    prior_mean: Literal["reference", "starting_model"] = Field(
+        default="reference",
+        description="What the model falls back to where data are silent: the reference, or the "
+        "starting model.",
+    )
+    prior_factor_by_depth: tuple[tuple[Finite, Positive], ...] = Field(
+        default=(),
+        description="Pairs of depth, km, and factor of the standard deviation there, linear in "
+        "between, such as [[0, 1.5], [200, 1.0], [660, 0.5]].",
+    )
+    decoupled_depths_km: tuple[Finite, ...] = Field(
+        default=(),
+        description="Depths across which perturbations hardly correlate, such as [410, 660]; "
+        "edges of blocks, km.",
+    )
+    decoupled_share: Annotated[float, Field(ge=0.0, le=1.0)] = Field(
+        default=0.1,
+        description="Share of the coupling left there: 0 cuts it, 1 leaves it whole.",
+    )
     damping: Positive = Field(
         default=50.0,
         description="For prior = damping: weight of the size of a fractional perturbation "
@@ -76,6 +97,12 @@ class InversionSettings(BaseModel):
         default=5,
         ge=2,
         description="Fewest picks of an event and phase; smaller groups are left out.",
+    )
+
+    rescale_uncertainties: tuple[Literal["phase", "network", "station"], ...] = Field(
+        default=(),
+        description="Multiply uncertainties by one factor per class of picks, as their residuals "
+        'ask; ["phase", "network"] makes a class of each phase at each network.',
     )
 
     robust: Literal["huber", "student_t", "none"] = Field(
@@ -132,6 +159,15 @@ class InversionSettings(BaseModel):
             raise ValueError(
                 f"outlier_std ({self.outlier_std:g}) must exceed huber_k ({self.huber_k:g})"
             )
+        return self
+
+    @model_validator(mode="after")
+    def _depths_rise(self) -> Self:
+        depths = [depth for depth, _ in self.prior_factor_by_depth]
+        if any(below <= above for above, below in pairwise(depths)):
+            raise ValueError("the depths of prior_factor_by_depth must rise")
+        if depths and self.prior == "damping":
+            raise ValueError("prior_factor_by_depth needs prior = correlated")
         return self
 
     def loss(self, *, rejecting: bool) -> RobustLoss:

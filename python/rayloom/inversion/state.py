@@ -57,6 +57,9 @@ class Iteration:
         N rows used and N_g means eliminated.
     downweighted, suspected_outliers : int
         Rows with a weight below one, and rows beyond ``outlier_std``.
+    uncertainty_change_percent : float
+        Largest change of any uncertainty, by ``rescale_uncertainties``, before this
+        model was solved for.
     residual_scale : float
         Spread of standardised residuals that the robust weights assume.
     step_length : float
@@ -92,6 +95,7 @@ class Iteration:
     group_count: int
     downweighted: int
     suspected_outliers: int
+    uncertainty_change_percent: float
     residual_scale: float
     step_length: float
     step_gain: float
@@ -135,6 +139,8 @@ class InversionState:
         Digest of the data, the blocks and the priors that the state belongs to.
     rejecting : bool
         Whether suspected outliers have lost all weight.
+    uncertainty_factor : (rows,) array or None
+        By which the uncertainties of the data were multiplied; None for not at all.
     """
 
     white: NDArray[np.float64]
@@ -142,6 +148,7 @@ class InversionState:
     history: tuple[Iteration, ...]
     fingerprint: str
     rejecting: bool = False
+    uncertainty_factor: NDArray[np.float64] | None = None
 
     @property
     def iteration(self) -> int:
@@ -171,6 +178,8 @@ def save_state(path: str | Path, state: InversionState) -> None:
         "rejecting": np.array(state.rejecting),
         "fingerprint": np.array(state.fingerprint),
     }
+    if state.uncertainty_factor is not None:
+        arrays["uncertainty_factor"] = state.uncertainty_factor
     for field in fields(Iteration):
         column = [getattr(row, field.name) for row in state.history]
         arrays[f"history_{field.name}"] = np.array(column)
@@ -216,6 +225,7 @@ def load_state(path: str | Path) -> InversionState:
             rejecting=bool(arrays["rejecting"]),
             history=tuple(Iteration(*row) for row in rows),
             fingerprint=str(arrays["fingerprint"]),
+            uncertainty_factor=arrays.get("uncertainty_factor"),
         )
     except OSError as error:
         raise FileAccessError(f"{path}: cannot read the checkpoint ({error})") from error

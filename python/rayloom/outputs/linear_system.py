@@ -72,7 +72,8 @@ def write_linear_system(folder: str | Path, result: InversionResult) -> list[Pat
 def _rows(result: InversionResult, rows: npt.NDArray[np.int64]) -> pd.DataFrame:
     table = residual_table(result.data, result).iloc[rows]
     columns = ["event", "network", "station", "phase", "uncertainty_s", "weight"]
-    return table[columns].assign(residual_row=rows)
+    used_s = result.uncertainty_s[rows]
+    return table[columns].assign(uncertainty_s=used_s, residual_row=rows)
 
 
 def block_table(model: SlownessModel) -> pd.DataFrame:

@@ -65,7 +65,8 @@ def write_tables(folder: str | Path, result: InversionResult) -> list[Path]:
     -------
     list of Path
         ``history.csv``, ``residuals_after.csv``, ``exclusions.csv``,
-        ``suspected_outliers.csv``, ``station_terms.csv`` and ``mislocations.csv``.
+        ``suspected_outliers.csv``, ``station_terms.csv`` and ``mislocations.csv``;
+        ``uncertainty_factors.csv`` where uncertainties were rescaled.
 
     Raises
     ------
@@ -88,7 +89,11 @@ def write_tables(folder: str | Path, result: InversionResult) -> list[Path]:
     write_table(outliers, result.outlier_frame())
     write_station_terms_csv(terms, result)
     write_mislocations_csv(mislocations, result)
-    return [history, residuals, exclusions, outliers, terms, mislocations]
+    written = [history, residuals, exclusions, outliers, terms, mislocations]
+    if result.uncertainty_factor is not None:
+        written.append(base / "uncertainty_factors.csv")
+        write_table(written[-1], result.uncertainty_frame())
+    return written
 
 
 def write_model_files(folder: str | Path, result: InversionResult) -> list[Path]:

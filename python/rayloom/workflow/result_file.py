@@ -60,6 +60,8 @@ def save_result(path: str | Path, result: InversionResult) -> None:
     arrays: dict[str, Any] = {name: getattr(result, name) for name in _ROW_ARRAYS}
     arrays |= {f"term_{phase}": terms for phase, terms in result.station_terms_s.items()}
     arrays |= {f"error_of_term_{phase}": std for phase, std in result.station_term_std_s.items()}
+    if result.uncertainty_factor is not None:
+        arrays["uncertainty_factor"] = result.uncertainty_factor
     if result.structure is not None:
         arrays["structure"] = np.array(astuple(result.structure))
     arrays |= _ray_arrays(result.rays) | _state_arrays(result.state)
@@ -133,6 +135,7 @@ def _result(arrays: dict[str, Any], data: Residuals, model: SlownessModel) -> In
         structure=(
             StructureDemand(*arrays["structure"].tolist()) if "structure" in arrays else None
         ),
+        uncertainty_factor=arrays.get("uncertainty_factor"),
         rays=_rays(arrays, model.grid),
         stopped_because=str(arrays["stopped_because"]),
         counts=Counts(count, groups, untraced, left_out),
@@ -186,7 +189,7 @@ def _state_arrays(state: InversionState) -> dict[str, Any]:
     return history | {
         f"state_{field.name}": np.array(getattr(state, field.name))
         for field in fields(InversionState)
-        if field.name != "history"
+        if field.name != "history" and getattr(state, field.name) is not None
     }
 
 
