@@ -18,6 +18,7 @@ SUBJECTS = {
     "job": "36,000 rays of distant events through 150,000 blocks",
     "growth": "cost against the number of blocks, rays and threads",
     "inversion": "a whole inversion of 5,000 residuals",
+    "screening": "faults planted in surveys against what the check finds, and clean surveys",
 }
 
 

@@ -1,0 +1,1 @@
+"""Invented surveys with known faults, made without tracing."""
