@@ -176,9 +176,8 @@ def _width_along(images: NDArray[np.float32], axis: int, width_km: Floats) -> Fl
     for lag in range(1, count):
         now, distance = _correlation(values, power, centre, lag)
         drop = before - now
-        crossing = distance_before + (before - 0.5) / np.where(drop > 0.0, drop, 1.0) * (
-            distance - distance_before
-        )
+        share = (before - 0.5) / np.where(drop > 0.0, drop, 1.0)
+        crossing = distance_before + share * (distance - distance_before)
         half = np.where(np.isinf(half) & (now < 0.5) & (before >= 0.5), crossing, half)
         before, distance_before = now, distance
         if np.all(np.isfinite(half)):
@@ -200,7 +199,7 @@ def _correlation(values: Floats, power: Floats, centre: Floats, lag: int) -> tup
     some = np.maximum(known, 1.0)
     mean = (np.nan_to_num(ahead) + np.nan_to_num(behind)) / some
     distance = np.nansum(step, axis=0)[:, None, None] / some
-    return np.where(known > 0.0, mean, 1.0), np.where(known > 0.0, distance, np.inf)
+    return np.where(known > 0.0, mean, 1.0), distance
 
 
 def _smooth(values: Floats) -> Floats:

@@ -1,7 +1,9 @@
-"""Errors from the data themselves: events weighted anew, or left out one at a time.
+"""Errors of the model from those of the data alone.
 
-Main functions: :func:`event_bootstrap` and :func:`event_jackknife`. Both keep
-rays and prior, and re-estimate the means of the events.
+Main functions: :func:`event_bootstrap` weighs events anew, :func:`event_jackknife`
+leaves them out one at a time, :func:`noise_repeats` repeats the survey with other
+errors of the size stated. All keep rays and prior; none of them knows how far the
+prior pulls the model from the truth.
 """
 
 from __future__ import annotations
@@ -14,7 +16,12 @@ from numpy.typing import NDArray
 
 from rayloom.appraisal.chunks import Arrays, Checkpoints, Progress, run_chunks
 from rayloom.appraisal.rowspace import Floats, RowSpace
-from rayloom.appraisal.samples import MOST_ITERATIONS, TOLERANCE, posterior_mean
+from rayloom.appraisal.samples import (
+    COLUMNS_AT_ONCE,
+    MOST_ITERATIONS,
+    TOLERANCE,
+    posterior_mean,
+)
 from rayloom.errors import InputError
 from rayloom.inversion import LinearisedProblem
 
@@ -70,9 +77,9 @@ class _ReweightTask:
     def _factors(self, number: int) -> Floats:
         events = int(self.event.max()) + 1
         if self.seed is None:
-            return (np.arange(events) != number).astype(np.float64)
+            return np.where(np.arange(events) == number, 0.0, 1.0)
         stream = np.random.default_rng(np.random.SeedSequence(self.seed, spawn_key=(number,)))
-        return stream.exponential(size=events)
+        return np.asarray(stream.exponential(size=events))
 
     def _invert(self, factors: Floats) -> Floats:
         space = self.space.with_weights(
@@ -82,6 +89,77 @@ class _ReweightTask:
         rows = space.weighted(self.target_s[:, None])
         found = space.estimate(rows, tolerance=TOLERANCE, max_iterations=MOST_ITERATIONS)
         return np.asarray(found[blocks, 0])
+
+
+@dataclass(frozen=True)
+class _NoiseTask:
+    """Inverts errors of unit variance of the weighted rows and nothing else."""
+
+    space: RowSpace
+    mean: Floats
+    seed: int
+
+    def __call__(self, start: int, stop: int) -> Arrays:
+        seeds = (np.random.SeedSequence(self.seed, spawn_key=(n,)) for n in range(start, stop))
+        noise = np.column_stack([self.space.noise(np.random.default_rng(s)) for s in seeds])
+        found = self.space.estimate(noise, tolerance=TOLERANCE, max_iterations=MOST_ITERATIONS)
+        blocks = slice(0, self.space.block_count)
+        return {"fractional": (self.mean[blocks, None] + found[blocks]).T.astype(np.float32)}
+
+
+def noise_repeats(
+    problem: LinearisedProblem,
+    count: int = 32,
+    seed: int = 71,
+    *,
+    executor: Executor | None = None,
+    progress: Progress | None = None,
+    checkpoints: Checkpoints | None = None,
+) -> Resampled:
+    """Invert the data with further errors of the size that the uncertainties state.
+
+    The scatter is the standard error about the *filtered* truth: what the inversion
+    would find of the true structure without errors.
+
+    Parameters
+    ----------
+    problem : LinearisedProblem
+        A finished inversion.
+    count : int, optional
+        Number of repeats, at least 2.
+    seed : int, optional
+        Seed of the errors.
+    executor, progress, checkpoints
+        As for :func:`rayloom.appraisal.posterior_samples`.
+
+    Returns
+    -------
+    Resampled
+
+    Raises
+    ------
+    InputError
+        If fewer than two repeats are asked for.
+    """
+    if count < 2:
+        raise InputError(f"at least 2 repeats are needed, got {count}")
+    space = RowSpace.of_problem(problem)
+    mean = posterior_mean(problem, space)
+    made = run_chunks(
+        _NoiseTask(space, mean, seed),
+        count,
+        size=COLUMNS_AT_ONCE,
+        name=f"repeats_{seed}",
+        executor=executor,
+        progress=progress,
+        checkpoints=checkpoints,
+    )
+    return Resampled(
+        shape=problem.model.grid.shape,
+        fractional=made["fractional"],
+        mean_fractional=mean[: space.block_count],
+        factor=count / (count - 1.0),
+    )
 
 
 def event_bootstrap(

@@ -14,6 +14,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 from scipy.sparse import csr_array, hstack
+from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]
 
 from rayloom.inversion import GroupMeans, LinearisedProblem, Prior
 
@@ -162,6 +163,10 @@ class RowSpace:
         Dubrulle, A. A. (2001). Retooling the method of block conjugate gradients.
         Electron. Trans. Numer. Anal. 12, 216-233 (the variant with QR factors).
         """
+        with threadpool_limits(1):
+            return self._solve(rows, tolerance, max_iterations)
+
+    def _solve(self, rows: Floats, tolerance: float, max_iterations: int) -> RowSolution:
         wanted = np.linalg.norm(rows, axis=0)
         size = np.where(wanted > 0.0, wanted, 1.0)
         found = np.zeros_like(rows)
