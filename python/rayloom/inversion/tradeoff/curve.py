@@ -15,7 +15,7 @@ from rayloom.inversion.tradeoff.bidiagonal import Bidiagonal, bidiagonalise
 from rayloom.inversion.tradeoff.marginal import MarginalSystem
 
 Floats = NDArray[np.float64]
-_PROBE_TOLERANCE = 1e-2
+_PROBE_TOLERANCE = 1e-3
 """Quadratic forms converge twice as fast as solutions."""
 
 
@@ -169,20 +169,22 @@ def measure_curve(
 def curvature(data: Bidiagonal, damping: Floats) -> Floats:
     """Curvature of the L-curve at each damping, exact for the bidiagonal problem.
 
+    With E = ‖z‖², R = ‖r‖² and dR/dλ = −λ² dE/dλ, the curve (½ log R, ½ log E) has the
+    curvature (2 E R/|E′|)(2λ E R + λ² E′ R + λ⁴ E E′)/(R² + λ⁴ E²)^(3/2).
+
     References
     ----------
-    Hansen, P. C. (2001). The L-curve and its use in the numerical treatment of
-    inverse problems. In Computational Inverse Problems in Electrocardiology,
-    119-142, WIT Press (equation for the curvature).
+    Hansen, P. C. & O'Leary, D. P. (1993). The use of the L-curve in the regularization
+    of discrete ill-posed problems. SIAM J. Sci. Comput. 14, 1487-1503.
     """
-    eta, rho = data.solution_squared(damping), data.residual_squared(damping)
+    size, misfit = data.solution_squared(damping), data.residual_squared(damping)
     cubes = (data.squares + damping[:, None] ** 2) ** 3
     slope = -4.0 * damping * ((data.weights * data.squares) / cubes).sum(axis=1)
     square = damping**2
     with np.errstate(divide="ignore", invalid="ignore"):
-        bend = 2.0 * eta * rho / slope
-        bend *= square * slope * rho + 2.0 * damping * eta * rho + square**2 * eta * slope
-        bend /= (square * eta**2 + rho**2) ** 1.5
+        turn = 2.0 * damping * size * misfit + square * slope * (misfit + square * size)
+        bend = -2.0 * size * misfit / slope * turn
+        bend /= (misfit**2 + square**2 * size**2) ** 1.5
     return np.asarray(np.nan_to_num(bend, nan=0.0, posinf=0.0, neginf=0.0))
 
 

@@ -36,11 +36,13 @@ def _recommended(tradeoff: Tradeoff) -> str:
         f"recommended: {row.prior_std_percent:g} % and "
         f"{row.correlation_horizontal_km:g} × {row.correlation_vertical_km:g} km"
     )
-    if tradeoff.rule == "gcv":
-        return f"{head}, where GCV is least ({row.gcv:.3f})"
+    if not tradeoff.validated:
+        return f"{head}: GCV is least there ({row.gcv:.3f})"
     return (
-        f"{head}, which predicts events left out best: mean square {row.cross_validation:.3f} "
-        f"± {row.cross_validation_error:.3f} of their uncertainties (1 if only noise is left)"
+        f"{head}: of all priors that predict events left out as well as the best within one "
+        f"standard error it has the least GCV ({row.gcv:.3f}); of those events it leaves a mean "
+        f"square of {row.cross_validation:.3f} ± {row.cross_validation_error:.3f} in units of "
+        "the uncertainties (1 if only noise were left)"
     )
 
 
@@ -52,7 +54,7 @@ def _range(tradeoff: Tradeoff) -> str:
     reach = sorted(row.correlation_horizontal_km for row in alike)
     share = 100.0 * tradeoff.share_of_sign_kept
     return (
-        f"{len(alike)} of {len(tradeoff.rows)} priors are as good within one standard error, "
+        f"{len(alike)} of {len(tradeoff.rows)} priors are as good, "
         f"{std[0]:g} to {std[-1]:g} % and {reach[0]:g} to {reach[-1]:g} km (horizontal); "
         f"{share:.0f} % of the volume crossed by rays keeps its sign in all of them"
     )
@@ -99,7 +101,7 @@ def _doubts(tradeoff: Tradeoff) -> list[str]:
         )
     if _evidence_disagrees(tradeoff):
         doubts.append(
-            "evidence differs from cross-validation by more than a factor of 1.6: the structure "
+            "the evidence would take another strength by more than a factor of 1.6: the structure "
             "is unlike a random field of one size, or errors are shared among stations"
         )
     return doubts

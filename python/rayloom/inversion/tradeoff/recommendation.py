@@ -27,9 +27,9 @@ class Recommendation:
     curve, damping : int
         Indices of the prior recommended.
     equally_good : (curves, dampings) bool array
-        Priors whose score lies within one standard error of the best.
-    rule : {"cross-validation", "gcv"}
-        What decided.
+        Priors that no score tells from the best.
+    validated : bool
+        Whether events left out had a say.
     at_edge : bool
         Whether the prior lies at an end of the standard deviations tried.
     """
@@ -37,17 +37,18 @@ class Recommendation:
     curve: int
     damping: int
     equally_good: NDArray[np.bool_]
-    rule: str
+    validated: bool
     at_edge: bool
 
 
 def recommend(curves: Sequence[Curve], scores: EventScores | None) -> Recommendation:
-    """Take the prior that predicts unseen events best.
+    """Take the prior of least GCV among those that predict unseen events well.
 
-    Without scores, or with fewer than four events, GCV decides instead. Equally good
-    are all priors whose score exceeds the best by at most its standard error (Breiman
-    et al. 1984); the standard error of a GCV score is taken as that of a χ² with
-    N − N_g − tr H degrees of freedom, √(2/(N − N_g − tr H)) of it.
+    GCV varies least from one draw of the noise to the next, but trusts errors to be
+    independent; cross-validation of whole events does not. Equally good are all priors
+    whose score exceeds the best by at most its standard error (Breiman et al. 1984).
+    Without scores, or with fewer than four events, they are those whose GCV exceeds the
+    least by at most the share √(2/(N − N_g − tr H)), the scatter of a χ².
 
     Parameters
     ----------
@@ -61,19 +62,25 @@ def recommend(curves: Sequence[Curve], scores: EventScores | None) -> Recommenda
     Breiman, L., Friedman, J. H., Olshen, R. A. & Stone, C. J. (1984). Classification
     and regression trees. Wadsworth, section 3.4.3.
     """
-    if scores is not None and int(np.sum(scores.freedom > 0.0)) >= _ENOUGH_EVENTS:
-        values, rule = scores.score, "cross-validation"
-        best = np.unravel_index(int(np.argmin(values)), values.shape)
-        error = float(scores.standard_error[best])
+    gcv = np.array([curve.gcv for curve in curves])
+    validated = scores is not None and int(np.sum(scores.freedom > 0.0)) >= _ENOUGH_EVENTS
+    if scores is not None and validated:
+        best = _lowest(scores.score)
+        equally_good = scores.score <= scores.score[best] + scores.standard_error[best]
     else:
-        values, rule = np.array([curve.gcv for curve in curves]), "gcv"
-        best = np.unravel_index(int(np.argmin(values)), values.shape)
-        error = float(values[best] * np.sqrt(2.0 / curves[int(best[0])].chi2_expected[best[1]]))
-    curve, damping = int(best[0]), int(best[1])
+        best = _lowest(gcv)
+        scatter = np.sqrt(2.0 / curves[best[0]].chi2_expected[best[1]])
+        equally_good = gcv <= gcv[best] * (1.0 + scatter)
+    curve, damping = _lowest(np.where(equally_good, gcv, np.inf))
     return Recommendation(
         curve=curve,
         damping=damping,
-        equally_good=values <= values[best] + error,
-        rule=rule,
-        at_edge=damping in (0, values.shape[1] - 1),
+        equally_good=equally_good,
+        validated=validated,
+        at_edge=damping in (0, gcv.shape[1] - 1),
     )
+
+
+def _lowest(values: Floats) -> tuple[int, int]:
+    curve, damping = np.unravel_index(int(np.argmin(values)), values.shape)
+    return int(curve), int(damping)

@@ -133,8 +133,8 @@ class Tradeoff:
         the fields ``sign_kept``, ``lowest_percent``, ``highest_percent``.
     agreement : Agreement
         What all equally good models have in common.
-    rule : {"cross-validation", "gcv"}
-        What decided.
+    validated : bool
+        Whether events left out had a say.
     at_edge : bool
         Whether the prior recommended lies at an end of the standard deviations tried.
     noise_scale : float
@@ -147,7 +147,7 @@ class Tradeoff:
     choices: tuple[CurveChoice, ...]
     model: SlownessModel
     agreement: Agreement
-    rule: str
+    validated: bool
     at_edge: bool
     noise_scale: float
     converged: bool
@@ -302,7 +302,7 @@ class _Sweep:
             choices=tuple(self._choices(curves, scores)),
             model=self._model(best, agreement),
             agreement=agreement,
-            rule=chosen.rule,
+            validated=chosen.validated,
             at_edge=chosen.at_edge,
             noise_scale=float(curves[chosen.curve].noise_scale[chosen.damping]),
             converged=all(curve.converged for curve in curves),
