@@ -8,7 +8,15 @@ import numpy as np
 import pytest
 
 from inversion_cases import SLOWNESS, Case, Floats, plain_settings, small_case
-from rayloom.inversion import InversionResult, InversionSettings, invert, linearise, solve
+from rayloom.inversion import (
+    InversionResult,
+    InversionSettings,
+    build_problem,
+    invert,
+    linearise,
+    solve,
+)
+from rayloom.inversion.prior_strength import choose_prior_strength
 from rayloom.model import SlownessModel
 
 TIGHT = {
@@ -75,3 +83,16 @@ def test_the_frozen_problem_knows_the_mean(case: Case) -> None:
     again = solve(problem.system, problem.right_hand_side, tolerance=1e-10, max_iterations=3000)
     change = np.linalg.norm(again.white - problem.white) / np.linalg.norm(problem.white)
     assert change < 1e-3
+
+
+def test_the_strength_of_the_prior_is_that_of_what_the_mean_leaves() -> None:
+    """As for data from which the mean's share was taken off by hand (linear algebra)."""
+    case = small_case(seed=4)
+    mean = another(case)
+    settings = InversionSettings.model_validate({"prior_mean": "starting_model"})
+    change = SLOWNESS * (case.forward.lengths @ mean)
+    shifted = replace(case.data, residual_s=case.data.residual_s - change)
+    about = build_problem(case.data, started_at(case, mean), settings, forward=case.forward)
+    plain = build_problem(shifted, case.model, InversionSettings(), forward=case.forward)
+    found = [choose_prior_strength(problem).factor for problem in (about, plain)]
+    assert found[0] == pytest.approx(found[1], rel=1e-3)

@@ -19,6 +19,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rayloom.inversion.forward_map import Report
+from rayloom.inversion.groups import block_matrix
 from rayloom.inversion.problem import Problem, TracedModel
 from rayloom.inversion.robust import LeastSquares, Rejecting
 from rayloom.inversion.system import WhitenedSystem, solve
@@ -126,10 +127,13 @@ def choose_prior_strength(problem: Problem, report: Report | None = None) -> Pri
 
 
 def _reference(problem: Problem) -> TracedModel:
-    """Explain the data by the reference model, with all terms at zero."""
+    """Explain the data by the prior's mean along the rays of the reference, terms at zero."""
     white = np.zeros(problem.unknown_count)
     reference = problem.model.with_slowness(problem.model.reference)
-    return problem.explain(white, reference, problem.reference_rays, problem.active)
+    start = problem.explain(white, reference, problem.reference_rays, problem.active)
+    paths = problem.reference_rays.path_lengths[problem.rows.ray]
+    share_s = block_matrix(paths, problem.model.reference.ravel()) @ problem.prior_mean
+    return replace(start, unexplained_s=start.unexplained_s - np.where(start.active, share_s, 0.0))
 
 
 def _robust_weights(problem: Problem, start: TracedModel) -> NDArray[np.float64]:
