@@ -84,16 +84,30 @@ def read(path: Path) -> SlownessModel:
     InputError
         If it is netCDF-4 but not a model.
     """
-    import xarray
-
     if not path.is_file():
         raise FileAccessError(f"{path}: there is no such file")
     try:
-        with xarray.open_dataset(path, engine=ENGINE, decode_times=False) as dataset:
-            dataset.load()
-    except (OSError, ValueError) as error:
-        raise FileAccessError(f"{path}: cannot be read as netCDF-4 ({error})") from error
+        dataset = _loaded(path)
+    except Exception as error:  # a damaged file makes the libraries raise almost anything
+        raise FileAccessError(
+            f"{path}: cannot be read as netCDF-4 ({error}); is it whole?"
+        ) from error
     try:
         return model_of(dataset)
     except InputError as error:
         raise InputError(str(error), where=str(path)) from error
+
+
+def _loaded(path: Path) -> xarray.Dataset:
+    import h5py  # type: ignore[import-untyped]
+    import xarray
+
+    def touch(_name: str, item: Any) -> None:
+        dict(item.attrs)
+
+    # A reader that fails half-way complains on the screen; damage is found here before.
+    with h5py.File(path, "r") as file:
+        touch("/", file)
+        file.visititems(touch)
+    with xarray.open_dataset(path, engine=ENGINE, decode_times=False) as dataset:
+        return dataset.load()
