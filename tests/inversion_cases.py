@@ -190,7 +190,13 @@ def residual_table(
 
 def plain_settings(**changes: object) -> InversionSettings:
     """Blocks only, least squares, no probes: the barest inversion."""
-    bare = {"station_terms": False, "mislocation": False, "robust": "none", "trace_probes": 0}
+    bare = {
+        "prior_std_percent": 2.0,
+        "station_terms": False,
+        "mislocation": False,
+        "robust": "none",
+        "trace_probes": 0,
+    }
     return InversionSettings.model_validate(bare | changes)
 
 

@@ -148,7 +148,9 @@ def test_wrong_settings_are_listed_with_line_and_key(files: SurveyFiles) -> None
     assert "inversion.max_iteration: is not a known key; did you mean 'max_iterations'?" in (
         result.stderr
     )
-    assert 'inversion.prior_std_percent: got "large", expected a number' in result.stderr
+    assert (
+        "inversion.prior_std_percent: got \"large\", expected 'auto' or a number" in result.stderr
+    )
     assert "line " in result.stderr
 
 

@@ -219,7 +219,7 @@ def test_a_missing_checkpoint_is_reported(tmp_path: Path) -> None:
 def test_progress_is_reported_and_may_interrupt(case: Case) -> None:
     stages = []
     run(case, progress=lambda stage, done, total: stages.append((stage, done, total)))
-    expected = {"tracing", "solving", "errors of station terms"}
+    expected = {"tracing", "choosing the prior", "solving", "errors of station terms"}
     assert {stage for stage, _, _ in stages} == expected
 
     def stop(stage: str, done: int, total: int) -> None:

@@ -54,7 +54,9 @@ def test_each_group_of_terms_can_be_left_out(term: str) -> None:
 @pytest.mark.parametrize("reject", [True, False])
 def test_every_kind_of_weight_runs(robust: str, reject: bool) -> None:
     case = with_gross_errors(small_case(stations=10, events=6), np.array([7]), 3.0)
-    settings = InversionSettings.model_validate({"robust": robust, "reject_outliers": reject})
+    settings = InversionSettings.model_validate(
+        {"robust": robust, "reject_outliers": reject, "prior_std_percent": 2.0}
+    )
     result = invert(case.data, case.model, settings, forward=case.forward)
     assert result.history[-1].variance_reduction_percent > 60.0
     if robust == "none":

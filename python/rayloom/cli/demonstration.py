@@ -10,15 +10,10 @@ import numpy as np
 
 from rayloom.demo import Body, BodyVerdict, DemoTruth, DemoVerdict, judge, write_survey
 from rayloom.errors import InputError
-from rayloom.inversion import InversionSettings
 from rayloom.model import SlownessModel
 from rayloom.workflow import Reporter, Tables, initialise, run, summarise
 
 _SURVEY: Final = "survey"
-
-_PRIOR: Final = InversionSettings(prior_std_percent=0.9)
-"""With this prior, misfit and prior together come near the number of data less that of
-event means, as they should; with the default of 2 % the model would fit noise."""
 
 
 def demonstrate(folder: Path, reporter: Reporter) -> str:
@@ -60,7 +55,7 @@ def demonstrate(folder: Path, reporter: Reporter) -> str:
         reporter.finish("demo", time.monotonic() - started)
     if not (folder / "rayloom.toml").exists():
         tables = Tables(survey / "stations.csv", survey / "events.csv", survey / "picks.csv")
-        initialise(folder, tables, inversion=_PRIOR, reporter=reporter)
+        initialise(folder, tables, reporter=reporter)
     run(folder, reporter=reporter)
     verdict = judge_run(folder, DemoTruth.read_json(truth_file))
     seconds = time.monotonic() - started

@@ -15,6 +15,7 @@ from rayloom.inversion.inverting import invert
 from rayloom.inversion.linearised import LinearisedProblem, linearise
 from rayloom.inversion.outer import run_outer_loop
 from rayloom.inversion.posterior import group_standard_deviation, posterior_variance
+from rayloom.inversion.prior_strength import PriorStrength, choose_prior_strength
 from rayloom.inversion.priors import (
     IndependentPrior,
     Prior,
@@ -61,6 +62,7 @@ __all__ = [
     "ParameterGroup",
     "Prediction",
     "Prior",
+    "PriorStrength",
     "Problem",
     "Report",
     "Solution",
@@ -72,6 +74,7 @@ __all__ = [
     "adopt_model",
     "block_prior",
     "build_problem",
+    "choose_prior_strength",
     "damping_smoothing_prior",
     "group_standard_deviation",
     "history_frame",

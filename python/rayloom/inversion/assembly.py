@@ -17,6 +17,7 @@ from rayloom.inversion.groups import (
     station_term_group,
     station_term_layout,
 )
+from rayloom.inversion.prior_strength import with_chosen_prior
 from rayloom.inversion.priors import SpectralPrior, damping_smoothing_prior, matern_prior
 from rayloom.inversion.problem import Problem, rays_exist, trace_with_report
 from rayloom.inversion.rows import DataRows, LeftOutGroup, rows_of_residuals
@@ -59,7 +60,7 @@ def build_problem(
     reference = model.with_slowness(model.reference)
     rays = trace_with_report(forward, reference, None, report)
     active, without_rays = _rows_with_rays(rows, rays_exist(rays)[rows.ray], settings)
-    return Problem(
+    problem = Problem(
         rows=rows,
         model=model,
         forward=forward,
@@ -70,6 +71,7 @@ def build_problem(
         active=active,
         left_out=(*left_out, *without_rays),
     )
+    return with_chosen_prior(problem, report) if settings.chooses_prior else problem
 
 
 def block_prior(grid: BlockGrid, settings: InversionSettings) -> SpectralPrior:
@@ -85,11 +87,10 @@ def block_prior(grid: BlockGrid, settings: InversionSettings) -> SpectralPrior:
             depth_coupling=coupling,
         )
     horizontal_km, vertical_km = settings.correlation_km
+    share = settings.starting_prior_std_percent / 100.0
     return matern_prior(
         grid,
-        standard_deviation=0.01
-        * settings.prior_std_percent
-        * factor_of_blocks(grid, settings.prior_factor_by_depth),
+        standard_deviation=share * factor_of_blocks(grid, settings.prior_factor_by_depth),
         horizontal_km=horizontal_km,
         vertical_km=vertical_km,
         depth_coupling=coupling,

@@ -13,6 +13,7 @@ from rayloom.inversion.measure import suspected_outliers
 from rayloom.inversion.outer import Outcome
 from rayloom.inversion.problem import Problem
 from rayloom.inversion.result import Counts, InversionResult
+from rayloom.inversion.settings import InversionSettings
 from rayloom.model import SlownessModel
 
 if TYPE_CHECKING:
@@ -73,9 +74,17 @@ def collect_result(data: Residuals, outcome: Outcome, finish: Finish) -> Inversi
             left_out_groups=problem.left_out,
         ),
         state=outcome.state,
+        prior_std_percent=_prior_std_percent(problem.settings),
+        prior_strength=problem.prior_strength,
         structure=finish.structure,
         uncertainty_factor=None if factor is None else in_table(factor, 1.0),
     )
+
+
+def _prior_std_percent(settings: InversionSettings) -> float:
+    if settings.prior != "correlated":
+        return float("nan")
+    return settings.starting_prior_std_percent
 
 
 def _with_coverage(problem: Problem, outcome: Outcome) -> SlownessModel:

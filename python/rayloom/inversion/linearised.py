@@ -99,6 +99,8 @@ def linearise(result: InversionResult, settings: InversionSettings) -> Linearise
     settings : InversionSettings
         The settings it was called with.
     """
+    if settings.chooses_prior:
+        settings = settings.with_prior_std_percent(result.prior_std_percent)
     rows, _ = rows_of_residuals(
         result.data,
         wave=result.model.wave,

@@ -65,6 +65,27 @@ class PriorStrength:
     at_limit: bool
 
 
+def with_chosen_prior(problem: Problem, report: Report | None = None) -> Problem:
+    """Return the problem with the standard deviation that its data favour.
+
+    Parameters
+    ----------
+    problem : Problem
+        Its settings leave the choice to the data.
+    report : callable, optional
+        Told ("choosing the prior", trial, trials at most).
+    """
+    strength = choose_prior_strength(problem, report)
+    start = problem.settings.starting_prior_std_percent
+    settings = problem.settings.with_prior_std_percent(float(f"{start * strength.factor:.3g}"))
+    return replace(
+        problem,
+        settings=settings,
+        block_prior=problem.block_prior.times(settings.starting_prior_std_percent / start),
+        prior_strength=strength,
+    )
+
+
 @dataclass(frozen=True)
 class _Trial:
     """One strength tried.

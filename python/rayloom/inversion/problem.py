@@ -9,6 +9,7 @@ from __future__ import annotations
 import hashlib
 import time
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -22,6 +23,9 @@ from rayloom.inversion.rows import DataRows, LeftOutGroup
 from rayloom.inversion.settings import InversionSettings
 from rayloom.inversion.system import WhitenedSystem
 from rayloom.model import SlownessModel
+
+if TYPE_CHECKING:
+    from rayloom.inversion.prior_strength import PriorStrength
 
 _LARGEST_RATIO = 2.0
 """Slowness over reference beyond which, or under whose inverse, no model is traced."""
@@ -79,6 +83,8 @@ class Problem:
         Rows with a ray in the reference model.
     left_out : tuple of LeftOutGroup
         Groups left out as a whole.
+    prior_strength : PriorStrength, optional
+        How the data chose the block prior's standard deviation; None where it was given.
     """
 
     rows: DataRows
@@ -90,6 +96,7 @@ class Problem:
     reference_rays: Prediction
     active: NDArray[np.bool_]
     left_out: tuple[LeftOutGroup, ...]
+    prior_strength: PriorStrength | None = None
 
     @property
     def unknown_count(self) -> int:

@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rayloom.inversion.forward_map import Prediction
+from rayloom.inversion.prior_strength import PriorStrength
 from rayloom.inversion.rows import LeftOutGroup
 from rayloom.inversion.state import InversionState, Iteration, history_frame
 from rayloom.inversion.structure import StructureDemand
@@ -90,6 +91,11 @@ class InversionResult:
     station_term_std_s : dict of str to (stations,) array
         Posterior standard deviations of ``station_terms_s`` for its last weights
         and rays and the uncertainties as they stand, s; empty if not worked out.
+    prior_std_percent : float
+        Standard deviation of the block prior, percent, before any factor by depth;
+        NaN where settings damp instead.
+    prior_strength : PriorStrength or None
+        How the data chose it; None where it was given.
     structure : StructureDemand or None
         Whether the data demand structure in the blocks; None if not worked out.
     uncertainty_factor : (rows,) array or None
@@ -115,6 +121,8 @@ class InversionResult:
     counts: Counts
     state: InversionState
     station_term_std_s: dict[str, NDArray[np.float64]] = field(default_factory=dict)
+    prior_std_percent: float = float("nan")
+    prior_strength: PriorStrength | None = None
     structure: StructureDemand | None = None
     uncertainty_factor: NDArray[np.float64] | None = None
 

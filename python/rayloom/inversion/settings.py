@@ -36,9 +36,10 @@ class InversionSettings(BaseModel):
         description="correlated: perturbations have the standard deviation and correlation "
         "lengths below; damping: classical damping and smoothing.",
     )
-    prior_std_percent: Positive = Field(
-        default=2.0,
-        description="Expected size of the perturbations: one standard deviation, percent.",
+    prior_std_percent: Literal["auto"] | Positive = Field(
+        default="auto",
+        description="Expected size of the perturbations: one standard deviation, percent; "
+        "auto: the value at which the data are most probable.",
     )
     correlation_km: tuple[Positive, Positive] = Field(
         default=(60.0, 60.0),
@@ -192,6 +193,20 @@ class InversionSettings(BaseModel):
     def rejects_outliers(self) -> bool:
         """Whether suspected outliers lose all weight in the end."""
         return self.reject_outliers and self.robust != "none"
+
+    @property
+    def starting_prior_std_percent(self) -> float:
+        """Standard deviation of the perturbations, percent; where the search starts for auto."""
+        return 1.0 if self.prior_std_percent == "auto" else self.prior_std_percent
+
+    @property
+    def chooses_prior(self) -> bool:
+        """Whether the data choose the standard deviation of the perturbations."""
+        return self.prior == "correlated" and self.prior_std_percent == "auto"
+
+    def with_prior_std_percent(self, std_percent: float) -> Self:
+        """Return the same settings with the standard deviation that was chosen."""
+        return self.model_copy(update={"prior_std_percent": std_percent})
 
     def station_term_std_of(self, wave: str) -> float:
         """Return the expected size of a wave's station terms, s (the other wave's if unset)."""

@@ -51,17 +51,19 @@ def describe_problems(
         ``line 12: inversion.damping: got "x", expected a number``; the line
         number is left out where the key does not appear in the text.
     """
-    described: dict[str, int] = {}
+    described: dict[str, tuple[int, str]] = {}
     entries = error.errors(include_url=False)
     for entry in entries:
         if entry["type"] == "too_short" and _is_consequence(entry["loc"], entries):
             continue
         keys = _key_path(entry["loc"], settings)
-        path = ".".join(keys)
         line = _line_of(keys, text)
-        where = f"line {line}: " if line else ""
-        described.setdefault(f"{where}{path}: {_sentence(entry, keys, settings)}", line or 0)
-    return sorted(described, key=lambda problem: described[problem])
+        where = (f"line {line}: " if line else "") + ".".join(keys)
+        sentence = _sentence(entry, keys, settings)
+        known = described.get(where)
+        described[where] = (line or 0, _joined(known[1], sentence) if known else sentence)
+    ordered = sorted(described.items(), key=lambda item: item[1][0])
+    return [f"{where}: {sentence}" for where, (_, sentence) in ordered]
 
 
 def closest(word: str, known: list[str]) -> str:
@@ -90,6 +92,14 @@ def _sentence(entry: Mapping[str, Any], keys: list[str], settings: type[BaseMode
         return str(context.get("error", entry["msg"]))
     expected = _EXPECTED.get(kind, _without_lead(entry["msg"]))
     return f"got {got}, expected {expected}"
+
+
+def _joined(first: str, second: str) -> str:
+    """Say once what several branches of a union expected of the same value."""
+    lead, _, expected = second.partition(", expected ")
+    if not expected or not first.startswith(f"{lead}, expected "):
+        return first if second in first else f"{first}; {second}"
+    return first if expected in first else f"{first} or {expected}"
 
 
 def _unknown_key(keys: list[str], settings: type[BaseModel]) -> str:
@@ -138,7 +148,11 @@ def _key_path(location: tuple[int | str, ...], settings: type[BaseModel]) -> lis
 def _is_branch(part: str) -> bool:
     """Tell whether a location part names a branch of a union, not a key."""
     names = ("float", "int", "str", "bool", "path", "dict", "list", "tuple", "none", "literal")
-    return part.split("[")[0] in names or "[" in part or part[:1].isupper()
+    return (
+        part.split("[")[0].removeprefix("constrained-") in names
+        or "[" in part
+        or part[:1].isupper()
+    )
 
 
 def _model_at(keys: list[str], settings: type[BaseModel]) -> type[BaseModel] | None:

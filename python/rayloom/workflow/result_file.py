@@ -21,6 +21,7 @@ from rayloom.inversion import (
     InversionState,
     Iteration,
     LeftOutGroup,
+    PriorStrength,
     StructureDemand,
 )
 from rayloom.model import BlockGrid, SlownessModel
@@ -60,6 +61,9 @@ def save_result(path: str | Path, result: InversionResult) -> None:
     arrays: dict[str, Any] = {name: getattr(result, name) for name in _ROW_ARRAYS}
     arrays |= {f"term_{phase}": terms for phase, terms in result.station_terms_s.items()}
     arrays |= {f"error_of_term_{phase}": std for phase, std in result.station_term_std_s.items()}
+    arrays["prior_std_percent"] = np.array(result.prior_std_percent)
+    if result.prior_strength is not None:
+        arrays["prior_strength"] = np.array(astuple(result.prior_strength), dtype=np.float64)
     if result.uncertainty_factor is not None:
         arrays["uncertainty_factor"] = result.uncertainty_factor
     if result.structure is not None:
@@ -132,6 +136,8 @@ def _result(arrays: dict[str, Any], data: Residuals, model: SlownessModel) -> In
         history=state.history,
         station_terms_s=_by_phase(arrays, "term_"),
         station_term_std_s=_by_phase(arrays, "error_of_term_"),
+        prior_std_percent=float(arrays["prior_std_percent"]),
+        prior_strength=_prior_strength(arrays),
         structure=(
             StructureDemand(*arrays["structure"].tolist()) if "structure" in arrays else None
         ),
@@ -142,6 +148,13 @@ def _result(arrays: dict[str, Any], data: Residuals, model: SlownessModel) -> In
         state=state,
         **{name: arrays[name] for name in _ROW_ARRAYS},
     )
+
+
+def _prior_strength(arrays: dict[str, Any]) -> PriorStrength | None:
+    if "prior_strength" not in arrays:
+        return None
+    factor, resolved, error_scale, trials, at_limit = arrays["prior_strength"].tolist()
+    return PriorStrength(factor, resolved, error_scale, int(trials), bool(at_limit))
 
 
 def _by_phase(arrays: dict[str, Any], prefix: str) -> dict[str, Any]:
