@@ -276,7 +276,7 @@ def _resampled(
     )
     return Resampled(
         shape=problem.model.grid.shape,
-        fractional=made["fractional"],
+        fractional=made["fractional"] + problem.prior_mean.astype(np.float32),
         mean_fractional=posterior_mean(problem, space)[: space.block_count],
         factor=factor,
     )

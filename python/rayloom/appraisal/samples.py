@@ -39,8 +39,8 @@ class Samples:
     fractional : (count, blocks) float32 array
         Fractional slowness perturbations of each sample.
     prior_draws : (count, blocks) float32 array
-        The draw of the prior that each sample was made from: what it would be
-        without data.
+        The draw of the prior that each sample was made from, about the prior's mean:
+        what it would be without data.
     mean_fractional : (blocks,) array
         Mean of the posterior.
     prior_std : (blocks,) array
@@ -198,9 +198,11 @@ def posterior_samples(
 
 def posterior_mean(problem: LinearisedProblem, space: RowSpace) -> Floats:
     """Parameters of all groups that the linearised inversion finds, (parameters,)."""
-    return space.estimate(
+    mean = space.estimate(
         problem.right_hand_side[:, None], tolerance=0.1 * TOLERANCE, max_iterations=MOST_ITERATIONS
     )[:, 0]
+    mean[: space.block_count] += problem.prior_mean
+    return mean
 
 
 def block_prior_std(problem: LinearisedProblem) -> Floats:
