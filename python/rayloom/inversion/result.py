@@ -21,6 +21,9 @@ if TYPE_CHECKING:
     from rayloom.residuals import Residuals
 
 
+_NOTABLE_ERROR_SCALE = 1.15
+
+
 @dataclass(frozen=True)
 class Counts:
     """How many rows the last model explains, and what is left out.
@@ -131,6 +134,27 @@ class InversionResult:
         """Uncertainties that the last model assumes, (rows,), s."""
         given = np.asarray(self.data.uncertainty_s, dtype=np.float64)
         return given if self.uncertainty_factor is None else given * self.uncertainty_factor
+
+    def prior_sentence(self) -> str:
+        """Tell how large perturbations were believed to be, and who chose that size.
+
+        Returns
+        -------
+        str
+            Without a full stop; empty for a prior of damping and smoothing.
+        """
+        if not np.isfinite(self.prior_std_percent):
+            return ""
+        size = f"prior standard deviation {self.prior_std_percent:g} %"
+        strength = self.prior_strength
+        if strength is None:
+            return f"{size}, as given"
+        sentence = f"{size}, at which the data are most probable"
+        if strength.at_limit:
+            sentence += " of the range searched: set prior_std_percent by hand"
+        if strength.error_scale > _NOTABLE_ERROR_SCALE:
+            sentence += f"; errors seem {strength.error_scale:.1f} times the stated uncertainties"
+        return sentence
 
     def history_frame(self) -> pd.DataFrame:
         """Return the history as a table, one row per iteration.

@@ -188,6 +188,7 @@ def _outcome(result: InversionResult) -> list[tuple[str, str]]:
             "χ² without suspected outliers",
             f"{last.chi2_kept:.0f}{_expected(last.chi2_kept_expected)}",
         ),
+        ("Prior", result.prior_sentence() or "damping and smoothing, as given"),
         (
             "Perturbation in blocks crossed by rays",
             f"RMS {last.model_rms_percent:.2f} %, from {seen.min():.1f} % to "

@@ -15,14 +15,12 @@ import numpy as np
 
 from rayloom.earth import ReferenceEarth
 from rayloom.errors import InputError
-from rayloom.inversion import InversionSettings
 from rayloom.model import suggest_grid
 from rayloom.outputs.atomic import replacing, write_text
 from rayloom.residuals import Residuals, ResidualSettings
 from rayloom.settings import (
     EarthSettings,
     InputSettings,
-    RunInversionSettings,
     RunSettings,
     run_settings_text,
 )
@@ -48,7 +46,6 @@ def initialise(
     earth: str = "ak135",
     copy: bool = False,
     force: bool = False,
-    inversion: InversionSettings | None = None,
     reporter: Reporter | None = None,
 ) -> RunFolder:
     """Make a run folder.
@@ -65,8 +62,6 @@ def initialise(
         Copy the tables into the folder instead of naming them where they are.
     force : bool
         Overwrite settings that are there already.
-    inversion : InversionSettings, optional
-        Settings of the inversion other than the defaults.
     reporter : Reporter, optional
         Hears what was read and why the grid is as it is.
 
@@ -96,9 +91,6 @@ def initialise(
     started = time.monotonic()
     reporter.begin("init", "reading the tables")
     settings = _suggested_settings(folder, tables, earth, copy, reporter)
-    if inversion is not None:
-        chosen = RunInversionSettings.model_validate(inversion.model_dump())
-        settings = settings.model_copy(update={"inversion": chosen})
     if copy:
         _copy(tables, folder)
     write_text(

@@ -73,6 +73,9 @@ def run_inversion(
             reporter.note(f"{count} rays missing: {problem}")
     reporter.note(f"stopped: {result.stopped_because}")
     remarks = {"stopped_because": result.stopped_because}
+    if result.prior_sentence():
+        remarks["prior"] = result.prior_sentence()
+        reporter.note(remarks["prior"])
     if result.structure is not None:
         remarks["structure"] = result.structure.sentence()
         reporter.note(remarks["structure"])

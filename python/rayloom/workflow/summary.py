@@ -113,7 +113,7 @@ def _model_lines(folder: RunFolder, remarks: Mapping[str, str]) -> list[tuple[st
             f"{int(last['iteration'])} iterations, perturbation rms "
             f"{last['model_rms_percent']:.2f} %, relative to the regional mean",
         ),
-        *([("", remarks["structure"])] if "structure" in remarks else []),
+        *[("", remarks[name]) for name in ("prior", "structure") if name in remarks],
         ("stopped", remarks.get("stopped_because", "")),
     ]
 
