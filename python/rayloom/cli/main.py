@@ -13,6 +13,7 @@ import click
 
 from rayloom import __version__
 from rayloom.cli.beginning import demo, init
+from rayloom.cli.checking import check
 from rayloom.cli.guard import GuardedGroup
 from rayloom.cli.importing import import_model
 from rayloom.cli.running import run
@@ -41,7 +42,18 @@ def main() -> None:
     """
 
 
-COMMANDS: Final = (demo, init, run, residuals, invert, tradeoff, export, import_model, ratio)
+COMMANDS: Final = (
+    demo,
+    init,
+    check,
+    run,
+    residuals,
+    invert,
+    tradeoff,
+    export,
+    import_model,
+    ratio,
+)
 """All commands in the order of the work."""
 
 for command in COMMANDS:

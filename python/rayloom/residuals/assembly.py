@@ -8,6 +8,7 @@ import numpy as np
 
 from rayloom.earth import ReferenceEarth, phase_wave
 from rayloom.errors import InputError
+from rayloom.residuals.choices import apply_choices, unmatched_names
 from rayloom.residuals.crust import StationCrust
 from rayloom.residuals.exclusions import Exclusions, Selection
 from rayloom.residuals.prediction import Geometry, Prediction, pair_geometry, predict
@@ -187,7 +188,12 @@ def _assembled(
         elevation_s=prediction.elevation_s,
         crust_s=prediction.crust_s,
         excluded=excluded,
-        notices=[*notices, *window_notices(settings), *lost],
+        notices=[
+            *notices,
+            *window_notices(settings),
+            *unmatched_names(readings, stations, events, settings),
+            *lost,
+        ],
     )
 
 
@@ -226,10 +232,11 @@ def screen_readings(
     Screened
     """
     selection = Selection(len(readings))
+    apply_choices(selection, readings, stations, events, settings)
     phase = readings.phase
     geometry = pair_geometry(events, stations, readings.event_index, readings.station_index)
     screen_phases(selection, phase, settings)
-    known = selection.kept.copy()
+    known = np.isin(phase, list(settings.windows_deg))
     screen_distances(selection, phase, geometry.distance_deg, settings)
     prediction = _predicted_where(
         known if everywhere else selection.kept,

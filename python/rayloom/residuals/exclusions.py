@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections import Counter
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
@@ -29,8 +29,8 @@ class Exclusions(ColumnTable):
     event, network, station, phase : (n,) str arrays
         The pick.
     reason : (n,) str array
-        Code: ``unknown_phase``, ``outside_distance_window``, ``no_arrival``,
-        ``too_few_picks``, ``conflicting_rows`` or ``gross_residual``.
+        Code: ``dropped_by_settings``, ``unknown_phase``, ``outside_distance_window``,
+        ``no_arrival``, ``too_few_picks``, ``conflicting_rows`` or ``gross_residual``.
     detail : (n,) str array
         The reason in words, with its numbers.
     """
@@ -80,6 +80,10 @@ class Exclusions(ColumnTable):
         write_frame(self.to_frame(), path)
 
 
+OVERRIDABLE: Final = ("outside_distance_window", "gross_residual")
+"""Reasons that do not count for what a person asks to keep."""
+
+
 class Selection:
     """Which rows are still in, and why the others are not.
 
@@ -93,6 +97,17 @@ class Selection:
         self.kept: BoolArray = np.ones(count, dtype=bool)
         self.reason: list[str] = [""] * count
         self.detail: list[str] = [""] * count
+        self.protected: BoolArray = np.zeros(count, dtype=bool)
+
+    def protect(self, rows: BoolArray) -> None:
+        """Keep rows from being left out for a limit that a person may override.
+
+        Parameters
+        ----------
+        rows : (n,) bool array
+            The rows. Reasons of :data:`OVERRIDABLE` pass them by.
+        """
+        self.protected = self.protected | rows
 
     def leave_out(self, rows: BoolArray, reason: str, detail: list[str]) -> None:
         """Leave out rows that are still in.
@@ -106,8 +121,9 @@ class Selection:
         detail : list of str
             One sentence for each row marked.
         """
+        spared = self.protected & (reason in OVERRIDABLE)
         for row, text in zip(np.flatnonzero(rows).tolist(), detail, strict=True):
-            if self.kept[row]:
+            if self.kept[row] and not spared[row]:
                 self.reason[row] = reason
                 self.detail[row] = text
                 self.kept[row] = False

@@ -126,7 +126,7 @@ def _screen_gross(
     """Leave out gross residuals; medians are taken anew until none is left."""
     while True:
         relative_s = _relative_s(selection.kept, group, residual_s)
-        gross = np.abs(relative_s) > limit_s
+        gross = (np.abs(relative_s) > limit_s) & ~selection.protected
         if not gross.any():
             return
         detail = [

@@ -46,6 +46,12 @@ class ResidualSettings(BaseModel):
     max_residual_s : float
         Picks further than this from the median of their group, in s, are left
         out as gross errors.
+    drop_stations, drop_events, drop_picks : tuple of str
+        What is left out by name: stations ``NET.STA``, events, picks
+        ``EVENT NET.STA PHASE``.
+    keep : tuple of str
+        Events, stations or picks that count although they lie outside the distance window or
+        are gross errors by ``max_residual_s``.
     summary_distance_km : float, optional
         Events whose hypocentres all lie within this of each other, in km, enter the
         inversion as one, with one summary residual per station and phase
@@ -74,6 +80,18 @@ class ResidualSettings(BaseModel):
         default=5.0,
         gt=0.0,
         description="picks further than this from their group's median are left out, in s",
+    )
+    drop_stations: tuple[str, ...] = Field(
+        default=(), description="stations to leave out, as NET.STA"
+    )
+    drop_events: tuple[str, ...] = Field(default=(), description="events to leave out")
+    drop_picks: tuple[str, ...] = Field(
+        default=(), description="picks to leave out, as 'EVENT NET.STA PHASE'"
+    )
+    keep: tuple[str, ...] = Field(
+        default=(),
+        description="events, stations or picks that count although they lie outside the window "
+        "or beyond max_residual_s",
     )
 
     summary_distance_km: float | None = Field(
@@ -108,6 +126,11 @@ class ResidualSettings(BaseModel):
                     "expected distance_min_deg below distance_max_deg"
                 )
         return self
+
+    @property
+    def chosen_names(self) -> tuple[str, ...]:
+        """All names in the lists of what to drop and keep."""
+        return self.drop_stations + self.drop_events + self.drop_picks + self.keep
 
     @property
     def windows_deg(self) -> dict[str, tuple[float, float]]:

@@ -23,6 +23,7 @@ from rayloom.inversion.tradeoff import TradeoffSettings
 from rayloom.model import BlockGrid, GridSettings
 from rayloom.outputs import OutputSettings
 from rayloom.residuals import ResidualSettings
+from rayloom.residuals.screens import CheckSettings
 from rayloom.survey import SurveySettings
 
 TRACING_KEYS: Final = ("method", "quality", "threads")
@@ -141,7 +142,7 @@ class RunSettings(BaseModel):
 
     Attributes
     ----------
-    inputs, earth, survey, residuals, grid, forward, inversion, tradeoff, outputs : settings
+    inputs, earth, survey, residuals, check, grid, forward, inversion, tradeoff, outputs : settings
         In the order of the work.
     """
 
@@ -151,6 +152,7 @@ class RunSettings(BaseModel):
     earth: EarthSettings = Field(default_factory=EarthSettings)
     survey: SurveySettings = Field(default_factory=SurveySettings)
     residuals: ResidualSettings = Field(default_factory=ResidualSettings)
+    check: CheckSettings = Field(default_factory=CheckSettings)
     grid: GridSettings
     forward: ForwardSettings = Field(default_factory=ForwardSettings)
     inversion: RunInversionSettings = Field(

@@ -6,12 +6,12 @@ The main type is :class:`Evidence`.
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from pathlib import Path
 
 import numpy as np
 
 from rayloom.earth import ReferenceEarth, phase_wave
 from rayloom.residuals.assembly import Screened, screen_readings
+from rayloom.residuals.crust import StationCrust
 from rayloom.residuals.prediction import Geometry
 from rayloom.residuals.readings import (
     Readings,
@@ -21,6 +21,7 @@ from rayloom.residuals.readings import (
 )
 from rayloom.residuals.settings import USUAL_WINDOWS_DEG, ResidualSettings
 from rayloom.survey import Events, Notice, Stations, Survey, SurveySettings
+from rayloom.survey.formats import Source
 from rayloom.survey.tables import BoolArray, FloatArray, IndexArray, TextArray
 
 NO_WAVE = ""
@@ -106,7 +107,11 @@ class Evidence:
 
 
 def evidence_of_survey(
-    survey: Survey, earth: ReferenceEarth, settings: ResidualSettings | None = None
+    survey: Survey,
+    earth: ReferenceEarth,
+    settings: ResidualSettings | None = None,
+    *,
+    crust: StationCrust | None = None,
 ) -> Evidence:
     """Gather the evidence of a survey's picks.
 
@@ -118,19 +123,27 @@ def evidence_of_survey(
         The Earth of the predictions.
     settings : ResidualSettings, optional
         Windows and limits.
+    crust : StationCrust, optional
+        Crust below stations, part of the predicted times.
 
     Returns
     -------
     Evidence
     """
-    readings = travel_times_of(survey)
     return _evidence(
-        readings, survey.stations, survey.events, earth, settings, survey.notices, ready=False
+        travel_times_of(survey),
+        survey.stations,
+        survey.events,
+        earth,
+        settings,
+        survey.notices,
+        ready=False,
+        crust=crust,
     )
 
 
 def evidence_of_residuals(
-    path: str | Path,
+    path: Source,
     stations: Stations,
     events: Events,
     earth: ReferenceEarth,
@@ -142,8 +155,8 @@ def evidence_of_residuals(
 
     Parameters
     ----------
-    path : str or Path
-        The file (CSV), as for :func:`rayloom.residuals.read_residuals`.
+    path : path or sequence of paths
+        The files (CSV), as for :func:`rayloom.residuals.read_residuals`.
     stations, events : Stations, Events
         Tables that the residuals refer to.
     earth : ReferenceEarth
@@ -180,11 +193,12 @@ def _evidence(
     notices: list[Notice],
     *,
     ready: bool,
+    crust: StationCrust | None = None,
 ) -> Evidence:
     settings = settings or ResidualSettings()
     readings = with_usual_names(readings)
     screened = screen_readings(
-        readings, stations, events, earth, settings, ready=ready, everywhere=True
+        readings, stations, events, earth, settings, ready=ready, everywhere=True, crust=crust
     )
     return evidence_of_screened(
         readings, screened, stations, events, earth, settings, ready=ready, notices=notices

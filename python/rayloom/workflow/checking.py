@@ -1,0 +1,82 @@
+"""Looking a run folder's tables through before any inversion.
+
+The main function is :func:`check`.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Final
+
+from rayloom.residuals.screens import (
+    Evidence,
+    Finding,
+    evidence_of_residuals,
+    evidence_of_survey,
+    screen,
+    write_findings_csv,
+)
+from rayloom.settings import RunSettings
+from rayloom.survey import Notice, read_events, read_stations, read_survey
+from rayloom.workflow.data import Tables, read_earth, station_crust
+from rayloom.workflow.folder import RunFolder
+from rayloom.workflow.reporting import Reporter
+
+FINDINGS_FILE: Final = "findings.csv"
+
+
+def check(path: str | Path, *, reporter: Reporter | None = None) -> list[Finding]:
+    """Look for what is wrong or suspicious in the tables of a run folder.
+
+    Residuals are computed from the tables, those left out included; nothing else of the
+    folder is needed, and nothing of it is changed but ``findings.csv``.
+
+    Parameters
+    ----------
+    path : str or pathlib.Path
+        The run folder.
+    reporter : Reporter, optional
+        Hears what happens.
+
+    Returns
+    -------
+    list of Finding
+        Gravest first.
+
+    Raises
+    ------
+    InputError
+        If the settings or a table cannot be read.
+    """
+    reporter = reporter or Reporter()
+    folder = RunFolder.at(path).run
+    settings = folder.read_settings()
+    reporter.begin("check", "reading the tables")
+    evidence = _evidence(folder, settings)
+    reporter.note(f"looking through {len(evidence)} arrivals")
+    findings = screen(evidence, settings.check)
+    write_findings_csv(folder.file(FINDINGS_FILE), findings)
+    return findings
+
+
+def _evidence(folder: RunFolder, settings: RunSettings) -> Evidence:
+    tables = Tables.of(folder, settings)
+    earth = read_earth(folder, settings.earth.model)
+    if tables.picks is not None:
+        survey = read_survey(
+            stations=tables.stations,
+            events=tables.events,
+            picks=tables.picks,
+            settings=settings.survey,
+        )
+        crust = station_crust(tables, survey.stations)
+        return evidence_of_survey(survey, earth, settings.residuals, crust=crust)
+    notices: list[Notice] = []
+    return evidence_of_residuals(
+        tables.residuals or (),
+        read_stations(tables.stations, notices=notices),
+        read_events(tables.events, notices=notices),
+        earth,
+        settings.residuals,
+        survey_settings=settings.survey,
+    )
