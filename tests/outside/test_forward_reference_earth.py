@@ -58,7 +58,8 @@ def test_the_reference_model_gives_back_the_times_of_the_one_dimensional_earth(e
     """First arrivals of ak135 (Kennett, Engdahl & Buland 1995) through the earth room.
 
     Blocks stand for the layers inside the box, so times agree to the blocks' averaging
-    and the tracer's error at its standard quality.
+    and the tracer's error at its standard quality: without the means of the events within
+    2 ms (standard deviation) and 8 ms (largest).
     """
     random = np.random.default_rng(20)
     frame = rl.Frame(longitude=66.0, latitude=-40.0, azimuth_deg=25.0)
@@ -74,7 +75,8 @@ def test_the_reference_model_gives_back_the_times_of_the_one_dimensional_earth(e
     assert difference.min() > -0.002
     assert difference.max() < 0.06
     relative = difference - difference.mean(axis=1, keepdims=True)
-    assert relative.std() < 0.012
+    assert relative.std() < 0.002
+    assert np.abs(relative).max() < 0.008
 
 
 def test_entries_lie_on_the_base_or_the_sides_and_times_add_up(earth):

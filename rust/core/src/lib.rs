@@ -26,4 +26,5 @@ pub mod rays;
 pub mod relax;
 pub mod search;
 pub mod tracer;
+pub mod undisturbed;
 pub mod vec3;

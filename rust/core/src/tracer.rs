@@ -14,6 +14,7 @@ use crate::path::Path;
 use crate::search::backtrack::trace_back;
 use crate::search::coarse::{CoarseField, CoarseSearch};
 use crate::search::fine::{Bound, FineField, FineSearch, Start, SurfaceStart};
+use crate::undisturbed::{undisturbed_leg, undisturbed_ray};
 use crate::vec3::Vec3;
 
 /// Added to the slack of a fine search that found nothing (block transits).
@@ -27,8 +28,6 @@ const FACE_SAG: f64 = 0.01;
 const LEG_STRETCH: f64 = 1.25;
 /// … plus this many block transits.
 const LEG_MARGIN: f64 = 2.0;
-/// Steps of the integral for the undisturbed time.
-const LEG_STEPS: usize = 24;
 
 /// Flatness beyond which graphs get more nodes …
 const FLAT_BLOCKS: f64 = 1.4;
@@ -284,29 +283,43 @@ impl<'a, C: Chart> Tracer<'a, C> {
             Beginning::Wave { incoming, .. } => Some(incoming),
             Beginning::Point(_) | Beginning::Nowhere => None,
         });
-        let graph_time = path.time(self.blocks);
-        workspace.refiner.refine(&mut path, self.quality.first);
+        let refiner = &mut workspace.refiner;
+        let graph_s = path.time(self.blocks);
+        let graph_total_s = refiner.total_time(&path);
+        refiner.refine(&mut path, self.quality.first);
+        if let Beginning::Wave { incoming, .. } = beginning
+            && let Some(mut other) = undisturbed_ray(self.blocks, incoming, receiver)
+        {
+            refiner.refine(&mut other, self.quality.first);
+            if refiner.total_time(&other) < refiner.total_time(&path) {
+                path = other;
+            }
+        }
+        let gain = graph_total_s - refiner.total_time(&path);
+        let graph_share = 1.0 - gain / graph_s;
+        let mut found = None;
         if let Some(fine) = &self.fine {
-            let better = [0.0, RETRY_SLACK].iter().find_map(|extra| {
+            found = [0.0, RETRY_SLACK].iter().find_map(|extra| {
                 let slack_s = (self.quality.slack + extra) * self.transit_s;
                 self.search_again(
                     fine,
                     receiver,
                     beginning,
                     &path,
-                    (graph_time, slack_s),
+                    (graph_share, slack_s),
                     workspace,
                 )
             });
-            if let Some(mut better) = better {
-                workspace.refiner.settle(&mut better);
-                if workspace.refiner.total_time(&better) < workspace.refiner.total_time(&path) {
-                    path = better;
-                }
+        }
+        let refiner = &mut workspace.refiner;
+        refiner.refine(&mut path, self.quality.last);
+        if let Some(mut other) = found {
+            refiner.refine(&mut other, self.quality.last);
+            if refiner.total_time(&other) < refiner.total_time(&path) {
+                path = other;
             }
         }
-        workspace.refiner.refine(&mut path, self.quality.last);
-        let outside_time_s = workspace.refiner.outside_time(&path);
+        let outside_time_s = refiner.outside_time(&path);
         outside_time_s.is_finite().then_some(Ray {
             path,
             outside_time_s,
@@ -341,12 +354,12 @@ impl<'a, C: Chart> Tracer<'a, C> {
         receiver: Vec3,
         beginning: Beginning<'_>,
         present: &Path,
-        (graph_time, slack_s): (f64, f64),
+        (graph_share, slack_s): (f64, f64),
         workspace: &mut Workspace<'_, C>,
     ) -> Option<Path> {
         let inside = present.time(self.blocks);
         let stretched = inside * (1.0 + self.fine_bias);
-        let scale = (stretched / graph_time) as f32;
+        let scale = (graph_share * (1.0 + self.fine_bias)) as f32;
         let mut limit_s = stretched + slack_s;
         let start = match beginning {
             Beginning::Nowhere => return None,
@@ -371,18 +384,4 @@ impl<'a, C: Chart> Tracer<'a, C> {
         };
         fine.run(start, receiver, bound, &mut workspace.fine)
     }
-}
-
-/// Time (s) of the undisturbed wave from the depth `base` (km) up to a
-/// receiver, along a ray of the slowness vector found below the receiver:
-/// dt/dz = |∇T|² / |∂T/∂z|.
-fn undisturbed_leg(incoming: &dyn Incoming, receiver: Vec3, base: f64) -> Option<f64> {
-    let step = (base - receiver[2]) / LEG_STEPS as f64;
-    let mut time = 0.0;
-    for k in 0..LEG_STEPS {
-        let depth = receiver[2] + step * (k as f64 + 0.5);
-        let gradient = incoming.at([receiver[0], receiver[1], depth])?.gradient;
-        time += step * crate::vec3::dot(gradient, gradient) / gradient[2].abs();
-    }
-    Some(time)
 }
