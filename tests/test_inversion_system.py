@@ -191,3 +191,21 @@ def test_products_have_the_same_bits_on_any_number_of_threads() -> None:
         results.append((products.times(x).tobytes(), products.transposed_times(y).tobytes()))
     assert results[0] == results[1] == results[2]
     np.testing.assert_allclose(np.frombuffer(results[0][1]), matrix.T @ y, rtol=1e-12, atol=1e-13)
+
+
+@pytest.mark.parametrize("damping", [1.0, 0.3])
+def test_a_start_changes_the_way_but_not_the_end(damping: float) -> None:
+    """The whole of z stays penalised, as dense normal equations have it; fewer steps from near."""
+    small = small_system()
+    data = small.system.whiten_rows(np.random.default_rng(2).standard_normal(ROWS))
+    unknowns = small.system.shape[1]
+    whole = np.column_stack([small.system.times(column) for column in np.eye(unknowns)])
+    normal = whole.T @ whole + damping**2 * np.eye(unknowns)
+    expected = np.linalg.solve(normal, whole.T @ data)
+    options = {"tolerance": 1e-13, "max_iterations": 5000, "damping": damping}
+    start = np.random.default_rng(9).standard_normal(unknowns)
+    far = solve(small.system, data, start=start, **options)
+    near = solve(small.system, data, start=expected + 1e-9 * start, **options)
+    for found in (far, near):
+        np.testing.assert_allclose(found.white, expected, atol=1e-9 * np.abs(expected).max())
+    assert near.iterations < solve(small.system, data, **options).iterations

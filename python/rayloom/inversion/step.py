@@ -105,7 +105,14 @@ def plan_step(
     target = current.unexplained_s + system.seconds(current.white)
     weights = problem.fit(current.unexplained_s, current.active, loss).weights
     solution, fit = _solve_in_rounds(
-        problem, system, target, weights, active=current.active, loss=loss, report=report
+        problem,
+        system,
+        target,
+        weights,
+        current=current.white,
+        active=current.active,
+        loss=loss,
+        report=report,
     )
     before = _objective(problem, current, current.active, loss, fit.scale)
     after = fit.misfit + float(solution.white @ solution.white)
@@ -126,13 +133,18 @@ def _solve_in_rounds(
     target_s: NDArray[np.float64],
     weights: NDArray[np.float64],
     *,
+    current: NDArray[np.float64],
     active: NDArray[np.bool_],
     loss: RobustLoss,
     report: Report | None,
 ) -> tuple[Solution, RobustFit]:
-    """Solve and weight by turns; all but the last round are solved loosely."""
+    """Solve and weight by turns, each round from the solution of the last one.
+
+    All but the last round are solved loosely.
+    """
     settings = problem.settings
     steps = 0
+    start = current
 
     def tell(step: int) -> None:
         if report is not None and step % _REPORT_EVERY == 0:
@@ -147,8 +159,10 @@ def _solve_in_rounds(
             weighted.whiten_rows(target_s),
             tolerance=settings.solver_tolerance * (_EARLY_ROUND_LOOSENING if left else 1.0),
             max_iterations=settings.solver_max_iterations,
+            start=start,
             step=tell,
         )
+        start = found.white
         steps += found.iterations
         fit = problem.fit(target_s - system.seconds(found.white), active, loss)
         if not left:

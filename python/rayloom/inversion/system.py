@@ -132,9 +132,17 @@ def solve(
     tolerance: float,
     max_iterations: int,
     damping: float = 1.0,
+    start: NDArray[np.float64] | None = None,
     step: Callable[[int], None] | None = None,
 ) -> Solution:
     """Minimise ‖Ã z − d̃‖² + damping² ‖z‖² by LSQR.
+
+    With r the residual of the stacked system [Ã; damping I], two rules stop it:
+    ‖[Ã; damping I]ᵀ r‖ ≤ tolerance ‖Ã‖ ‖r‖, the usual end, and
+    ‖r‖ ≤ tolerance (‖d̃‖ + ‖Ã‖ ‖z‖), which only data without noise meet; ‖Ã‖ is
+    the running estimate of the bidiagonalisation. A start solves for the
+    correction to it in the stacked system, under the same rules: the penalty is
+    still that of the whole of z.
 
     Parameters
     ----------
@@ -148,6 +156,9 @@ def solve(
         Most steps.
     damping : float, optional
         1 for the prior as it stands; λ for standard deviations divided by λ.
+    start : (unknowns,) array, optional
+        Where to start from, the solution of a similar system for instance; zero
+        if not given.
     step : callable, optional
         Told the number of each step.
 
@@ -156,8 +167,13 @@ def solve(
     Paige, C. C. & Saunders, M. A. (1982). LSQR: an algorithm for sparse linear
     equations and sparse least squares. ACM Trans. Math. Softw. 8, 43-71.
     """
+    operator = _linear_operator(system, step)
+    if start is not None and np.any(start):
+        operator = _stacked(operator, damping)
+        right_hand_side = np.append(right_hand_side - system.times(start), -damping * start)
+        damping = 0.0
     found = lsqr(
-        _linear_operator(system, step),
+        operator,
         right_hand_side,
         damp=damping,
         atol=tolerance,
@@ -167,7 +183,7 @@ def solve(
     )
     stop = int(found[1])
     return Solution(
-        white=found[0],
+        white=found[0] if start is None else start + found[0],
         iterations=int(found[2]),
         converged=stop not in (3, 6, 7),
         reason=_SOLVER_REASONS[stop],
@@ -188,6 +204,19 @@ def _linear_operator(system: WhitenedSystem, step: Callable[[int], None] | None)
         shape=system.shape,
         matvec=times,
         rmatvec=lambda rows: system.transposed_times(rows.ravel()),
+        dtype=np.float64,
+    )
+
+
+def _stacked(operator: LinearOperator, damping: float) -> LinearOperator:
+    """Join [Ã; damping I]."""
+    rows, unknowns = operator.shape
+    return LinearOperator(
+        shape=(rows + unknowns, unknowns),
+        matvec=lambda white: np.append(operator.matvec(white), damping * white),
+        rmatvec=lambda stacked: (
+            operator.rmatvec(stacked.ravel()[:rows]) + damping * stacked.ravel()[rows:]
+        ),
         dtype=np.float64,
     )
 
