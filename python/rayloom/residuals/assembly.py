@@ -11,6 +11,7 @@ from rayloom.errors import InputError
 from rayloom.residuals.choices import apply_choices, unmatched_names
 from rayloom.residuals.crust import StationCrust
 from rayloom.residuals.exclusions import Exclusions, Selection
+from rayloom.residuals.groups import group_numbers, relative_to_median_s
 from rayloom.residuals.prediction import Geometry, Prediction, pair_geometry, predict
 from rayloom.residuals.readings import (
     Readings,
@@ -139,6 +140,56 @@ def read_residuals(
     )
 
 
+def residuals_of_readings(
+    readings: Readings,
+    stations: Stations,
+    events: Events,
+    earth: ReferenceEarth,
+    settings: ResidualSettings | None = None,
+    *,
+    crust: StationCrust | None = None,
+    relative: bool = False,
+) -> Residuals:
+    """Turn travel times into residuals.
+
+    Parameters
+    ----------
+    readings : Readings
+        Travel times, s.
+    stations, events : Stations, Events
+        The tables that they refer to.
+    earth : ReferenceEarth
+        The Earth of the predictions.
+    settings : ResidualSettings, optional
+        Distance windows, corrections, limits.
+    crust : StationCrust, optional
+        Crust below stations.
+    relative : bool
+        Whether the times of each group (event, phase) have a level of their own, so that
+        only their differences count; the median residual of each group is then zero.
+
+    Returns
+    -------
+    Residuals
+
+    Raises
+    ------
+    InputError
+        If no residual is left.
+    """
+    return _assembled(
+        readings,
+        stations,
+        events,
+        earth,
+        settings or ResidualSettings(),
+        ready=False,
+        notices=[],
+        crust=crust,
+        relative=relative,
+    )
+
+
 @dataclass(frozen=True)
 class Screened:
     """Readings with what was computed beside them, and which of them are still in."""
@@ -159,6 +210,7 @@ def _assembled(
     ready: bool,
     notices: list[Notice],
     crust: StationCrust | None,
+    relative: bool = False,
 ) -> Residuals:
     readings = with_usual_names(readings)
     screened = screen_readings(
@@ -169,6 +221,9 @@ def _assembled(
     kept = screened.selection.kept
     used, geometry = readings.select(kept), screened.geometry.select(kept)
     prediction = screened.prediction.select(kept)
+    residual_s = screened.residual_s[kept]
+    if relative:
+        residual_s = relative_to_median_s(residual_s, group_numbers(used.event_index, used.phase))
     lost = _lost_events(screened.selection, readings, events)
     return Residuals(
         stations=stations,
@@ -178,7 +233,7 @@ def _assembled(
         station_index=used.station_index,
         phase=used.phase,
         wave=np.array([phase_wave(name) for name in used.phase.tolist()], dtype=np.str_),
-        residual_s=screened.residual_s[kept],
+        residual_s=residual_s,
         uncertainty_s=used.uncertainty_s,
         distance_deg=geometry.distance_deg,
         azimuth_deg=geometry.azimuth_deg,
