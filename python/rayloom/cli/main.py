@@ -12,6 +12,7 @@ from typing import Final
 import click
 
 from rayloom import __version__
+from rayloom.cli.appraise import appraise
 from rayloom.cli.beginning import demo, init
 from rayloom.cli.checking import check
 from rayloom.cli.guard import GuardedGroup
@@ -50,6 +51,7 @@ COMMANDS: Final = (
     residuals,
     invert,
     tradeoff,
+    appraise,
     export,
     import_model,
     ratio,

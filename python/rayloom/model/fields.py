@@ -29,6 +29,7 @@ KNOWN_FIELDS: Final = {
     "ray_length_km": FieldDescription("km", "summed length of the rays in the block"),
     "sigma_dvp": FieldDescription("percent", "posterior standard deviation of dvp"),
     "sigma_dvs": FieldDescription("percent", "posterior standard deviation of dvs"),
+    "data_share": FieldDescription("1", "share of the prior variance that the data take away"),
     "resolution": FieldDescription("1", "diagonal of the resolution matrix"),
 }
 """Quantities that rayloom itself adds to a model."""

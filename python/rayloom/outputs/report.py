@@ -12,13 +12,14 @@ import numpy as np
 
 from rayloom import __version__
 from rayloom.outputs.atomic import write_text
+from rayloom.outputs.report_section import ReportSection
+from rayloom.outputs.results import WrittenFigure
 from rayloom.outputs.tables import exclusion_table
 
 if TYPE_CHECKING:
     import pandas as pd
 
     from rayloom.inversion.result import InversionResult
-    from rayloom.outputs.results import WrittenFigure
 
 MOST_OUTLIERS: Final = 20
 
@@ -81,6 +82,7 @@ def write_report(
     figures: Sequence[WrittenFigure] = (),
     settings_text: str = "",
     provenance: Mapping[str, str] | None = None,
+    sections: Sequence[ReportSection] = (),
     title: str = "Velocity model from distant earthquakes",
 ) -> None:
     """Write the report of an inversion.
@@ -97,6 +99,8 @@ def write_report(
         The settings used, as in their file.
     provenance : mapping of str to str, optional
         Versions, hashes of inputs, seeds.
+    sections : sequence of ReportSection
+        What steps done on request found; their figures lie beside the report.
     title : str
         Title of the page.
 
@@ -112,6 +116,8 @@ def write_report(
             figures=figures,
             settings_text=settings_text,
             provenance=provenance,
+            sections=sections,
+            folder=Path(path).parent,
             title=title,
         ),
     )
@@ -123,9 +129,14 @@ def render_report(
     figures: Sequence[WrittenFigure] = (),
     settings_text: str = "",
     provenance: Mapping[str, str] | None = None,
+    sections: Sequence[ReportSection] = (),
+    folder: Path = Path(),
     title: str = "Velocity model from distant earthquakes",
 ) -> str:
-    """Return the text of the report; see :func:`write_report`."""
+    """Return the text of the report; see :func:`write_report`.
+
+    Figures of ``sections`` are looked for in ``folder``.
+    """
     from jinja2 import Environment, PackageLoader, StrictUndefined
 
     environment = Environment(
@@ -141,6 +152,7 @@ def render_report(
         outcome=_outcome(result),
         remarks=_remarks(result),
         figures=_embedded(figures),
+        sections=[_section(section, folder) for section in sections],
         data_rows=_data_rows(result),
         exclusions=_exclusions(result),
         outliers=_outliers(result),
@@ -306,6 +318,19 @@ def _cell(form: str, value: Any) -> str:
     if not np.isfinite(value):
         return "–"
     return form.format(int(value) if form == "{:d}" else float(value))
+
+
+def _section(section: ReportSection, folder: Path) -> dict[str, Any]:
+    figures = [
+        WrittenFigure(tuple(folder / path for path in figure.paths), figure.caption)
+        for figure in section.figures
+    ]
+    return {
+        "title": section.title,
+        "sentences": section.sentences,
+        "tables": [table for table in section.tables if table.rows],
+        "figures": _embedded(figures),
+    }
 
 
 def _embedded(figures: Sequence[WrittenFigure]) -> list[dict[str, str]]:

@@ -17,6 +17,7 @@ from pydantic import (
     model_validator,
 )
 
+from rayloom.appraisal.settings import AppraisalSettings
 from rayloom.forward import ForwardSettings
 from rayloom.inversion import InversionSettings
 from rayloom.inversion.tradeoff import TradeoffSettings
@@ -142,7 +143,8 @@ class RunSettings(BaseModel):
 
     Attributes
     ----------
-    inputs, earth, survey, residuals, check, grid, forward, inversion, tradeoff, outputs : settings
+    inputs, earth, survey, residuals, check, grid, forward, inversion : settings
+    tradeoff, appraisal, outputs : settings
         In the order of the work.
     """
 
@@ -159,6 +161,7 @@ class RunSettings(BaseModel):
         default_factory=lambda: RunInversionSettings.model_validate({})
     )
     tradeoff: TradeoffSettings = Field(default_factory=TradeoffSettings)
+    appraisal: AppraisalSettings = Field(default_factory=AppraisalSettings)
     outputs: RunOutputSettings = Field(
         default_factory=lambda: RunOutputSettings.model_validate({})
     )

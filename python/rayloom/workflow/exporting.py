@@ -6,11 +6,12 @@ from pathlib import Path
 
 from rayloom.model import SlownessModel
 from rayloom.outputs.report import write_report
+from rayloom.outputs.report_section import ReportSection
 from rayloom.outputs.results import write_figures, write_model_files
 from rayloom.settings import RunSettings, run_settings_text
 from rayloom.workflow.data import read_back_residuals, read_earth
 from rayloom.workflow.folder import RunFolder
-from rayloom.workflow.plan import Outcome
+from rayloom.workflow.plan import Files, Outcome
 from rayloom.workflow.record import Provenance, StepRecord
 from rayloom.workflow.reporting import Reporter
 from rayloom.workflow.result_file import load_result
@@ -34,10 +35,16 @@ def export_results(folder: RunFolder, settings: RunSettings, reporter: Reporter)
         figures=figures,
         settings_text=run_settings_text(settings, heading="", comments=False),
         provenance=_provenance(folder),
+        sections=[ReportSection.read(path) for path in report_sections(folder).values()],
     )
     drawn = [path for figure in figures for path in figure.paths]
     files = [*written, *drawn, report]
     return Outcome(files={str(path.relative_to(folder.path).as_posix()): path for path in files})
+
+
+def report_sections(folder: RunFolder) -> Files:
+    """Name the parts of the report that steps done on request have left."""
+    return {path.name: path for path in sorted(folder.path.glob("*_report.json"))}
 
 
 def _provenance(folder: RunFolder) -> dict[str, str]:

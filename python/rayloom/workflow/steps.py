@@ -12,6 +12,7 @@ from typing import Any, Final
 from rayloom.outputs import write_exclusions_csv, write_residuals_csv, write_table
 from rayloom.residuals import crust_frame
 from rayloom.settings import RunSettings
+from rayloom.workflow.appraising import APPRAISE
 from rayloom.workflow.comparing_waves import ratio_inputs, write_ratio
 from rayloom.workflow.data import (
     Tables,
@@ -20,7 +21,7 @@ from rayloom.workflow.data import (
     residuals_from_tables,
     station_crust,
 )
-from rayloom.workflow.exporting import export_results
+from rayloom.workflow.exporting import export_results, report_sections
 from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.inverting import run_inversion, starting_model_files
 from rayloom.workflow.plan import Files, Outcome, Step
@@ -52,10 +53,12 @@ STEPS: Final = (
         builds_on=("residuals",),
     ),
     TRADEOFF,
+    APPRAISE,
     Step(
         name="export",
         inputs=lambda folder, _: {
-            name: folder.file(name) for name in ("model.nc", "inversion.npz")
+            **{name: folder.file(name) for name in ("model.nc", "inversion.npz")},
+            **report_sections(folder),
         },
         settings=lambda settings: _sections(settings, "outputs"),
         work=export_results,
