@@ -14,6 +14,7 @@ from rayloom.earth import ReferenceEarth, distance_azimuth_deg, geocentric_latit
 from rayloom.errors import InputError
 from rayloom.model import SlownessModel
 from rayloom.workflow import RunFolder, run, run_step, summarise
+from rayloom.workflow.waves import wave_parts
 from run_folder_cases import SurveyFiles, write_run_folder, write_small_survey
 
 
@@ -53,19 +54,17 @@ def files(tmp_path_factory: pytest.TempPathFactory) -> SurveyFiles:
 
 @pytest.fixture(scope="module")
 def finished(files: SurveyFiles, tmp_path_factory: pytest.TempPathFactory) -> Path:
-    folder = with_station_terms(
-        write_run_folder(tmp_path_factory.mktemp("finished") / "run", files)
-    )
+    folder = with_priors(write_run_folder(tmp_path_factory.mktemp("finished") / "run", files))
     done = run(folder)
     assert done == ["residuals", "invert P", "export P", "invert S", "export S", "ratio"]
     return folder
 
 
-def with_station_terms(folder: Path) -> Path:
-    """Expect station terms of S to be 1.8 times those of P."""
+def with_priors(folder: Path) -> Path:
+    """Expect perturbations of 2 % in both, station terms of S 1.8 times those of P."""
     path = folder / "rayloom.toml"
     text = path.read_text(encoding="utf-8")
-    sizes = "station_term_std_s = { P = 0.2, S = 0.36 }"
+    sizes = "prior_std_percent = 2.0\nstation_term_std_s = { P = 0.2, S = 0.36 }"
     path.write_text(text.replace("[inversion]", f"[inversion]\n{sizes}"), encoding="utf-8")
     return folder
 
@@ -92,7 +91,7 @@ def test_each_wave_has_a_model_and_tables_of_its_own(finished: Path) -> None:
 def test_a_wave_alone_gives_the_same_model_without_sub_folders(
     finished: Path, files: SurveyFiles, tmp_path: Path
 ) -> None:
-    folder = with_station_terms(write_run_folder(tmp_path / "run", files))
+    folder = with_priors(write_run_folder(tmp_path / "run", files))
     choose(folder, "S")
     run_step(folder, "residuals")
     run_step(folder, "invert")
@@ -150,6 +149,20 @@ def test_the_ratio_needs_both_waves_done(finished: Path, tmp_path: Path) -> None
     choose(folder, "P")
     with pytest.raises(InputError, match="this run inverts one"):
         run_step(folder, "ratio")
+
+
+def test_a_wave_with_too_few_picks_makes_no_model(finished: Path, tmp_path: Path) -> None:
+    """Nine events have four S picks each, one event has five."""
+    folder = RunFolder(shutil.copytree(finished, tmp_path / "run"))
+    table = pd.read_csv(folder.residuals, dtype=str)
+    is_s = table["phase"] == "S"
+    place = table[is_s].groupby("event").cumcount().reindex(table.index, fill_value=0)
+    for most, waves in ((4, [None]), (5, ["P", "S"])):
+        kept = ~is_s | (place < 4) | ((table["event"] == "E0") & (place < most))
+        table[kept].to_csv(folder.residuals, index=False)
+        parts = wave_parts(folder, folder.read_settings())
+        assert [part.folder.wave for part in parts] == waves
+        assert [part.settings.inversion.wave for part in parts] == ["P", "S"][: len(waves)]
 
 
 def test_the_summary_tells_of_both_waves(finished: Path) -> None:

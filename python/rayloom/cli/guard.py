@@ -61,12 +61,18 @@ def _say(text: str) -> None:
 
 
 def _how_to_resume(folder: Path | None, command: str) -> str:
-    if folder is None or not (folder / "rayloom.toml").exists():
+    if folder is None or not _is_run_folder(folder):
         return "Stopped; nothing half-written was left."
     return (
         "Stopped; what was finished is kept and nothing is half-written. "
         f"Resume with: rayloom {command} {folder}"
     )
+
+
+def _is_run_folder(folder: Path) -> bool:
+    """Tell whether a folder, or the one that it is the part of a wave of, has settings."""
+    places = [folder, *([folder.parent] if folder.name in ("P", "S") else [])]
+    return any((place / "rayloom.toml").exists() for place in places)
 
 
 def _own_error(error: Exception, folder: Path | None) -> str:
