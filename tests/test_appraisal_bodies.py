@@ -16,7 +16,6 @@ from rayloom.appraisal.bodies import (
     find_bodies,
     find_regions,
     measure_body,
-    point_spread,
     relative_to_layers,
     smearing_at,
 )
@@ -136,18 +135,6 @@ def test_explained_delays_are_those_of_the_matrix(problem: LinearisedProblem) ->
     means = np.array([delay[group == number].mean() for number in range(group.max() + 1)])
     expected = 1e3 * np.sqrt(np.mean((delay - means[group]) ** 2))
     assert explained_ms(problem, mask, percent[None])[0] == pytest.approx(expected, rel=1e-9)
-
-
-def test_point_spread_is_a_column_of_the_dense_resolution(problem: LinearisedProblem) -> None:
-    """C^½ (ÃᵀÃ + I)⁻¹ Ãᵀ times the block's weighted column, by dense linear algebra."""
-    system = problem.system
-    dense = np.column_stack([system.times(unit) for unit in np.eye(system.shape[1])])
-    block = int(problem.model.grid.locate([150.0, 150.0, 100.0]))
-    column = system.whiten_rows(system.groups[0].matrix.toarray()[:, block])
-    z = np.linalg.solve(dense.T @ dense + np.eye(dense.shape[1]), dense.T @ column)
-    expected = system.parameters(z)[0].reshape(problem.model.grid.shape)
-    found = point_spread(problem, block)
-    np.testing.assert_allclose(found, expected, atol=2e-3 * expected.max())
 
 
 def test_a_body_smaller_than_the_point_spread_is_flagged() -> None:

@@ -7,7 +7,7 @@ one-dimensional Earth.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -25,6 +25,8 @@ Flags = NDArray[np.bool_]
 
 _OUTER_BLOCK_KM = 50.0
 _OUTER_LAYER_KM = 25.0
+_SHARES = (0.2, 0.35, 0.5, 0.65, 0.8)
+"""Where along a side balls are tried."""
 
 
 @dataclass(frozen=True)
@@ -62,8 +64,9 @@ def outside_sources(
 ) -> tuple[LeakSource, LeakSource]:
     """Put one ball beside the blocks and one below them.
 
-    The first touches, at half depth, the side through which the rays run
-    farthest outside; the second touches the base below the middle of the stations.
+    The first touches a side, between half the depth of the blocks and their
+    base, where the rays cross it most; the second touches the base below the
+    middle of the stations. Where no ray comes near, the delays are zero.
 
     Parameters
     ----------
@@ -90,11 +93,15 @@ def outside_sources(
     )
     grid = around.inner
     middle = station_middle(problem, data)
-    depth_km = 0.5 * (max(grid.depth_edges_km[0], 0.0) + grid.depth_edges_km[-1])
-    side, beside = _beside(around, radius_km, float(depth_km))
+    side, beside = _beside(around, radius_km)
     below = (*middle, float(grid.depth_edges_km[-1]) + radius_km)
     places = (
-        ("beside", beside, f"a ball of {radius_km:g} km radius against the {side} side"),
+        (
+            "beside",
+            beside,
+            f"a ball of {radius_km:g} km radius against the {side} side, centre "
+            f"{beside[2]:.0f} km deep",
+        ),
         ("below", below, f"a ball of {radius_km:g} km radius against the base"),
     )
     change = slowness_change(contrast_percent)
@@ -198,28 +205,35 @@ def station_middle(problem: LinearisedProblem, data: Residuals) -> tuple[float, 
     return float(np.median(x)), float(np.median(y))
 
 
-def _beside(
-    around: Surroundings, radius_km: float, depth_km: float
-) -> tuple[str, tuple[float, float, float]]:
-    """Name and ball's centre of the side through which most of the rays' length runs."""
-    grid, outer = around.inner, around.model.grid
-    length = np.asarray(around.rays.path_lengths.sum(axis=0)).reshape(outer.shape)
-    layers = outer.depth_centres_km < grid.depth_edges_km[-1]
-    along_y = np.radians(1.0) * (EARTH_RADIUS_KM - depth_km)
-    x, y = (0.5 * float(edges[0] + edges[-1]) for edges in (grid.x_edges, grid.y_edges))
-    along_x = along_y * float(np.cos(np.radians(y)))
-    low_x, high_x = outer.x_centres < grid.x_edges[0], outer.x_centres > grid.x_edges[-1]
-    low_y, high_y = outer.y_centres < grid.y_edges[0], outer.y_centres > grid.y_edges[-1]
-    west, east = grid.x_edges[[0, -1]] + np.array([-1.0, 1.0]) * radius_km / along_x
-    south, north = grid.y_edges[[0, -1]] + np.array([-1.0, 1.0]) * radius_km / along_y
-    sides = {
-        "lower x": (length[low_x][:, :, layers].sum(), (float(west), y, depth_km)),
-        "upper x": (length[high_x][:, :, layers].sum(), (float(east), y, depth_km)),
-        "lower y": (length[:, low_y][:, :, layers].sum(), (x, float(south), depth_km)),
-        "upper y": (length[:, high_y][:, :, layers].sum(), (x, float(north), depth_km)),
-    }
-    name = max(sides, key=lambda side: float(sides[side][0]))
-    return name, sides[name][1]
+def _beside(around: Surroundings, radius_km: float) -> tuple[str, tuple[float, float, float]]:
+    """Name the side, and the ball's centre against it, that the rays cross most."""
+    length = np.asarray(around.rays.path_lengths.sum(axis=0)).ravel()
+    best, place = -1.0, ("", (0.0, 0.0, 0.0))
+    for side, centre in _places_beside(around.inner, radius_km):
+        crossed = float(length[_ball(around, centre, radius_km)].sum())
+        if crossed > best:
+            best, place = crossed, (side, centre)
+    return place
+
+
+def _places_beside(
+    grid: BlockGrid, radius_km: float
+) -> Iterator[tuple[str, tuple[float, float, float]]]:
+    """Balls that touch a side, at several places along it and depths."""
+    top, base = max(float(grid.depth_edges_km[0]), 0.0), float(grid.depth_edges_km[-1])
+    for depth_km in np.linspace(0.5 * (top + base), base, 3).tolist():
+        along_y = np.radians(1.0) * (EARTH_RADIUS_KM - depth_km)
+        for share in _SHARES:
+            x, y = (
+                float(edges[0] + share * (edges[-1] - edges[0]))
+                for edges in (grid.x_edges, grid.y_edges)
+            )
+            off_x = radius_km / (along_y * float(np.cos(np.radians(y))))
+            off_y = radius_km / along_y
+            yield "lower x", (float(grid.x_edges[0]) - off_x, y, depth_km)
+            yield "upper x", (float(grid.x_edges[-1]) + off_x, y, depth_km)
+            yield "lower y", (x, float(grid.y_edges[0]) - off_y, depth_km)
+            yield "upper y", (x, float(grid.y_edges[-1]) + off_y, depth_km)
 
 
 def _ball(around: Surroundings, centre: tuple[float, float, float], radius_km: float) -> Flags:

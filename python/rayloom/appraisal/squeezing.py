@@ -91,7 +91,7 @@ class DepthScan:
     p_value: Floats
     prior_factor: Floats
 
-    def demanded_km(self, level: float = 0.05) -> float:
+    def demanded_km(self, level: float = 0.01) -> float:
         """Depth that the data demand structure to reach at least, km; NaN if none.
 
         From below: the deepest cut rejected with all shallower ones; from
@@ -100,7 +100,7 @@ class DepthScan:
         Parameters
         ----------
         level : float, optional
-            p-value under which a cut is rejected.
+            p-value under which a cut is rejected; low, since a scan tests many cuts.
         """
         order = np.arange(self.depth_km.size)
         if self.side == "above":

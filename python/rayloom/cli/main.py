@@ -14,6 +14,7 @@ import click
 from rayloom import __version__
 from rayloom.cli.appraise import appraise
 from rayloom.cli.beginning import demo, init
+from rayloom.cli.bodies import bodies
 from rayloom.cli.checking import check
 from rayloom.cli.guard import GuardedGroup
 from rayloom.cli.importing import import_model
@@ -52,6 +53,7 @@ COMMANDS: Final = (
     invert,
     tradeoff,
     appraise,
+    bodies,
     export,
     import_model,
     ratio,

@@ -17,6 +17,7 @@ from pydantic import (
     model_validator,
 )
 
+from rayloom.appraisal.bodies.settings import BodySettings
 from rayloom.appraisal.settings import AppraisalSettings
 from rayloom.forward import ForwardSettings
 from rayloom.inversion import InversionSettings
@@ -144,7 +145,7 @@ class RunSettings(BaseModel):
     Attributes
     ----------
     inputs, earth, survey, residuals, check, grid, forward, inversion : settings
-    tradeoff, appraisal, outputs : settings
+    tradeoff, appraisal, bodies, outputs : settings
         In the order of the work.
     """
 
@@ -162,6 +163,7 @@ class RunSettings(BaseModel):
     )
     tradeoff: TradeoffSettings = Field(default_factory=TradeoffSettings)
     appraisal: AppraisalSettings = Field(default_factory=AppraisalSettings)
+    bodies: BodySettings = Field(default_factory=BodySettings)
     outputs: RunOutputSettings = Field(
         default_factory=lambda: RunOutputSettings.model_validate({})
     )

@@ -13,6 +13,7 @@ from rayloom.outputs import write_exclusions_csv, write_residuals_csv, write_tab
 from rayloom.residuals import crust_frame
 from rayloom.settings import RunSettings
 from rayloom.workflow.appraising import APPRAISE
+from rayloom.workflow.bodies import BODIES
 from rayloom.workflow.comparing_waves import ratio_inputs, write_ratio
 from rayloom.workflow.data import (
     Tables,
@@ -54,6 +55,7 @@ STEPS: Final = (
     ),
     TRADEOFF,
     APPRAISE,
+    BODIES,
     Step(
         name="export",
         inputs=lambda folder, _: {

@@ -4,6 +4,7 @@
 90 % interval.
 """
 
+from rayloom.appraisal.bodies.extent import BodyExtent, cut_depths_km, extent_of
 from rayloom.appraisal.bodies.finding import (
     Body,
     core_of,
@@ -18,21 +19,25 @@ from rayloom.appraisal.bodies.regions import (
     main_component,
     relative_to_layers,
 )
-from rayloom.appraisal.bodies.smearing import Smearing, point_spread, smearing_at
+from rayloom.appraisal.bodies.settings import BodySettings
+from rayloom.appraisal.bodies.smearing import Smearing, smearing_at
 
 __all__ = [
     "Body",
+    "BodyExtent",
     "BodyMeasures",
     "BodyRegion",
+    "BodySettings",
     "Interval",
     "Smearing",
     "core_of",
+    "cut_depths_km",
     "explained_ms",
+    "extent_of",
     "find_bodies",
     "find_regions",
     "main_component",
     "measure_body",
-    "point_spread",
     "relative_to_layers",
     "smearing_at",
     "usable_blocks",

@@ -47,8 +47,8 @@ class Body:
     existence_share : float
         Share of the samples in which it exists.
     touches_edge : bool
-        Whether it reaches the rim of the blocks resolved above or below, so that
-        it may go on beyond.
+        Whether it reaches the highest or the lowest layer that most of its
+        columns resolve, so that it may go on beyond.
     smearing : Smearing
         The point-spread at its centroid.
     temperature : TemperatureRange or None
@@ -141,6 +141,8 @@ def usable_blocks(
 ) -> Flags:
     """Mark the blocks that may belong to a body, (nx, ny, nz).
 
+    The estimate from samples is noisy, so most of a block's neighbours decide.
+
     Parameters
     ----------
     grid : BlockGrid
@@ -152,8 +154,12 @@ def usable_blocks(
     top_km : float
         Depth above which none may.
     """
+    from scipy import ndimage
+
     below = grid.depth_edges_km[:-1] >= top_km - 0.01
-    return np.asarray((samples.resolution_mask() >= min_resolution) & below)
+    resolved = samples.resolution_mask() >= min_resolution
+    smooth = ndimage.median_filter(resolved.astype(np.uint8), size=3) > 0
+    return np.asarray(smooth & below)
 
 
 def _body(
@@ -252,12 +258,12 @@ def _geographic(grid: BlockGrid, measures: BodyMeasures) -> tuple[Interval, Inte
 
 
 def _touches_edge(core: Flags, usable: Flags) -> bool:
-    """Whether a body's block lies at the rim of the usable blocks above or below it."""
-    beyond = np.zeros_like(core)
-    beyond[:, :, :-1] |= core[:, :, :-1] & ~usable[:, :, 1:]
-    beyond[:, :, 1:] |= core[:, :, 1:] & ~usable[:, :, :-1]
-    beyond[:, :, [0, -1]] |= core[:, :, [0, -1]]
-    return bool(beyond.any())
+    """Whether a body lies in the highest or lowest layer that most of its columns resolve."""
+    resolved = np.flatnonzero(usable[core.any(axis=2)].mean(axis=0) >= 0.5)
+    layers = np.flatnonzero(core.any(axis=(0, 1)))
+    if not resolved.size or not layers.size:
+        return False
+    return bool(layers[0] <= resolved[0] or layers[-1] >= resolved[-1])
 
 
 def _temperature(measures: BodyMeasures, wave: str) -> TemperatureRange | None:

@@ -11,7 +11,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rayloom.appraisal.bodies.regions import main_component
-from rayloom.inversion import LinearisedProblem, solve
+from rayloom.appraisal.spread import point_spread
+from rayloom.inversion import LinearisedProblem
 from rayloom.model import BlockGrid
 
 Floats = NDArray[np.float64]
@@ -19,9 +20,6 @@ Flags = NDArray[np.bool_]
 
 _ROD = np.sqrt(12.0)
 """Length of an even rod over the standard deviation of its positions."""
-
-_TOLERANCE = 1e-4
-_MAX_ITERATIONS = 1000
 
 
 @dataclass(frozen=True)
@@ -49,28 +47,6 @@ class Smearing:
         return self.point_spread_km > self.body_km
 
 
-def point_spread(problem: LinearisedProblem, block: int) -> Floats:
-    """Image of a unit perturbation of one block, (nx, ny, nz): a column of the resolution.
-
-    Parameters
-    ----------
-    problem : LinearisedProblem
-        A finished inversion.
-    block : int
-        Flat index of the block.
-    """
-    system = problem.system
-    unit = np.zeros(problem.model.grid.block_count)
-    unit[block] = 1.0
-    found = solve(
-        system,
-        system.whiten_rows(system.groups[0].matrix @ unit),
-        tolerance=_TOLERANCE,
-        max_iterations=_MAX_ITERATIONS,
-    )
-    return np.asarray(system.parameters(found.white)[0].reshape(problem.model.grid.shape))
-
-
 def smearing_at(problem: LinearisedProblem, centroid: Floats, body: Flags) -> Smearing:
     """Compare a body with the point-spread at its centroid.
 
@@ -85,7 +61,8 @@ def smearing_at(problem: LinearisedProblem, centroid: Floats, body: Flags) -> Sm
     """
     grid = problem.model.grid
     block = int(grid.locate(centroid))
-    spread = point_spread(problem, block)
+    x, y, depth_km = centroid.tolist()
+    spread = point_spread(problem, [(x, y, depth_km)])[0].column
     here = np.zeros(grid.block_count, dtype=bool)
     here[block] = True
     core = main_component(grid, spread >= 0.5 * spread.max(), _at_peak(spread))
