@@ -16,6 +16,7 @@ from rayloom.cli.appraise import appraise
 from rayloom.cli.beginning import demo, init
 from rayloom.cli.bodies import bodies
 from rayloom.cli.checking import check
+from rayloom.cli.compare import compare
 from rayloom.cli.guard import GuardedGroup
 from rayloom.cli.importing import import_model
 from rayloom.cli.running import run
@@ -52,6 +53,7 @@ COMMANDS: Final = (
     residuals,
     invert,
     tradeoff,
+    compare,
     appraise,
     bodies,
     export,

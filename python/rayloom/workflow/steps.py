@@ -14,6 +14,7 @@ from rayloom.residuals import crust_frame
 from rayloom.settings import RunSettings
 from rayloom.workflow.appraising import APPRAISE
 from rayloom.workflow.bodies import BODIES
+from rayloom.workflow.compare import COMPARE
 from rayloom.workflow.comparing_waves import ratio_inputs, write_ratio
 from rayloom.workflow.data import (
     Tables,
@@ -54,6 +55,7 @@ STEPS: Final = (
         builds_on=("residuals",),
     ),
     TRADEOFF,
+    COMPARE,
     APPRAISE,
     BODIES,
     Step(
