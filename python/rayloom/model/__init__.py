@@ -11,7 +11,7 @@ from rayloom.model.grid import BlockGrid, BlockWidths
 from rayloom.model.settings import EdgeSegment, GridSettings, SuggestionSettings
 from rayloom.model.slowness import SlownessModel
 from rayloom.model.suggest import GridSuggestion, suggest_grid
-from rayloom.model.transfer import with_perturbation_of
+from rayloom.model.transfer import with_perturbation_of, with_perturbation_of_file
 from rayloom.model.wave_ratio import WaveRatio, wave_ratio
 
 __all__ = [
@@ -27,4 +27,5 @@ __all__ = [
     "suggest_grid",
     "wave_ratio",
     "with_perturbation_of",
+    "with_perturbation_of_file",
 ]

@@ -84,18 +84,34 @@ def read(path: Path) -> SlownessModel:
     InputError
         If it is netCDF-4 but not a model.
     """
-    if not path.is_file():
-        raise FileAccessError(f"{path}: there is no such file")
-    try:
-        dataset = _loaded(path)
-    except Exception as error:  # a damaged file makes the libraries raise almost anything
-        raise FileAccessError(
-            f"{path}: cannot be read as netCDF-4 ({error}); is it whole?"
-        ) from error
+    dataset = load_dataset(path)
     try:
         return model_of(dataset)
     except InputError as error:
         raise InputError(str(error), where=str(path)) from error
+
+
+def load_dataset(path: Path) -> xarray.Dataset:
+    """Read a netCDF file into memory.
+
+    Parameters
+    ----------
+    path : Path
+        The file.
+
+    Raises
+    ------
+    FileAccessError
+        If the file is missing, damaged or not netCDF-4.
+    """
+    if not path.is_file():
+        raise FileAccessError(f"{path}: there is no such file")
+    try:
+        return _loaded(path)
+    except Exception as error:  # a damaged file makes the libraries raise almost anything
+        raise FileAccessError(
+            f"{path}: cannot be read as netCDF-4 ({error}); is it whole?"
+        ) from error
 
 
 def _loaded(path: Path) -> xarray.Dataset:

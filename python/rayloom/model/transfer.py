@@ -1,15 +1,23 @@
-"""The perturbation of one model in the blocks of another: :func:`with_perturbation_of`."""
+"""The perturbation of one model in the blocks of another.
+
+:func:`with_perturbation_of` takes it from a model, :func:`with_perturbation_of_file` from a
+netCDF file of rayloom or of others.
+"""
 
 from __future__ import annotations
 
 from collections.abc import Iterator
+from pathlib import Path
 from typing import Final
 
 import numpy as np
 from numpy.typing import NDArray
 
 from rayloom.errors import InputError
+from rayloom.model.dataset import model_of
 from rayloom.model.grid import BlockGrid
+from rayloom.model.netcdf import load_dataset
+from rayloom.model.point_values import ratio_from_points
 from rayloom.model.slowness import SlownessModel
 
 Floats = NDArray[np.float64]
@@ -69,6 +77,46 @@ def with_perturbation_of(model: SlownessModel, source: SlownessModel) -> Slownes
             "its blocks do not overlap those of the run; check both grids", where="grid"
         )
     return model.with_slowness(model.reference * (total / POINTS_PER_AXIS**3))
+
+
+def with_perturbation_of_file(model: SlownessModel, path: str | Path) -> SlownessModel:
+    """Return a model with the perturbation that a netCDF file holds.
+
+    Parameters
+    ----------
+    model : SlownessModel
+        Blocks and reference to keep.
+    path : str or Path
+        A model file of rayloom (:func:`with_perturbation_of`), or values at points of
+        longitude, latitude and depth: perturbations in percent, or velocities, whose
+        mean slowness over each block is set against the reference of the block
+        (:func:`rayloom.model.point_values.ratio_from_points`).
+
+    Returns
+    -------
+    SlownessModel
+
+    Raises
+    ------
+    FileAccessError
+        If the file cannot be read.
+    InputError
+        If it holds no model of that wave, or covers none of the blocks.
+    """
+    dataset = load_dataset(Path(path))
+    if "slowness" in dataset or "wave" in dataset.attrs:
+        return with_perturbation_of(model, model_of(dataset))
+    if model.grid.frame.is_flat:
+        raise InputError("its points lie on the sphere, the blocks of the run in a flat frame")
+    ratio = ratio_from_points(dataset, model, _geographic_points(model.grid))
+    return model.with_slowness(model.reference * ratio)
+
+
+def _geographic_points(grid: BlockGrid) -> Iterator[Floats]:
+    """Give a point of every block as longitude, latitude and depth, place by place."""
+    for points in _sample_points(grid, grid):
+        longitude, latitude = grid.frame.geographic_coordinates(points[..., 0], points[..., 1])
+        yield np.stack([longitude, latitude, points[..., 2]], axis=-1)
 
 
 def _sample_points(grid: BlockGrid, other: BlockGrid) -> Iterator[Floats]:

@@ -3,9 +3,6 @@
 from __future__ import annotations
 
 import numpy as np
-from scipy.cluster.hierarchy import fcluster, linkage
-from scipy.sparse import coo_array
-from scipy.sparse.csgraph import connected_components
 
 from rayloom.earth import geocentric_latitude_deg
 from rayloom.survey import Events
@@ -35,10 +32,12 @@ def cluster_events(events: Events, chosen: IndexArray, *, distance_km: float) ->
     Complete linkage of the straight distances between hypocentres, cut at
     `distance_km`.
     """
+    from scipy.cluster.hierarchy import fcluster, linkage
+
     if len(chosen) < 2:
         return np.zeros(len(chosen), dtype=np.int64)
     tree = linkage(_positions_km(events, chosen), method="complete")
-    return _by_first(fcluster(tree, t=distance_km, criterion="distance"))
+    return _by_first(fcluster(tree, t=distance_km, criterion="distance").astype(np.int64))
 
 
 def split_unconnected(
@@ -73,6 +72,9 @@ def split_unconnected(
 
 def _split(cluster: IndexArray, event: IndexArray, station: IndexArray) -> IndexArray:
     """Split by the picks of one phase; events without any stay with the first part."""
+    from scipy.sparse import coo_array
+    from scipy.sparse.csgraph import connected_components
+
     node = np.unique(cluster[event] * (station.max() + 1) + station, return_inverse=True)[1]
     size = len(cluster) + int(node.max()) + 1
     links = coo_array(
@@ -80,7 +82,7 @@ def _split(cluster: IndexArray, event: IndexArray, station: IndexArray) -> Index
     ).tocsr()
     part = connected_components(links, directed=False)[1][: len(cluster)].astype(np.int64)
     has_picks = np.isin(np.arange(len(cluster)), event)
-    first = {}
+    first: dict[int, int] = {}
     for index in np.flatnonzero(has_picks).tolist():
         first.setdefault(int(cluster[index]), int(part[index]))
     for index in np.flatnonzero(~has_picks).tolist():

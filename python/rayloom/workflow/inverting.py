@@ -15,7 +15,7 @@ from rayloom.inversion import (
     load_state,
     save_state,
 )
-from rayloom.model import BlockGrid, SlownessModel, with_perturbation_of
+from rayloom.model import BlockGrid, SlownessModel, with_perturbation_of_file
 from rayloom.outputs import write_linear_system, write_table, write_tables
 from rayloom.residuals import Residuals, SummaryRays
 from rayloom.settings import RunSettings
@@ -109,7 +109,7 @@ def starting_model(
     """
     for path in starting_model_files(folder, settings).values():
         try:
-            return with_perturbation_of(reference, SlownessModel.read_netcdf(path))
+            return with_perturbation_of_file(reference, path)
         except InputError as error:
             raise InputError(str(error), where=f"inversion.starting_model, {path}") from error
     return reference
