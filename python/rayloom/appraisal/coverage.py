@@ -6,6 +6,7 @@ Main function: :func:`ray_coverage`.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import product
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,6 +15,9 @@ from rayloom.appraisal.rowspace import Floats
 from rayloom.forward import Rays
 from rayloom.model import BlockGrid, SlownessModel
 from rayloom.units import EARTH_RADIUS_KM
+
+_FACE_SHARE = 1e-6
+"""Share of the narrowest block within which a piece counts as running along a face."""
 
 
 @dataclass(frozen=True)
@@ -105,7 +109,7 @@ def ray_coverage(
     if path_km is not None:
         beyond = np.maximum(path_km[segments.ray] - segments.to_station_km, 0.0)
     d = segments.to_station_km
-    reduced = np.where(np.isinf(beyond), d, d * beyond / np.maximum(d + beyond, 1e-9))
+    reduced = d / (1.0 + d / np.maximum(beyond, 1e-9))
     wavelength = period_s * np.asarray(model.velocity_km_s).ravel()[segments.block]
     fresnel = segments.per_block(2.0 * np.sqrt(wavelength * reduced), count)
     with np.errstate(invalid="ignore", divide="ignore"):
@@ -145,7 +149,7 @@ def _segments(rays: Rays, counted: NDArray[np.bool_]) -> _Segments:
     before = np.cumsum(length) - length
     first = np.searchsorted(ray, np.arange(len(rays)))
     done = before - np.append(before, 0.0)[first][ray]
-    block = rays.grid.locate(0.5 * (start + end))
+    block = _blocks(rays, ray, 0.5 * (start + end))
     used = (block >= 0) & (length > 0.0)
     return _Segments(
         ray=ray[used],
@@ -154,6 +158,30 @@ def _segments(rays: Rays, counted: NDArray[np.bool_]) -> _Segments:
         direction=step[used] / length[used, None],
         to_station_km=np.maximum(whole[ray] - done - 0.5 * length, 0.0)[used],
     )
+
+
+def _blocks(rays: Rays, ray: NDArray[np.int64], middle: Floats) -> NDArray[np.int64]:
+    """Find the block of each piece; of the blocks at a face, the one that the ray is in."""
+    grid = rays.grid
+    block = grid.locate(middle)
+    edges = (grid.x_edges, grid.y_edges, grid.depth_edges_km)
+    offsets = np.array([_FACE_SHARE * np.diff(axis).min() for axis in edges])
+    beside = [grid.locate(middle + sign * offsets) for sign in (-1.0, 1.0)]
+    at_face = np.flatnonzero(beside[0] != beside[1])
+    paths, count = rays.path_lengths, grid.block_count
+    row = np.repeat(np.arange(len(rays)), np.diff(paths.indptr))
+    crossed = row * count + paths.indices
+    order = np.argsort(crossed)
+    best = np.zeros(at_face.size)
+    for signs in product((-1.0, 1.0), repeat=3):
+        tried = grid.locate(middle[at_face] + signs * offsets)
+        key = ray[at_face] * count + np.maximum(tried, 0)
+        place = np.minimum(np.searchsorted(crossed, key, sorter=order), crossed.size - 1)
+        same = (crossed[order[place]] == key) & (tried >= 0)
+        length = np.where(same, paths.data[order[place]], 0.0)
+        block[at_face] = np.where(length > best, tried, block[at_face])
+        best = np.maximum(best, length)
+    return block
 
 
 def _local_km(grid: BlockGrid, start: Floats, end: Floats) -> Floats:

@@ -88,7 +88,7 @@ def figure_restoration(
     shown = np.ones(grid.shape, dtype=bool) if hits is None else np.asarray(hits) > 0
     layers = _layers(restoration, model, shown, depths_km)
     view = map_view(grid)
-    limit = max(0.5, float(np.ceil(np.max(np.abs(restoration.truth_percent)))))
+    limit = max(0.5, float(np.ceil(np.max(np.abs(restoration.truth_percent)) - 1e-6)))
     scale = ColourScale(
         f"dV{model.wave.lower()} (%)", -limit, limit, slow_red(), ends=("slow", "fast")
     )
