@@ -10,9 +10,9 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-
 from bench.planted.faults import FAULTS, Fault
 from bench.planted.survey import clean_survey
+
 from rayloom.residuals import ResidualSettings
 from rayloom.residuals.screens import CheckSettings, Finding, by_severity, screen
 from rayloom.residuals.screens.nearby import Nearby

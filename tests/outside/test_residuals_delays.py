@@ -18,7 +18,7 @@ def every_pair(count: int) -> Pairs:
 def by_constrained_lstsq(
     first: np.ndarray, second: np.ndarray, delay: np.ndarray, sigma: np.ndarray, count: int
 ) -> tuple[np.ndarray, np.ndarray]:
-    """Times and their covariance by numpy's least squares with the row Σ t = 0 added."""
+    """Solve for times and their covariance by numpy's least squares with the row Σ t = 0 added."""
     rows = np.zeros((len(delay) + 1, count))
     rows[np.arange(len(delay)), first] = 1.0 / sigma
     rows[np.arange(len(delay)), second] = -1.0 / sigma

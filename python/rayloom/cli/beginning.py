@@ -58,6 +58,12 @@ def demo(ctx: click.Context, folder: Path, quiet: bool) -> None:
 @file_option("--picks", "CSV: event, network, station, phase, time, uncertainty_s; or QuakeML.")
 @file_option("--residuals", "CSV with residual_s in place of time, if you have residuals ready.")
 @file_option(
+    "--delays",
+    "CSV of differences of arrival times: event, network_a, station_a, network_b, station_b, "
+    "delay_s (at a minus at b), uncertainty_s.",
+    multiple=False,
+)
+@file_option(
     "--crust",
     "CSV of the crust below stations: network, station, crust_thickness_km or column.",
     multiple=False,
@@ -80,6 +86,7 @@ def init(
     events: tuple[Path, ...],
     picks: tuple[Path, ...],
     residuals: tuple[Path, ...],
+    delays: Path | None,
     crust: Path | None,
     earth: str,
     copy: bool,
@@ -106,6 +113,7 @@ def init(
         events=events,
         picks=picks,
         residuals=residuals,
+        delays=() if delays is None else (delays,),
         crust=() if crust is None else (crust,),
     )
     with listening(quiet=quiet) as reporter:

@@ -32,6 +32,10 @@ TRACING_KEYS: Final = ("method", "quality", "threads")
 """Keys of ``forward`` that the inversion takes over."""
 
 
+_KINDS_OF_DATA: Final = 3
+"""Picks, residuals, delays."""
+
+
 def _name_or_names(given: object) -> object:
     """Take the name of a file, or a list of names."""
     names = given if isinstance(given, list | tuple) else [given]
@@ -47,7 +51,7 @@ FileNames = Annotated[Path | tuple[Path, ...], BeforeValidator(_name_or_names)]
 
 
 class InputSettings(BaseModel):
-    """Tables to read, relative to this folder. Give picks, or residuals if you have them already.
+    """Tables to read, relative to this folder. Give picks, or delays, or residuals if ready.
 
     Each is a file, a folder of files, or a list of either, as in picks = ["a.csv", "b.csv"].
 
@@ -61,6 +65,10 @@ class InputSettings(BaseModel):
         CSV with event, network, station, phase, time, uncertainty_s; QuakeML.
     residuals : path or list of paths, optional
         event, network, station, phase, residual_s, uncertainty_s.
+    delays : path, optional
+        Differences of arrival times between stations: CSV with event, network_a, station_a,
+        network_b, station_b, delay_s (arrival at a minus arrival at b), uncertainty_s and, where
+        it is not P, phase.
     crust : path, optional
         Local crust below stations, replacing that of the Earth: CSV with network, station, and
         crust_thickness_km (with vp_km_s, vs_km_s if known) or column, the name of a CSV file
@@ -73,12 +81,13 @@ class InputSettings(BaseModel):
     events: FileNames
     picks: FileNames | None = None
     residuals: FileNames | None = None
+    delays: Path | None = None
     crust: Path | None = None
 
     @model_validator(mode="after")
     def _one_kind_of_data(self) -> InputSettings:
-        if (self.picks is None) == (self.residuals is None):
-            raise ValueError("give either picks or residuals, one of them")
+        if [self.picks, self.residuals, self.delays].count(None) != _KINDS_OF_DATA - 1:
+            raise ValueError("give either picks or residuals or delays, one of them")
         return self
 
 
@@ -106,8 +115,9 @@ class RunInversionSettings(InversionSettings):
         arrive as S waves; "auto" makes one model of each wave that has residuals, with two in
         the sub-folders P and S.
     starting_model : path or one per wave, optional
-        netCDF file of rayloom whose perturbation the iterations start from; where its blocks
-        differ, block means are taken. Such as { P = "p.nc", S = "s.nc" } for two waves. It
+        netCDF file whose perturbation the iterations start from: a model file, or dvp (percent)
+        or vp (km/s) on longitude, latitude and depth (dvs or vs for S). Where its blocks differ,
+        block means are taken. Such as { P = "p.nc", S = "s.nc" } for two waves. It
         bears on the course of the iterations alone: what is believed beforehand, and where
         data are silent found again, is the prior.
     """

@@ -8,16 +8,18 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Final
 
+from rayloom.residuals.delays import read_delays, relative_times
 from rayloom.residuals.screens import (
     Evidence,
     Finding,
     evidence_of_residuals,
     evidence_of_survey,
+    evidence_of_times,
     screen,
     write_findings_csv,
 )
 from rayloom.settings import RunSettings
-from rayloom.survey import Notice, read_events, read_stations, read_survey
+from rayloom.survey import read_events, read_stations, read_survey
 from rayloom.workflow.data import Tables, read_earth, station_crust
 from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.reporting import Reporter
@@ -71,11 +73,17 @@ def _evidence(folder: RunFolder, settings: RunSettings) -> Evidence:
         )
         crust = station_crust(tables, survey.stations)
         return evidence_of_survey(survey, earth, settings.residuals, crust=crust)
-    notices: list[Notice] = []
+    stations, events = read_stations(tables.stations), read_events(tables.events)
+    if tables.delays is not None:
+        times = relative_times(
+            read_delays(tables.delays, stations, events, settings=settings.survey)
+        )
+        crust = station_crust(tables, stations)
+        return evidence_of_times(times, stations, events, earth, settings.residuals, crust=crust)
     return evidence_of_residuals(
         tables.residuals or (),
-        read_stations(tables.stations, notices=notices),
-        read_events(tables.events, notices=notices),
+        stations,
+        events,
         earth,
         settings.residuals,
         survey_settings=settings.survey,

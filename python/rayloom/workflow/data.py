@@ -27,6 +27,7 @@ from rayloom.residuals import (
     read_residuals,
     summarise_rays,
 )
+from rayloom.residuals.delays import compute_delay_residuals
 from rayloom.settings import RunSettings
 from rayloom.survey import (
     Notice,
@@ -55,7 +56,9 @@ class Tables:
     stations, events : pathlib.Path or tuple of pathlib.Path
         Tables of stations and events; several files or folders make one table.
     picks, residuals : pathlib.Path or tuple of pathlib.Path, optional
-        Picks, or residuals where these are ready: one of the two.
+        Picks, or residuals where these are ready.
+    delays : pathlib.Path, optional
+        Delays between stations, in place of picks and residuals.
     crust : pathlib.Path, optional
         Local crust below stations.
     """
@@ -64,6 +67,7 @@ class Tables:
     events: TableFiles
     picks: TableFiles | None = None
     residuals: TableFiles | None = None
+    delays: Path | None = None
     crust: Path | None = None
 
     @classmethod
@@ -168,6 +172,8 @@ def residuals_from_tables(
     """
     if tables.residuals is not None:
         data, notices = _ready(tables, tables.residuals, earth, survey, residuals)
+    elif tables.delays is not None:
+        data, notices = _of_delays(tables, tables.delays, earth, survey, residuals)
     else:
         data, notices = _computed(tables, earth, survey, residuals, reporter)
     reporter.note(
@@ -306,7 +312,7 @@ def _computed(
     reporter: Reporter,
 ) -> tuple[Residuals, list[Notice]]:
     if tables.picks is None:
-        raise InputError("neither picks nor residuals are named", where="inputs")
+        raise InputError("neither picks nor residuals nor delays are named", where="inputs")
     read = read_survey(
         stations=tables.stations,
         events=tables.events,
@@ -319,6 +325,23 @@ def _computed(
     notices = list(read.notices)
     crust = station_crust(tables, read.stations, notices)
     return compute_residuals(read, earth, residuals, crust=crust), notices
+
+
+def _of_delays(
+    tables: Tables,
+    table: Path,
+    earth: ReferenceEarth,
+    survey: SurveySettings,
+    residuals: ResidualSettings,
+) -> tuple[Residuals, list[Notice]]:
+    notices: list[Notice] = []
+    stations = read_stations(tables.stations, notices=notices)
+    events = read_events(tables.events, notices=notices)
+    crust = station_crust(tables, stations, notices)
+    data = compute_delay_residuals(
+        table, stations, events, earth, residuals, survey_settings=survey, crust=crust
+    )
+    return data, notices
 
 
 def _ready(

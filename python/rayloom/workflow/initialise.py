@@ -84,8 +84,9 @@ def initialise(
             f"{folder.settings_file} is there already; run it with: rayloom run {path}, "
             "or overwrite it with --force"
         )
-    if (tables.picks is None) == (tables.residuals is None):
-        raise InputError("give either --picks or --residuals, one of them")
+    given = [tables.picks, tables.residuals, tables.delays]
+    if given.count(None) != len(given) - 1:
+        raise InputError("give either --picks or --residuals or --delays, one of them")
     if path.exists() and not path.is_dir():
         raise InputError(f"{path} is a file; expected the name of a folder")
     started = time.monotonic()

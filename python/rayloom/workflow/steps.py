@@ -28,6 +28,7 @@ from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.inverting import run_inversion, starting_model_files
 from rayloom.workflow.plan import Files, Outcome, Step
 from rayloom.workflow.record import content_hashes, fingerprint
+from rayloom.workflow.relative_times import write_relative_times
 from rayloom.workflow.reporting import Reporter
 from rayloom.workflow.tradeoff import TRADEOFF
 
@@ -95,6 +96,7 @@ def _residuals(folder: RunFolder, settings: RunSettings, reporter: Reporter) -> 
     write_residuals_csv(folder.residuals, data)
     write_exclusions_csv(folder.exclusions, data)
     files = [folder.residuals, folder.exclusions]
+    files += write_relative_times(folder, tables, settings.survey)
     crust = station_crust(tables, data.stations)
     if crust is not None:
         files.append(folder.file("station_crust.csv"))

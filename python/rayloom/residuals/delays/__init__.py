@@ -6,7 +6,11 @@ comes to; :func:`residuals_of_delays` turns the latter into residuals.
 
 from rayloom.residuals.delays.adjustment import Adjustment, adjust
 from rayloom.residuals.delays.relative_times import RelativeTimes, relative_times
-from rayloom.residuals.delays.residuals import compute_delay_residuals, residuals_of_delays
+from rayloom.residuals.delays.residuals import (
+    compute_delay_residuals,
+    readings_of_times,
+    residuals_of_delays,
+)
 from rayloom.residuals.delays.table import Delays, read_delays
 
 __all__ = [
@@ -16,6 +20,7 @@ __all__ = [
     "adjust",
     "compute_delay_residuals",
     "read_delays",
+    "readings_of_times",
     "relative_times",
     "residuals_of_delays",
 ]

@@ -103,7 +103,7 @@ def adjust(
 
 
 def _parts(first: IndexArray, second: IndexArray, count: int) -> IndexArray:
-    """Number the connected part of each station, the largest first."""
+    """Give the connected part of each station, the largest first."""
     from scipy.sparse import coo_array
     from scipy.sparse.csgraph import connected_components
 

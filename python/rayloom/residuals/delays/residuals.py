@@ -110,20 +110,35 @@ def residuals_of_delays(
     InputError
         If no residual is left.
     """
+    data = residuals_of_readings(
+        readings_of_times(times), stations, events, earth, settings, crust=crust, relative=True
+    )
+    excluded = _joined(_untied(times, stations, events), data.excluded)
+    notices = [*_suspects(times, stations, events), *_closure(times), *data.notices]
+    return replace(data, excluded=excluded, notices=notices)
+
+
+def readings_of_times(times: RelativeTimes) -> Readings:
+    """Take the times of the largest part of each event and phase as readings.
+
+    Parameters
+    ----------
+    times : RelativeTimes
+        Adjusted times.
+
+    Returns
+    -------
+    Readings
+        Their level is that of the times: zero mean in each group.
+    """
     tied = times.part == 0
-    readings = Readings(
+    return Readings(
         times.event_index[tied],
         times.station_index[tied],
         times.phase[tied],
         times.time_s[tied],
         times.error_s[tied],
     )
-    data = residuals_of_readings(
-        readings, stations, events, earth, settings, crust=crust, relative=True
-    )
-    excluded = _joined(_untied(times, stations, events), data.excluded)
-    notices = [*_suspects(times, stations, events), *_closure(times), *data.notices]
-    return replace(data, excluded=excluded, notices=notices)
 
 
 def _untied(times: RelativeTimes, stations: Stations, events: Events) -> Exclusions:

@@ -8,6 +8,7 @@ from rayloom.residuals.screens.evidence import (
     Evidence,
     evidence_of_residuals,
     evidence_of_survey,
+    evidence_of_times,
 )
 from rayloom.residuals.screens.finding import (
     Finding,
@@ -25,6 +26,7 @@ __all__ = [
     "by_severity",
     "evidence_of_residuals",
     "evidence_of_survey",
+    "evidence_of_times",
     "findings_frame",
     "screen",
     "write_findings_csv",

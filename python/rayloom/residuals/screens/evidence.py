@@ -5,13 +5,15 @@ The main type is :class:`Evidence`.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
 from rayloom.earth import ReferenceEarth, phase_wave
 from rayloom.residuals.assembly import Screened, screen_readings
 from rayloom.residuals.crust import StationCrust
+from rayloom.residuals.delays import RelativeTimes, readings_of_times
+from rayloom.residuals.groups import group_numbers, relative_to_median_s
 from rayloom.residuals.prediction import Geometry
 from rayloom.residuals.readings import (
     Readings,
@@ -52,7 +54,8 @@ class Evidence:
     reason, detail : (n,) str arrays
         Why a row is left out, as in the list of exclusions; empty for rows used.
     ready : bool
-        Whether the residuals were computed by others, so that there are no times.
+        Whether residuals were computed by others, or have no absolute level: there are
+        no travel times to look at.
     notices : list of Notice
         Remarks made while reading.
     """
@@ -182,6 +185,47 @@ def evidence_of_residuals(
         path, stations, events, survey_settings or SurveySettings(), notices
     )
     return _evidence(readings, stations, events, earth, settings, notices, ready=True)
+
+
+def evidence_of_times(
+    times: RelativeTimes,
+    stations: Stations,
+    events: Events,
+    earth: ReferenceEarth,
+    settings: ResidualSettings | None = None,
+    *,
+    crust: StationCrust | None = None,
+) -> Evidence:
+    """Gather the evidence of relative times, whose residuals have no absolute level.
+
+    Parameters
+    ----------
+    times : RelativeTimes
+        Adjusted times; those of the largest part of each event count.
+    stations, events : Stations, Events
+        Tables that the times refer to.
+    earth : ReferenceEarth
+        The Earth of the predicted times.
+    settings : ResidualSettings, optional
+        Windows and limits.
+    crust : StationCrust, optional
+        Crust below stations, part of the predicted times.
+
+    Returns
+    -------
+    Evidence
+    """
+    settings = settings or ResidualSettings()
+    readings = with_usual_names(readings_of_times(times))
+    screened = screen_readings(
+        readings, stations, events, earth, settings, ready=False, everywhere=True, crust=crust
+    )
+    residual_s = screened.residual_s.copy()
+    there = np.isfinite(residual_s)
+    group = group_numbers(readings.event_index[there], readings.phase[there])
+    residual_s[there] = relative_to_median_s(residual_s[there], group)
+    screened = replace(screened, residual_s=residual_s)
+    return evidence_of_screened(readings, screened, stations, events, earth, settings, ready=True)
 
 
 def _evidence(
