@@ -14,7 +14,7 @@ from rayloom.workflow.waves import wave_parts
 
 _ORDER = ("residuals", "invert", "export", "ratio")
 _LABEL_WIDTH = 12
-_LOOK_FIRST = ("report.html", "figures/", "model.nc", "model.vts", "rays.vtp")
+_LOOK_FIRST = ("report.html", "figures/", "ratio.nc", "model.nc", "model.vts", "rays.vtp")
 
 
 def summarise(path: str | Path, *, upto: str = "ratio") -> str:
