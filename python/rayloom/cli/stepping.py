@@ -19,12 +19,12 @@ def residuals(ctx: click.Context, folder: Path, again: bool, quiet: bool) -> Non
     """Turn picks into residuals.
 
     Residuals are observed minus predicted arrival times; late is positive. Predictions hold
-    the one-dimensional Earth, its ellipticity and the station elevations. What is left out
-    is listed with its reason. You may remove rows from residuals.csv by hand: the inversion
-    then takes your version.
+    the one-dimensional Earth, its ellipticity, the station elevations and, where [inputs]
+    names a table of it, local crust. What is left out is listed with its reason. You may
+    remove rows from residuals.csv by hand: the inversion then takes your version.
 
     Reads:   the tables named in DIR/rayloom.toml [inputs]; [earth] [survey] [residuals]
-    Writes:  residuals.csv, exclusions.csv
+    Writes:  residuals.csv, exclusions.csv; station_crust.csv with local crust
     Example: rayloom residuals highland
     """
     one_step(ctx, "residuals", folder, again=again, quiet=quiet)
@@ -45,7 +45,7 @@ def invert(ctx: click.Context, folder: Path, again: bool, quiet: bool) -> None:
     Reads:   residuals.csv; [grid] [forward] [inversion]
     Writes:  model.nc, history.csv, residuals_after.csv, suspected_outliers.csv,
              station_terms.csv, mislocations.csv, inversion.npz (all of it, for later steps);
-             linear_system/ on request
+             linear_system/ on request; summary_clusters.csv with summary rays
     Example: rayloom invert highland
     """
     one_step(ctx, "invert", folder, again=again, quiet=quiet)
