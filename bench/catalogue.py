@@ -17,7 +17,10 @@ SUBJECTS = {
     "products": "G x and its adjoint against scipy and the copy bandwidth",
     "job": "36,000 rays of distant events through 150,000 blocks",
     "growth": "cost against the number of blocks, rays and threads",
+    "reading": "one survey of 18,000 picks read in each format",
     "inversion": "a whole inversion of 5,000 residuals",
+    "comparison": "straight, reference and bent rays at equal misfit on a known structure",
+    "solver": "warm starts, column scaling, merged blocks, errors of station terms",
     "screening": "faults planted in surveys against what the check finds, and clean surveys",
 }
 
