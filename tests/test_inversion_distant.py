@@ -9,8 +9,9 @@ import pytest
 from numpy.typing import NDArray
 
 from rayloom.earth import ReferenceEarth, distance_azimuth_deg, geocentric_latitude_deg
-from rayloom.forward import trace_distant
+from rayloom.forward import Rays, trace_distant
 from rayloom.inversion import InversionResult, InversionSettings, invert
+from rayloom.inversion.retracing import DatedRays
 from rayloom.model import BlockGrid, Frame, SlownessModel
 from rayloom.residuals import Residuals
 from rayloom.survey import Events, Stations
@@ -180,3 +181,40 @@ def test_stations_outside_the_blocks_are_left_out_and_listed(distant: Distant) -
     assert set(result.left_out_because[outside]) == {"no ray"}
     assert np.isnan(result.station_terms_s["P"][4])
     assert np.all(result.used[~outside])
+
+
+def test_only_rays_along_which_the_model_changed_are_traced_anew(
+    distant: Distant, bent: InversionResult
+) -> None:
+    """Rays that stay are timed to second order: late by no more than a tenth of their drift."""
+    sparing = invert(
+        distant.data, distant.model, settings(method="bent", threads=1, retrace_change_s=0.03)
+    )
+    rays = sparing.rays
+    assert isinstance(rays, DatedRays)
+    assert 0 < rays.traced_anew < len(rays)
+    assert rays.drift_s.max() <= 0.03
+    whole = trace_distant(
+        sparing.model,
+        distant.data.earth,
+        distant.data.events,
+        distant.data.stations,
+        pairs=np.column_stack([distant.data.event_index, distant.data.station_index]),
+    )
+    late_s = rays.time_s - whole.time_s
+    assert np.percentile(late_s, 95) <= 0.003
+    np.testing.assert_allclose(rays.predict_s(sparing.model.slowness_s_per_km), rays.time_s)
+    one, other = bent.model.perturbation_percent, sparing.model.perturbation_percent
+    assert np.linalg.norm(one - other) <= 0.1 * np.linalg.norm(one)
+
+
+def test_a_drift_of_nothing_keeps_every_ray(distant: Distant, bent: InversionResult) -> None:
+    dated = DatedRays.just_traced(bent.rays, bent.model)
+
+    def refuse(rows: NDArray[np.int64]) -> Rays:
+        raise AssertionError(f"{rows.size} rays were traced")
+
+    kept = dated.in_model(bent.model, limit_s=1e-9, trace=refuse)
+    np.testing.assert_array_equal(kept.all_points, bent.rays.all_points)
+    np.testing.assert_allclose(kept.time_s, bent.rays.time_s, atol=1e-4)
+    assert kept.basin_jumps == 0

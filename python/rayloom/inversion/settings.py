@@ -126,6 +126,11 @@ class InversionSettings(BaseModel):
     )
 
     max_iterations: int = Field(default=8, ge=1, description="Most models solved for.")
+    retrace_change_s: NotNegative = Field(
+        default=0.0,
+        description="Trace only those bent rays anew along which the slowness changed by more "
+        "than this since they were traced, s; 0 traces all in every model.",
+    )
     reweightings: int = Field(
         default=3,
         ge=1,
