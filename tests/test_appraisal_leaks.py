@@ -99,7 +99,7 @@ def test_unknown_delays_play_no_part(problem: LinearisedProblem, crust: LeakSour
 def test_a_crust_without_blocks_is_refused(problem: LinearisedProblem) -> None:
     with pytest.raises(InputError, match="no layer on one side"):
         crust_source(problem, centre=(160.0, 160.0), crust_km=5.0)
-    with pytest.raises(InputError, match="no crustal block"):
+    with pytest.raises(InputError, match="outside the blocks"):
         crust_source(problem, centre=(900.0, 160.0), crust_km=CRUST_KM)
 
 

@@ -163,7 +163,7 @@ def crust_source(
     centre : pair of float
         x and y of its axis in the frame.
     radius_km : float, optional
-        Its radius.
+        Its radius; the blocks that hold the axis belong to it in any case.
     contrast_percent : float, optional
         Its velocity perturbation.
     crust_km : float, optional
@@ -172,14 +172,16 @@ def crust_source(
     Raises
     ------
     InputError
-        If no block lies in it.
+        If the axis lies outside the blocks.
     """
     grid = problem.model.grid
     axis = np.column_stack([np.tile(centre, (grid.block_count, 1)), grid.centres[:, 2]])
     near = grid.frame.chord_km(grid.centres, axis) <= radius_km
+    holding = grid.locate(axis)
+    if np.any(holding < 0):
+        raise InputError(f"{centre} lies outside the blocks", where="centre")
+    near[holding] = True
     inside = crust_blocks(problem, crust_km).ravel() & near
-    if not inside.any():
-        raise InputError(f"no crustal block lies within {radius_km:g} km", where="centre")
     matrix = problem.system.groups[0].matrix
     return LeakSource(
         name="crust",
