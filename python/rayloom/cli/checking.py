@@ -39,7 +39,7 @@ def check(ctx: click.Context, folder: Path, everything: bool, quiet: bool) -> No
     (drop_stations, drop_events, drop_picks, keep). Needs no inversion.
 
     Reads:   the tables named in DIR/rayloom.toml; [earth] [survey] [residuals] [check]
-    Writes:  findings.csv
+    Writes:  findings.csv, check_report.json (shown in report.html by the next export)
     Example: rayloom check highland
     """
     from rayloom.cli.console import listening

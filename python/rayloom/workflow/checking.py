@@ -5,9 +5,12 @@ The main function is :func:`check`.
 
 from __future__ import annotations
 
+from collections import Counter
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Final
 
+from rayloom.outputs.report_section import ReportSection, SectionTable
 from rayloom.residuals.delays import read_delays, relative_times
 from rayloom.residuals.screens import (
     Evidence,
@@ -25,13 +28,16 @@ from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.reporting import Reporter
 
 FINDINGS_FILE: Final = "findings.csv"
+SECTION_FILE: Final = "check_report.json"
+_MOST_PER_KIND: Final = 5
 
 
 def check(path: str | Path, *, reporter: Reporter | None = None) -> list[Finding]:
     """Look for what is wrong or suspicious in the tables of a run folder.
 
     Residuals are computed from the tables, those left out included; nothing else of the
-    folder is needed, and nothing of it is changed but ``findings.csv``.
+    folder is needed, and nothing of it is changed but ``findings.csv`` and the section of
+    the report.
 
     Parameters
     ----------
@@ -58,7 +64,29 @@ def check(path: str | Path, *, reporter: Reporter | None = None) -> list[Finding
     reporter.note(f"looking through {len(evidence)} arrivals")
     findings = screen(evidence, settings.check)
     write_findings_csv(folder.file(FINDINGS_FILE), findings)
+    _section(findings).write(folder.file(SECTION_FILE))
     return findings
+
+
+def _section(findings: Sequence[Finding]) -> ReportSection:
+    """Tell errors and warnings, the first of each kind, and count the others."""
+    shown = []
+    by_kind: Counter[str] = Counter()
+    for one in findings:
+        by_kind[one.kind] += 1
+        if one.severity != "note" and by_kind[one.kind] <= _MOST_PER_KIND:
+            shown.append((one.severity, one.kind, one.who, one.evidence, one.advice))
+    counts = ", ".join(f"{number} {kind}" for kind, number in by_kind.most_common())
+    table = SectionTable(
+        caption=f"Errors and warnings, {_MOST_PER_KIND} of a kind; all in {FINDINGS_FILE}.",
+        names=("severity", "kind", "who", "evidence", "what to do"),
+        rows=tuple(shown),
+    )
+    return ReportSection(
+        title="What the check found in the tables",
+        sentences=(f"{len(findings)} findings: {counts}." if findings else "Nothing.",),
+        tables=(table,) if shown else (),
+    )
 
 
 def _evidence(folder: RunFolder, settings: RunSettings) -> Evidence:
