@@ -117,6 +117,22 @@ def test_nine_blocks_resolve_as_in_the_textbook() -> None:
     np.testing.assert_allclose(found[:, 4], spike, atol=5e-4)
 
 
+def test_nine_blocks_have_the_singular_values_of_the_textbook() -> None:
+    """3.180, 2, 1.732 three times, 1.607, 0.553 and 0: rank 7 of 9 (computed by SVD).
+
+    Each is found through the solver: its filter s²/(s² + λ²) along its own vector.
+    """
+    rays, damping = nine_blocks(), 1.3
+    directions = np.linalg.svd(rays)[2]
+    filters = [
+        direction @ damped_solution(rays, rays @ direction, damping=damping)
+        for direction in directions
+    ]
+    found = damping * np.sqrt(np.array(filters) / (1.0 - np.array(filters)))
+    expected = [3.180, 2.0, 1.732, 1.732, 1.732, 1.607, 0.553, 0.0, 0.0]
+    np.testing.assert_allclose(found, expected, atol=6e-4)
+
+
 def test_sixteen_blocks_resolve_as_in_the_textbook() -> None:
     """Set-up of Menke, from memory; values computed by SVD."""
     found = resolution(sixteen_blocks())
@@ -131,6 +147,22 @@ def test_damping_halves_a_component_at_the_corner_of_its_filter() -> None:
     """Tikhonov's filter s²/(s² + λ²) is 0.5 at s = λ (textbook)."""
     found = damped_solution(np.diag([3.0, 5.0]), np.array([3.0, 5.0]), damping=3.0)
     np.testing.assert_allclose(found, [0.5, 25.0 / 34.0], rtol=1e-12)
+
+
+def test_the_total_model_stays_where_steps_would_creep() -> None:
+    """At s = λ: regularised steps reach 0.5, 0.75, 0.875; the total model stays at 0.5.
+
+    Shaw & Orcutt (1985); the right-hand side of a retracing is d − T_k + A m_k.
+    """
+    matrix, data = np.array([[3.0]]), np.array([3.0])
+    creeping, jumping = np.zeros(1), np.zeros(1)
+    for step in (0.5, 0.75, 0.875):
+        left = data - matrix @ creeping
+        creeping = creeping + damped_solution(matrix, left, damping=3.0)
+        np.testing.assert_allclose(creeping, step, rtol=1e-12)
+        target = data - matrix @ jumping + matrix @ jumping
+        jumping = damped_solution(matrix, target, damping=3.0)
+        np.testing.assert_allclose(jumping, 0.5, rtol=1e-12)
 
 
 def test_huber_mean_of_five_numbers() -> None:
