@@ -36,7 +36,9 @@ def crust_frame(data: Residuals, crust: StationCrust) -> pd.DataFrame:
     import pandas as pd
 
     rows = crust.rows_of(data.stations)
-    listed = [_row(data, crust, index, int(rows[index])) for index in np.flatnonzero(rows >= 0)]
+    listed = [
+        _row(data, crust, index, int(rows[index])) for index in np.flatnonzero(rows >= 0).tolist()
+    ]
     return pd.DataFrame(listed, columns=_COLUMNS)
 
 
