@@ -172,7 +172,7 @@ def test_faults_of_the_table_are_named_by_line(
         (BASIN.replace("3,6.0", "2,6.0"), "line 4, column basin.csv: line 4, depth_km"),
         (BASIN.replace("6.0,3.5", "6.0,5.5"), "line 4, column basin.csv: line 4, vs_km_s"),
         (BASIN.replace("-1.2", "5"), "expected 0 in the first row"),
-        (BASIN.replace("vp_km_s", "vp_kms"), "column vp_km_s missing.*did you mean 'vp_km_s' by 'vp_kms'"),
+        (BASIN.replace("vp_km_s", "vp_kms"), "did you mean 'vp_km_s' by 'vp_kms'"),
         (BASIN.replace("38,", "800,"), "to 400 km at most"),
         ("depth_km,vp_km_s,vs_km_s\n0,6,3.5\n", "two rows or more"),
     ],
