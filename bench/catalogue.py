@@ -19,7 +19,7 @@ SUBJECTS = {
     "growth": "cost against the number of blocks, rays and threads",
     "reading": "one survey of 18,000 picks read in each format",
     "inversion": "a whole inversion of 5,000 residuals",
-    "appraisal": "64 samples, 64 probes, 2 restorations, bootstrap and squeezing of 6,000 residuals",
+    "appraisal": "samples, probes, restorations, bootstrap and squeezing of 6,000 residuals",
     "comparison": "straight, reference and bent rays at equal misfit on a known structure",
     "solver": "warm starts, column scaling, merged blocks, errors of station terms",
     "screening": "faults planted in surveys against what the check finds, and clean surveys",

@@ -76,7 +76,7 @@ def test_fields_are_within_what_they_can_be(appraised: Path) -> None:
     assert np.all(model.fields["sigma_dvp"] <= bound * slope * (1.0 + 1e-9))
     assert samples.count == 20
     np.testing.assert_allclose(model.fields["sigma_dvp"], samples.sigma_percent(), rtol=1e-9)
-    for name in ("resolution", "directional_coverage", "fresnel_width_km", "smearing_depth_km"):
+    for name in ("resolution", "directional_coverage", "fresnel_width_km", "smearing_x_km"):
         assert np.isfinite(model.fields[name]).any()
     assert {"bootstrap_error_percent", "jackknife_error_percent"} <= set(model.fields)
     assert set(np.sign(model.fields["put_in_one_column_percent"]).ravel()) == {-1.0, 0.0}
