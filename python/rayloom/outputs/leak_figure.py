@@ -70,7 +70,7 @@ def figure_leaks(grid: BlockGrid, leaks: Sequence[Leak], *, crust_km: float = 35
         for axes in panels[-1]:
             axes.set_xlabel("along x (km)", labelpad=1)
         bar = figure.colorbar(mesh, ax=panels, location="bottom", shrink=0.5, aspect=40)
-        bar.set_label("strongest dV along y (%)", labelpad=1)
+        bar.set_label("strongest dV along y, relative to the regional mean (%)", labelpad=1)
     return figure
 
 
