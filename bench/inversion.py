@@ -74,15 +74,7 @@ def _remarks(done: list[Isolated]) -> list[str]:
 
 def prepare(shape: list[int], stations: int, events: int) -> Callable[[], dict[str, Any]]:
     """Make the data; return the inversion of them."""
-    nx, ny, nz = shape
-    earth = rl.ReferenceEarth("ak135")
-    grid = box_grid((nx, ny, nz), BLOCK_KM, sphere=True, top_km=-3.0)
-    model = rl.SlownessModel.from_earth(grid, earth)
-    truth = roughened(model, "smooth", 4.0, seed=81)
-    half = grid.x_edges[-1] - 1.5
-    places = network(grid.frame, stations, (half, half), seed=82)
-    sources = distant_events(grid.frame, events, DISTANCES_DEG, seed=83)
-    data = _residuals(model, truth, earth, sources, places)
+    data, model, truth = survey_of_truth(shape, stations, events)
     settings = InversionSettings(threads=THREADS)
 
     def work() -> dict[str, Any]:
@@ -100,6 +92,21 @@ def prepare(shape: list[int], stations: int, events: int) -> Callable[[], dict[s
     return work
 
 
+def survey_of_truth(
+    shape: list[int], stations: int, events: int
+) -> tuple[Residuals, rl.SlownessModel, rl.SlownessModel]:
+    """Trace a smooth truth of 4 %; return the residuals, the reference and the truth."""
+    nx, ny, nz = shape
+    earth = rl.ReferenceEarth("ak135")
+    grid = box_grid((nx, ny, nz), BLOCK_KM, sphere=True, top_km=-3.0)
+    model = rl.SlownessModel.from_earth(grid, earth)
+    truth = roughened(model, "smooth", 4.0, seed=81)
+    half = grid.x_edges[-1] - 1.5
+    places = network(grid.frame, stations, (half, half), seed=82)
+    sources = distant_events(grid.frame, events, DISTANCES_DEG, seed=83)
+    return _residuals(model, truth, earth, sources, places), model, truth
+
+
 def _residuals(
     model: rl.SlownessModel,
     truth: rl.SlownessModel,
@@ -112,7 +119,7 @@ def _residuals(
     true = trace_distant(truth, earth, events, stations, quality="thorough", **options)
     kept = np.flatnonzero(reference.traced & true.traced)
     noise_s = np.random.default_rng(84).normal(0.0, NOISE_S, kept.size)
-    return _table(
+    return residual_table(
         reference,
         kept,
         (true.time_s - reference.time_s)[kept] + noise_s,
@@ -120,12 +127,13 @@ def _residuals(
     )
 
 
-def _table(
+def residual_table(
     reference: Rays,
     kept: NDArray[np.int64],
     residual_s: Floats,
     survey: tuple[rl.ReferenceEarth, Events, Stations],
 ) -> Residuals:
+    """Lay residuals of traced rays out as a table; only what an inversion reads is filled."""
     earth, events, stations = survey
     event, station = np.divmod(kept, len(stations))
     path = distance_azimuth_deg(
