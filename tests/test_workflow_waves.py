@@ -146,6 +146,8 @@ def test_the_ratio_needs_both_waves_done(finished: Path, tmp_path: Path) -> None
         InputError, match=r"'ratio' builds on 'invert S'.*inversion\.npz is missing"
     ):
         run_step(folder, "ratio")
+    shutil.copy(finished / "S" / "inversion.npz", folder / "S")
+    assert run_step(folder / "P", "ratio", again=True)
     choose(folder, "P")
     with pytest.raises(InputError, match="this run inverts one"):
         run_step(folder, "ratio")

@@ -92,7 +92,7 @@ def run_step(
     step = next(step for step in STEPS if step.name == name)
     if step.scope == "run":
         return Plan(folder.run, settings, _steps("run")).do_one(name, reporter, again=again)
-    parts = wave_parts(folder, settings)
+    parts = wave_parts(folder.run if step.scope == "waves" else folder, settings)
     plans = [Plan(part.folder, part.settings, _steps("run", "wave")) for part in parts]
     if step.scope == "wave":
         return any([plan.do_one(name, reporter, again=again) for plan in plans])
@@ -102,7 +102,7 @@ def run_step(
         )
     for plan, earlier in product(plans, step.builds_on):
         plan.require(earlier, name)
-    joint = Plan(folder, settings, (replace(step, builds_on=()),))
+    joint = Plan(folder.run, settings, (replace(step, builds_on=()),))
     return joint.do_one(name, reporter, again=again)
 
 
