@@ -20,6 +20,7 @@ SUBJECTS = {
     "reading": "one survey of 18,000 picks read in each format",
     "inversion": "a whole inversion of 5,000 residuals",
     "appraisal": "samples, probes, restorations, bootstrap and squeezing of 6,000 residuals",
+    "squeezing": "power of squeezing and coverage of body intervals on the demo's survey",
     "comparison": "straight, reference and bent rays at equal misfit on a known structure",
     "solver": "warm starts, column scaling, merged blocks, errors of station terms",
     "screening": "faults planted in surveys against what the check finds, and clean surveys",
