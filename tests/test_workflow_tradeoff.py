@@ -82,6 +82,9 @@ def test_all_kinds_of_rays_fit_alike(folder: Path) -> None:
         assert np.abs(model.perturbation_percent).max() > 0.0
     assert (folder / "figures" / "ray_comparison.png").exists()
     assert len(tell_comparison(RunFolder(folder))) == 3
+    run_step(folder, "export")
+    report = (folder / "report.html").read_text(encoding="utf-8")
+    assert "Straight, reference and bent rays" in report
 
 
 def test_changing_a_key_keeps_everything_else(folder: Path) -> None:

@@ -205,7 +205,7 @@ def _draw_lines(axes: Axes, tradeoff: Tradeoff, across: Measure, up: Measure) ->
 
 def _draw_error(axes: Axes, tradeoff: Tradeoff) -> None:
     """Shade the scores within one standard error of the best."""
-    best = tradeoff.recommended
+    best = min(tradeoff.rows, key=_cross_validation)
     top = best.cross_validation + best.cross_validation_error
     axes.axhspan(best.cross_validation, top, color="0.9", zorder=0)
 

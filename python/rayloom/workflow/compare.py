@@ -13,12 +13,13 @@ from rayloom.appraisal.ray_comparison import BodyInModel, compare_bodies, main_b
 from rayloom.inversion.comparison import RayInversion, compare_rays
 from rayloom.outputs import write_table
 from rayloom.outputs.comparison_figures import figure_ray_comparison
+from rayloom.outputs.report_section import ReportSection, SectionFigure
 from rayloom.outputs.slices import choose_layers
 from rayloom.outputs.style import save_figure
 from rayloom.settings import RunSettings
 from rayloom.workflow.finished import finished_inversion
 from rayloom.workflow.folder import RunFolder
-from rayloom.workflow.plan import Outcome, Step
+from rayloom.workflow.plan import Files, Outcome, Step
 from rayloom.workflow.record import Provenance
 from rayloom.workflow.reporting import Reporter
 
@@ -26,6 +27,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
 _TABLE: Final = "ray_comparison.csv"
+_SECTION: Final = "ray_comparison_report.json"
 _LEAST_HITS: Final = 10
 _BELOW_KM: Final = 35.0
 """Above it station terms and blocks cannot be told apart (base of the crust of ak135)."""
@@ -44,7 +46,7 @@ def run_comparison(folder: RunFolder, settings: RunSettings, reporter: Reporter)
     said = _sentences(entries, bodies)
     for line in said:
         reporter.note(line)
-    files = {_TABLE: folder.file(_TABLE)}
+    files: Files = {_TABLE: folder.file(_TABLE)}
     write_table(files[_TABLE], table)
     for entry in entries:
         name = f"model_{entry.method}_rays.nc"
@@ -63,8 +65,27 @@ def run_comparison(folder: RunFolder, settings: RunSettings, reporter: Reporter)
         dpi=settings.outputs.dpi,
     ):
         files[path.relative_to(folder.path).as_posix()] = path
+    files[_SECTION] = folder.file(_SECTION)
+    _section(said, files).write(files[_SECTION])
     remarks = {f"finding_{number}": line for number, line in enumerate(said, start=1)}
     return Outcome(files=files, remarks=remarks)
+
+
+def _section(said: list[str], files: Files) -> ReportSection:
+    return ReportSection(
+        title="Straight, reference and bent rays",
+        sentences=(
+            "The same data and weights inverted with each kind of rays to the same χ².",
+            *(f"{line[:1].upper()}{line[1:]}." for line in said),
+        ),
+        figures=(
+            SectionFigure(
+                tuple(name for name in files if name.startswith("figures/")),
+                "Models by each kind of rays at the same χ², and how far straight and reference "
+                "rays differ from bent ones; relative to the regional mean.",
+            ),
+        ),
+    )
 
 
 COMPARE: Final = Step(

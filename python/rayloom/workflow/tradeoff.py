@@ -11,6 +11,7 @@ from rayloom.errors import InputError
 from rayloom.inversion import linearise
 from rayloom.inversion.tradeoff import Tradeoff, explain, prior_settings, sweep
 from rayloom.outputs import write_table
+from rayloom.outputs.report_section import ReportSection, SectionFigure
 from rayloom.outputs.style import save_figure
 from rayloom.outputs.tradeoff_figures import figure_agreement, figure_tradeoff
 from rayloom.settings import RunSettings, change_run_settings
@@ -21,6 +22,7 @@ from rayloom.workflow.record import Provenance
 from rayloom.workflow.reporting import Reporter
 
 _TABLE: Final = "tradeoff.csv"
+_SECTION: Final = "tradeoff_report.json"
 _PRIOR_KEYS: Final = ("prior_std_percent", "correlation_km", "damping", "smoothing_km")
 
 
@@ -35,6 +37,8 @@ def run_tradeoff(folder: RunFolder, settings: RunSettings, reporter: Reporter) -
     for line in said:
         reporter.note(line)
     files = _write(folder, settings, found, result.data.stations)
+    files[_SECTION] = folder.file(_SECTION)
+    _section(found, said, files).write(files[_SECTION])
     return Outcome(
         files=files,
         seeds={"probes": settings.tradeoff.seed},
@@ -59,6 +63,31 @@ def _write(folder: RunFolder, settings: RunSettings, found: Tradeoff, stations: 
         ):
             files[path.relative_to(folder.path).as_posix()] = path
     return files
+
+
+def _section(found: Tradeoff, said: list[str], files: Files) -> ReportSection:
+    return ReportSection(
+        title="The choice of the prior",
+        sentences=tuple(f"{line[:1].upper()}{line[1:]}." for line in said),
+        figures=(
+            SectionFigure(
+                _drawn(files, "tradeoff"),
+                "Priors tried: the L-curve, and by standard deviation the mean square of events "
+                "left out, GCV and the evidence. Dots are priors as good as the best within one "
+                "standard error (shaded), the star is the one recommended.",
+            ),
+            SectionFigure(
+                _drawn(files, "tradeoff_sign"),
+                f"What keeps its sign in all {len(found.equally_good)} models of priors that are "
+                "as good: the weakest of their perturbations, relative to the regional mean.",
+            ),
+        ),
+    )
+
+
+def _drawn(files: Files, name: str) -> tuple[str, ...]:
+    """Name the files of a figure, one per format."""
+    return tuple(file for file in files if file.startswith(f"figures/{name}."))
 
 
 TRADEOFF: Final = Step(
