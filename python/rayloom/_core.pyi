@@ -145,6 +145,7 @@ def trace_distant(
     *,
     quality: str,
     coarse_nodes: int | None = None,
+    earlier: tuple[NDArray[np.int64], NDArray[np.float64]] | None = None,
     threads: int | None = None,
     progress: Callable[[int, int], object] | None = None,
 ) -> RayArrays: ...

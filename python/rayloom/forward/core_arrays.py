@@ -43,6 +43,17 @@ def points_km(grid: BlockGrid, points: ArrayLike) -> Floats:
     return np.ascontiguousarray(np.asarray(points, dtype=np.float64) * [scale, scale, 1.0])
 
 
+def polylines_km(rays: Rays, kept: NDArray[np.bool_]) -> tuple[NDArray[np.int64], Floats]:
+    """Offsets and points, in the core's kilometres, of some rays' poly-lines."""
+    lengths = np.diff(rays.point_offsets)
+    points = rays.all_points
+    if not kept.all():
+        points = points[np.repeat(kept, lengths)]
+        lengths = lengths[kept]
+    offsets = np.concatenate([[0], np.cumsum(lengths)])
+    return offsets, points_km(rays.grid, points)
+
+
 def checked_points(name: str, points: ArrayLike) -> Floats:
     """Check an array of points.
 

@@ -14,7 +14,13 @@ from numpy.typing import ArrayLike, NDArray
 from rayloom import _core
 from rayloom.earth import PHASES, ReferenceEarth, phase_wave, standard_phase
 from rayloom.errors import InputError
-from rayloom.forward.core_arrays import block_model, checked_pairs, points_km, rays_of
+from rayloom.forward.core_arrays import (
+    block_model,
+    checked_pairs,
+    points_km,
+    polylines_km,
+    rays_of,
+)
 from rayloom.forward.joining import Part, joined, trace_in_parts
 from rayloom.forward.local import require_choice, require_counts
 from rayloom.forward.rays import Rays
@@ -141,6 +147,7 @@ def trace_distant(
         names,
         quality,
         face_nodes,
+        previous if method == "bent" else None,
         threads,
         progress,
     )
@@ -197,6 +204,7 @@ def _first_arrivals(
     phases: Names,
     quality: Quality,
     face_nodes: int | None,
+    previous: Rays | None,
     threads: int | None,
     progress: Progress | None,
 ) -> Rays:
@@ -220,6 +228,7 @@ def _first_arrivals(
         np.column_stack([wave, pairs[used, 1]]),
         quality=quality,
         coarse_nodes=face_nodes,
+        earlier=None if previous is None else polylines_km(previous, used),
         threads=threads,
         progress=progress,
     )

@@ -184,6 +184,13 @@ impl<C: Chart> Blocks<C> {
         mean * self.mean_width_km() * self.flatness()
     }
 
+    /// Time (s) along the longest block edge at the slowest block's slowness.
+    pub fn longest_transit_s(&self) -> f64 {
+        let widths = self.edges.iter().flat_map(|edges| edges.windows(2));
+        let longest = widths.map(|pair| pair[1] - pair[0]).fold(0.0, f64::max);
+        longest * self.slowness.iter().copied().fold(0.0, f64::max)
+    }
+
     /// True if the point (grid coordinates) lies in the model or on its surface.
     pub fn contains(&self, point: Vec3) -> bool {
         (0..3).all(|axis| {

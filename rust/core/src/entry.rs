@@ -9,6 +9,9 @@ use crate::lattice::Lattice;
 use crate::search::fine::{FineSearch, SurfaceStart};
 use crate::vec3::{Vec3, dot};
 
+/// Distance (km) within which a point counts as lying on a side of the model.
+const ON_SIDE_KM: f64 = 1e-3;
+
 /// The first arrival of one event in the 1-D Earth, at points of the model.
 pub struct EarthWave<'a> {
     table: &'a WavefrontTable,
@@ -82,6 +85,27 @@ pub struct Entry {
     pub point: Vec3,
     /// Index of the corner.
     pub corner: usize,
+}
+
+/// The axis of the side of the model that a wave enters most steeply at a point
+/// of the surface (grid coordinates, km); `None` where it does not enter.
+pub fn entry_axis_at<C: Chart>(
+    blocks: &Blocks<C>,
+    wave: &dyn Incoming,
+    point: Vec3,
+) -> Option<u8> {
+    let arrival = wave.at(point)?;
+    (0..6)
+        .filter(|&side| {
+            let edges = blocks.edges(side / 2);
+            let edge = edges[(side % 2) * (edges.len() - 1)];
+            (point[side / 2] - edge).abs() <= ON_SIDE_KM && enters(&arrival, side)
+        })
+        .max_by(|a, b| {
+            let steepness = |side: Side| arrival.gradient[side / 2].abs();
+            steepness(*a).total_cmp(&steepness(*b))
+        })
+        .map(|side| (side / 2) as u8)
 }
 
 impl Surface {

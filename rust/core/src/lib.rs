@@ -12,6 +12,7 @@
 //! threads.
 
 pub mod blocks;
+pub mod course;
 pub mod earth;
 pub mod entry;
 pub mod error;

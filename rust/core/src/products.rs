@@ -1,15 +1,29 @@
 //! Products of a sparse row matrix with vectors, `G x` and `Gᵀ y`.
 //!
-//! Both split the rows into a number of chunks that depends on the matrix
-//! alone, and `Gᵀ y` adds the chunks' results in order, so the result has the
-//! same bits on any number of threads.
+//! Both split the rows into chunks of about as many stored values; where they
+//! are cut depends on the matrix alone. `Gᵀ y` adds the chunks' results in order,
+//! and a row is always summed over the same lanes, so the result has the same
+//! bits on any number of threads.
 
 use rayon::prelude::*;
 
 use crate::error::{CoreError, Result};
 
-/// Chunks of rows; fixed, so that the order of every sum is fixed.
-const ROW_CHUNKS: usize = 16;
+/// Chunks of rows of `G x`.
+const ROW_CHUNKS: usize = 64;
+
+/// Most chunks of rows of `Gᵀ y`, each of which needs a vector of its own …
+const MOST_PARTIAL_SUMS: usize = 16;
+
+/// … so there are fewer of them where they would hold less than this many stored
+/// values per column.
+const STORED_PER_SUM: usize = 8;
+
+/// Sums of one row that run side by side; they hide the latency of an addition.
+const LANES: usize = 8;
+
+/// Columns of `Gᵀ y` whose partial sums are added at a time.
+const COLUMNS_AT_ONCE: usize = 4096;
 
 /// A CSR matrix: 64-bit row pointers, 32-bit column indices.
 #[derive(Debug, Clone)]
@@ -87,14 +101,18 @@ impl<V: Copy + Into<f64> + Sync> SparseRows<V> {
     pub fn times(&self, x: &[f64], out: &mut [f64]) -> Result<()> {
         check_length("x", x.len(), self.column_count)?;
         check_length("out", out.len(), self.row_count())?;
-        let rows_per_chunk = self.rows_per_chunk();
-        out.par_chunks_mut(rows_per_chunk)
-            .enumerate()
-            .for_each(|(chunk, part)| {
-                for (offset, sum) in part.iter_mut().enumerate() {
-                    *sum = self.row_dot(chunk * rows_per_chunk + offset, x);
-                }
-            });
+        let mut parts = Vec::with_capacity(ROW_CHUNKS);
+        let mut rest = out;
+        for rows in self.row_chunks(ROW_CHUNKS) {
+            let (part, after) = rest.split_at_mut(rows.len());
+            parts.push((rows, part));
+            rest = after;
+        }
+        parts.into_par_iter().for_each(|(rows, part)| {
+            for (row, sum) in rows.zip(part) {
+                *sum = self.row_dot(row, x);
+            }
+        });
         Ok(())
     }
 
@@ -105,26 +123,44 @@ impl<V: Copy + Into<f64> + Sync> SparseRows<V> {
     pub fn transposed_times(&self, y: &[f64], out: &mut [f64]) -> Result<()> {
         check_length("y", y.len(), self.row_count())?;
         check_length("out", out.len(), self.column_count)?;
-        let rows_per_chunk = self.rows_per_chunk();
-        let partial: Vec<Vec<f64>> = y
-            .par_chunks(rows_per_chunk)
-            .enumerate()
-            .map(|(chunk, part)| {
+        let fitting = self.columns.len() / (STORED_PER_SUM * self.column_count).max(1);
+        let chunks = self.row_chunks(fitting.clamp(2, MOST_PARTIAL_SUMS));
+        let partial: Vec<Vec<f64>> = chunks
+            .into_par_iter()
+            .map(|rows| {
                 let mut sums = vec![0.0; self.column_count];
-                for (offset, &weight) in part.iter().enumerate() {
-                    self.add_row(chunk * rows_per_chunk + offset, weight, &mut sums);
+                for row in rows {
+                    self.add_row(row, y[row], &mut sums);
                 }
                 sums
             })
             .collect();
-        out.par_iter_mut().enumerate().for_each(|(column, sum)| {
-            *sum = partial.iter().map(|part| part[column]).sum();
-        });
+        out.par_chunks_mut(COLUMNS_AT_ONCE)
+            .enumerate()
+            .for_each(|(chunk, out)| {
+                let first = chunk * COLUMNS_AT_ONCE;
+                out.fill(0.0);
+                for part in &partial {
+                    for (sum, more) in out.iter_mut().zip(&part[first..]) {
+                        *sum += more;
+                    }
+                }
+            });
         Ok(())
     }
 
-    fn rows_per_chunk(&self) -> usize {
-        self.row_count().div_ceil(ROW_CHUNKS).max(1)
+    /// Ranges of rows that hold about as many stored values each.
+    fn row_chunks(&self, count: usize) -> Vec<std::ops::Range<usize>> {
+        let stored = self.columns.len();
+        let cut = |chunk: usize| {
+            let value = (stored * chunk / count) as i64;
+            let row = self.row_pointers.partition_point(|&start| start < value);
+            row.min(self.row_count())
+        };
+        let mut cuts: Vec<usize> = (0..count).map(cut).collect();
+        cuts.push(self.row_count());
+        cuts[0] = 0;
+        cuts.windows(2).map(|ends| ends[0]..ends[1]).collect()
     }
 
     fn row_range(&self, row: usize) -> std::ops::Range<usize> {
@@ -133,11 +169,18 @@ impl<V: Copy + Into<f64> + Sync> SparseRows<V> {
 
     fn row_dot(&self, row: usize, x: &[f64]) -> f64 {
         let range = self.row_range(row);
-        self.columns[range.clone()]
-            .iter()
-            .zip(&self.values[range])
-            .map(|(&column, &value)| value.into() * x[column as usize])
-            .sum()
+        let (columns, last_columns) = self.columns[range.clone()].as_chunks::<LANES>();
+        let (values, last_values) = self.values[range].as_chunks::<LANES>();
+        let mut sums = [0.0; LANES];
+        for (columns, values) in columns.iter().zip(values) {
+            for lane in 0..LANES {
+                sums[lane] += values[lane].into() * x[columns[lane] as usize];
+            }
+        }
+        for (lane, (&column, &value)) in last_columns.iter().zip(last_values).enumerate() {
+            sums[lane] += value.into() * x[column as usize];
+        }
+        sums.iter().sum()
     }
 
     fn add_row(&self, row: usize, weight: f64, sums: &mut [f64]) {

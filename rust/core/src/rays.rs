@@ -50,6 +50,39 @@ pub struct RayBatch {
     pub segment_blocks: Vec<i32>,
 }
 
+/// Rays of the same pairs in a similar model, from which to start.
+#[derive(Debug, Clone, Copy)]
+pub struct Earlier<'a> {
+    /// Start of each poly-line, and the end of the last.
+    pub point_offsets: &'a [i64],
+    /// Their points (grid coordinates, km).
+    pub points_km: &'a [Vec3],
+}
+
+impl<'a> Earlier<'a> {
+    fn check(&self, pairs: usize) -> Result<()> {
+        let rising = self.point_offsets.windows(2).all(|pair| pair[0] <= pair[1]);
+        let ends = (self.point_offsets.first(), self.point_offsets.last());
+        let whole = (Some(&0), Some(&(self.points_km.len() as i64)));
+        if rising && ends == whole && self.point_offsets.len() == pairs + 1 {
+            return Ok(());
+        }
+        Err(CoreError::invalid(
+            "earlier rays",
+            format!("{pairs} poly-lines, one per pair"),
+            format!(
+                "{} offsets and {} points",
+                self.point_offsets.len(),
+                self.points_km.len()
+            ),
+        ))
+    }
+
+    fn points(&self, pair: usize) -> &'a [Vec3] {
+        &self.points_km[self.point_offsets[pair] as usize..self.point_offsets[pair + 1] as usize]
+    }
+}
+
 /// Margin (rad) around the distances of a model's corners, in a wave's table.
 const DISTANCE_MARGIN_RAD: f64 = 0.01;
 /// Distances (rad) between which a direct wave may enter a model.
@@ -207,7 +240,8 @@ pub fn trace_between<C: Chart>(
 }
 
 /// Traces rays of distant events to stations inside a model. `pairs` holds
-/// indices into `waves` and `stations` (grid coordinates, km).
+/// indices into `waves` and `stations` (grid coordinates, km); rays of the same
+/// pairs in a similar model make the search cheaper.
 ///
 /// # Errors
 /// As [`trace_between`].
@@ -217,8 +251,10 @@ pub fn trace_distant(
     stations: &[Vec3],
     pairs: &[[u32; 2]],
     quality: Quality,
+    earlier: Option<Earlier<'_>>,
     monitor: &Monitor,
 ) -> Result<RayBatch> {
+    earlier.map_or(Ok(()), |earlier| earlier.check(pairs.len()))?;
     check_inside(blocks, "station", stations)?;
     check_pairs(pairs, waves.len(), stations.len())?;
     monitor.set_total(pairs.len() as u64);
@@ -250,7 +286,11 @@ pub fn trace_distant(
                 .map(|&member| {
                     let event = pairs[member][0] as usize;
                     match (&waves[event], &corners[event]) {
-                        (Some(incoming), Some(corners)) => Beginning::Wave { incoming, corners },
+                        (Some(incoming), Some(corners)) => Beginning::Wave {
+                            incoming,
+                            corners,
+                            earlier: earlier.map_or(&[][..], |earlier| earlier.points(member)),
+                        },
                         _ => Beginning::Nowhere,
                     }
                 })

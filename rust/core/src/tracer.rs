@@ -3,7 +3,8 @@
 //! bound and the Fermat refinement.
 
 use crate::blocks::Blocks;
-use crate::entry::{CornerTimes, Surface};
+use crate::course::path_along;
+use crate::entry::{CornerTimes, Surface, entry_axis_at};
 use crate::error::Result;
 use crate::fermat::{Effort, Refiner};
 use crate::frame::Chart;
@@ -19,6 +20,11 @@ use crate::vec3::Vec3;
 
 /// Added to the slack of a fine search that found nothing (block transits).
 const RETRY_SLACK: f64 = 0.1;
+/// A known ray of a similar model that gains more than this (block transits) when
+/// it settles or in the fine search around it is no guide.
+const TRUSTED_GAIN: f64 = 0.002;
+/// Added to the slack where the bound itself is checked (block transits).
+const GENEROUS_SLACK: f64 = 0.2;
 /// A wave may enter a face earlier than at its corners by about this (block
 /// transits).
 const FACE_SAG: f64 = 0.01;
@@ -51,6 +57,10 @@ pub struct Quality {
     /// How much later than the present ray a fine path may be, as a share of the
     /// mean time through a block.
     pub slack: f64,
+    /// The same slack around a known ray of a similar model.
+    pub slack_again: f64,
+    /// Refinement of that ray if the fine search finds nothing earlier.
+    pub again: Effort,
     /// Refinement before the fine search.
     pub first: Effort,
     /// Refinement after the fine search.
@@ -67,6 +77,8 @@ impl Quality {
             fine_nodes: 8,
             fine_bias: 0.0033,
             slack: 0.08,
+            slack_again: 0.03,
+            again: effort(0, 4),
             first: effort(0, 0),
             last: effort(2, 10),
         }
@@ -81,6 +93,8 @@ impl Quality {
             fine_nodes: 12,
             fine_bias: 0.0016,
             slack: 0.05,
+            slack_again: 0.02,
+            again: effort(0, 4),
             first: effort(2, 4),
             last: effort(3, 20),
         }
@@ -98,6 +112,10 @@ impl Quality {
             self.fine_bias *= (1.0 - MORE_FINE_NODES as f64 / self.fine_nodes as f64).powi(2);
         }
         self
+    }
+
+    fn slacks(&self) -> [f64; 2] {
+        [self.slack, self.slack + RETRY_SLACK]
     }
 
     /// The coarse graph's nodes in a model.
@@ -130,9 +148,27 @@ pub enum Beginning<'a> {
         incoming: &'a dyn Incoming,
         /// Its times at the surface's corners.
         corners: &'a CornerTimes,
+        /// Its ray in a similar model (grid coordinates, km); empty if unknown.
+        earlier: &'a [Vec3],
     },
     /// No direct wave comes.
     Nowhere,
+}
+
+impl<'a> Beginning<'a> {
+    fn incoming(&self) -> Option<&'a dyn Incoming> {
+        match *self {
+            Self::Wave { incoming, .. } => Some(incoming),
+            Self::Point(_) | Self::Nowhere => None,
+        }
+    }
+
+    fn point(&self) -> Option<Vec3> {
+        match self {
+            Self::Point(point) => Some(*point),
+            Self::Wave { .. } | Self::Nowhere => None,
+        }
+    }
 }
 
 /// One traced ray.
@@ -142,6 +178,31 @@ pub struct Ray {
     pub path: Path,
     /// Time outside the model (s).
     pub outside_time_s: f64,
+}
+
+/// The coarse graph's path: its times to scale the field by.
+#[derive(Debug, Clone, Copy)]
+struct GraphLeg {
+    /// Time inside the model (s).
+    inside_s: f64,
+    /// Time from the event on (s).
+    total_s: f64,
+}
+
+impl GraphLeg {
+    fn of<C: Chart>(path: &Path, blocks: &Blocks<C>, refiner: &Refiner<'_, C>) -> Self {
+        Self {
+            inside_s: path.time(blocks),
+            total_s: refiner.total_time(path),
+        }
+    }
+}
+
+/// The ray of a similar model, settled in this one.
+struct Known {
+    path: Path,
+    /// Whether it hardly changed, so that a narrow search around it will do.
+    trusted: bool,
 }
 
 /// Traces rays in one block model.
@@ -210,9 +271,22 @@ impl<'a, C: Chart> Tracer<'a, C> {
     where
         'a: 'b,
     {
-        let limit_s = self.latest_leg(receiver, beginnings);
-        self.coarse
-            .run(receiver, limit_s as f32, &mut workspace.coarse, monitor)?;
+        let points: Vec<Vec3> = beginnings.iter().filter_map(Beginning::point).collect();
+        if points.len() == beginnings.len() {
+            let slack = self.quality.slack + GENEROUS_SLACK;
+            let margin_s = (slack + LEG_MARGIN) * self.blocks.longest_transit_s();
+            self.coarse.run_to(
+                receiver,
+                &points,
+                margin_s as f32,
+                &mut workspace.coarse,
+                monitor,
+            )?;
+        } else {
+            let limit_s = self.latest_leg(receiver, beginnings) as f32;
+            self.coarse
+                .run(receiver, limit_s, &mut workspace.coarse, monitor)?;
+        }
         if let Some(surface) = self.surface {
             surface.pick_times(workspace.coarse.times(), &mut workspace.corner_times);
         }
@@ -258,7 +332,7 @@ impl<'a, C: Chart> Tracer<'a, C> {
         monitor: &Monitor,
     ) -> Result<Vec<Option<Ray>>> {
         self.coarse
-            .run(receiver, f32::INFINITY, &mut workspace.coarse, monitor)?;
+            .run_to(receiver, points, 0.0, &mut workspace.coarse, monitor)?;
         let traced = points.iter().map(|&point| {
             monitor.advance(1);
             trace_back(&self.coarse, &workspace.coarse, receiver, point).map(|path| Ray {
@@ -267,6 +341,33 @@ impl<'a, C: Chart> Tracer<'a, C> {
             })
         });
         Ok(traced.collect())
+    }
+
+    /// Searches again around a ray just traced, inside a wider bound, and returns
+    /// by how much (s) it can be earlier; zero if it cannot. The workspace must
+    /// hold the search of its receiver.
+    pub fn bound_gain<'b>(
+        &self,
+        receiver: Vec3,
+        beginning: Beginning<'b>,
+        ray: &Ray,
+        workspace: &mut Workspace<'b, C>,
+    ) -> f64
+    where
+        'a: 'b,
+    {
+        workspace.refiner.set_incoming(beginning.incoming());
+        let Some(guess) = self.first_guess(receiver, beginning, workspace) else {
+            return 0.0;
+        };
+        let graph = GraphLeg::of(&guess, self.blocks, &workspace.refiner);
+        let slacks = [self.quality.slack + GENEROUS_SLACK];
+        let found = self.search_around(receiver, beginning, &ray.path, graph, &slacks, workspace);
+        found.map_or(0.0, |mut found| {
+            workspace.refiner.refine(&mut found, self.quality.last);
+            let present_s = workspace.refiner.total_time(&ray.path);
+            (present_s - workspace.refiner.total_time(&found)).max(0.0)
+        })
     }
 
     fn trace_one<'b>(
@@ -278,51 +379,122 @@ impl<'a, C: Chart> Tracer<'a, C> {
     where
         'a: 'b,
     {
-        let mut path = self.first_guess(receiver, beginning, workspace)?;
-        workspace.refiner.set_incoming(match beginning {
-            Beginning::Wave { incoming, .. } => Some(incoming),
-            Beginning::Point(_) | Beginning::Nowhere => None,
-        });
-        let refiner = &mut workspace.refiner;
-        let graph_s = path.time(self.blocks);
-        let graph_total_s = refiner.total_time(&path);
-        refiner.refine(&mut path, self.quality.first);
-        if let Beginning::Wave { incoming, .. } = beginning
-            && let Some(mut other) = undisturbed_ray(self.blocks, incoming, receiver)
-        {
-            refiner.refine(&mut other, self.quality.first);
-            if refiner.total_time(&other) < refiner.total_time(&path) {
-                path = other;
+        workspace.refiner.set_incoming(beginning.incoming());
+        let (mut path, graph, known) = self.starting_ray(receiver, beginning, workspace)?;
+        let mut rounds: &[(&[f64], Effort)] = &[(&self.quality.slacks(), self.quality.last)];
+        let narrow = [self.quality.slack_again];
+        let both = [(&narrow[..], self.quality.again), rounds[0]];
+        if known {
+            rounds = &both;
+        }
+        for &(slacks, effort) in rounds {
+            let before_s = workspace.refiner.total_time(&path);
+            let found = self.search_around(receiver, beginning, &path, graph, slacks, workspace);
+            let refiner = &mut workspace.refiner;
+            refiner.refine(&mut path, effort);
+            if let Some(mut other) = found {
+                refiner.refine(&mut other, self.quality.last);
+                if refiner.total_time(&other) < refiner.total_time(&path) {
+                    path = other;
+                }
+            }
+            if before_s - refiner.total_time(&path) < self.trusted_gain_s() {
+                break;
             }
         }
-        let gain = graph_total_s - refiner.total_time(&path);
-        let graph_share = 1.0 - gain / graph_s;
-        let mut found = None;
-        if let Some(fine) = &self.fine {
-            found = [0.0, RETRY_SLACK].iter().find_map(|extra| {
-                let slack_s = (self.quality.slack + extra) * self.transit_s;
-                self.search_again(
-                    fine,
-                    receiver,
-                    beginning,
-                    &path,
-                    (graph_share, slack_s),
-                    workspace,
-                )
-            });
-        }
-        let refiner = &mut workspace.refiner;
-        refiner.refine(&mut path, self.quality.last);
-        if let Some(mut other) = found {
-            refiner.refine(&mut other, self.quality.last);
-            if refiner.total_time(&other) < refiner.total_time(&path) {
-                path = other;
-            }
-        }
-        let outside_time_s = refiner.outside_time(&path);
+        let outside_time_s = workspace.refiner.outside_time(&path);
         outside_time_s.is_finite().then_some(Ray {
             path,
             outside_time_s,
+        })
+    }
+
+    /// The ray to search around, the graph's leg, and whether that ray is known
+    /// from a similar model and hardly changed.
+    fn starting_ray<'b>(
+        &self,
+        receiver: Vec3,
+        beginning: Beginning<'b>,
+        workspace: &mut Workspace<'b, C>,
+    ) -> Option<(Path, GraphLeg, bool)>
+    where
+        'a: 'b,
+    {
+        let mut path = self.first_guess(receiver, beginning, workspace)?;
+        let refiner = &mut workspace.refiner;
+        let graph = GraphLeg::of(&path, self.blocks, refiner);
+        let known = self.settled_again(beginning, refiner);
+        let mut trusted = known.as_ref().is_some_and(|known| known.trusted);
+        if trusted {
+            refiner.settle(&mut path);
+        } else {
+            refiner.refine(&mut path, self.quality.first);
+            if let Some(incoming) = beginning.incoming()
+                && let Some(mut other) = undisturbed_ray(self.blocks, incoming, receiver)
+            {
+                refiner.refine(&mut other, self.quality.first);
+                if refiner.total_time(&other) < refiner.total_time(&path) {
+                    path = other;
+                }
+            }
+        }
+        match known {
+            Some(known) if refiner.total_time(&known.path) <= refiner.total_time(&path) => {
+                path = known.path;
+            }
+            _ => trusted = false,
+        }
+        Some((path, graph, trusted))
+    }
+
+    /// The known ray of a similar model, settled in this one.
+    fn settled_again<'b>(
+        &self,
+        beginning: Beginning<'b>,
+        refiner: &mut Refiner<'b, C>,
+    ) -> Option<Known>
+    where
+        'a: 'b,
+    {
+        let Beginning::Wave {
+            incoming, earlier, ..
+        } = beginning
+        else {
+            return None;
+        };
+        let mut path = path_along(self.blocks, earlier)?;
+        path.axes[0] = entry_axis_at(self.blocks, incoming, path.points[0])?;
+        let before_s = refiner.total_time(&path);
+        refiner.settle(&mut path);
+        let gain_s = before_s - refiner.total_time(&path);
+        gain_s.is_finite().then_some(Known {
+            path,
+            trusted: gain_s < self.trusted_gain_s(),
+        })
+    }
+
+    fn trusted_gain_s(&self) -> f64 {
+        TRUSTED_GAIN * self.transit_s
+    }
+
+    /// The path of the first of several ever wider fine searches around a
+    /// present one that finds any.
+    fn search_around<'b>(
+        &self,
+        receiver: Vec3,
+        beginning: Beginning<'b>,
+        present: &Path,
+        graph: GraphLeg,
+        slacks: &[f64],
+        workspace: &mut Workspace<'b, C>,
+    ) -> Option<Path>
+    where
+        'a: 'b,
+    {
+        let fine = self.fine.as_ref()?;
+        slacks.iter().find_map(|slack| {
+            let bound = (graph, slack * self.transit_s);
+            self.search_again(fine, receiver, beginning, present, bound, workspace)
         })
     }
 
@@ -336,7 +508,9 @@ impl<'a, C: Chart> Tracer<'a, C> {
         match beginning {
             Beginning::Nowhere => None,
             Beginning::Point(point) => trace_back(&self.coarse, &workspace.coarse, receiver, point),
-            Beginning::Wave { incoming, corners } => {
+            Beginning::Wave {
+                incoming, corners, ..
+            } => {
                 let surface = self.surface?;
                 let entry = surface.best_entry(corners, &workspace.corner_times)?;
                 let mut path = trace_back(&self.coarse, &workspace.coarse, receiver, entry.point)?;
@@ -354,17 +528,20 @@ impl<'a, C: Chart> Tracer<'a, C> {
         receiver: Vec3,
         beginning: Beginning<'_>,
         present: &Path,
-        (graph_share, slack_s): (f64, f64),
+        (graph, slack_s): (GraphLeg, f64),
         workspace: &mut Workspace<'_, C>,
     ) -> Option<Path> {
         let inside = present.time(self.blocks);
         let stretched = inside * (1.0 + self.fine_bias);
-        let scale = (graph_share * (1.0 + self.fine_bias)) as f32;
+        let gain_s = graph.total_s - workspace.refiner.total_time(present);
+        let scale = ((1.0 - gain_s / graph.inside_s) * (1.0 + self.fine_bias)) as f32;
         let mut limit_s = stretched + slack_s;
         let start = match beginning {
             Beginning::Nowhere => return None,
             Beginning::Point(point) => Start::Point(point),
-            Beginning::Wave { incoming, corners } => {
+            Beginning::Wave {
+                incoming, corners, ..
+            } => {
                 limit_s += workspace.refiner.outside_time(present) - corners.earliest_s;
                 let coarse = &workspace.corner_times[..];
                 self.surface?.seed(

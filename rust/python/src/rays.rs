@@ -6,7 +6,7 @@ use pyo3::prelude::*;
 use rayloom_core::blocks::Blocks;
 use rayloom_core::error::{CoreError, Result};
 use rayloom_core::frame::{FlatChart, SphereChart};
-use rayloom_core::rays::{self, Method, RayBatch};
+use rayloom_core::rays::{self, Earlier, Method, RayBatch};
 use rayloom_core::tracer::Quality;
 
 use crate::earth::{LayeredEarth, phase_named};
@@ -128,7 +128,7 @@ fn trace_between(
 /// Rays of distant events: `epicentres_km` and `source_depths_km` place them, the
 /// layered Earth brings one phase of each to the blocks.
 #[pyfunction]
-#[pyo3(signature = (model, earth, phases, epicentres_km, source_depths_km, stations_km, pairs, *, quality, coarse_nodes=None, threads=None, progress=None))]
+#[pyo3(signature = (model, earth, phases, epicentres_km, source_depths_km, stations_km, pairs, *, quality, coarse_nodes=None, earlier=None, threads=None, progress=None))]
 #[expect(
     clippy::too_many_arguments,
     reason = "keyword arguments of a Python call"
@@ -144,12 +144,20 @@ fn trace_distant(
     pairs: PyReadonlyArray2<'_, u32>,
     quality: &str,
     coarse_nodes: Option<usize>,
+    earlier: Option<(PyReadonlyArray1<'_, i64>, PyReadonlyArray2<'_, f64>)>,
     threads: Option<usize>,
     progress: Progress,
 ) -> PyResult<RayArrays> {
     let (epicentres, stations) = (rows(&epicentres_km)?, rows(&stations_km)?);
     let (depths_km, pairs) = (source_depths_km.as_slice()?, rows(&pairs)?);
     let quality = quality_named(quality, coarse_nodes)?;
+    let earlier = match &earlier {
+        Some((offsets, points)) => Some(Earlier {
+            point_offsets: offsets.as_slice()?,
+            points_km: rows(points)?,
+        }),
+        None => None,
+    };
     let phases = phases
         .iter()
         .map(|name| phase_named(name))
@@ -157,7 +165,7 @@ fn trace_distant(
     let batch = run_long(py, threads, &progress, |monitor| {
         let blocks = on_sphere(model)?;
         let waves = rays::DistantWaves::new(blocks, &earth.earth, &phases, epicentres, depths_km)?;
-        rays::trace_distant(blocks, &waves, stations, pairs, quality, monitor)
+        rays::trace_distant(blocks, &waves, stations, pairs, quality, earlier, monitor)
     })?;
     RayArrays::new(py, batch)
 }

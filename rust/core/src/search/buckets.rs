@@ -53,6 +53,11 @@ impl BucketQueue {
         self.current = self.current.min(bucket);
     }
 
+    /// No key is earlier than this (s).
+    pub fn earliest_s(&self) -> f32 {
+        self.current as f32 / self.per_bucket
+    }
+
     /// Takes a slot of the earliest bucket and clears its key.
     pub fn pop(&mut self) -> Option<u32> {
         while self.current < self.used {

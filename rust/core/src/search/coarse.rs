@@ -17,6 +17,8 @@ use crate::vec3::Vec3;
 
 /// Visits between two looks at the monitor.
 const VISITS_PER_CHECK: usize = 4096;
+/// Block visits between two looks at the wanted points.
+const VISITS_PER_LOOK: usize = 512;
 
 /// The graph of one block model.
 #[derive(Debug)]
@@ -105,6 +107,74 @@ impl<'a, C: Chart> CoarseSearch<'a, C> {
             }
         }
         Ok(())
+    }
+
+    /// As [`Self::run`], but ends once all times up to `margin_s` after the
+    /// latest of the points `wanted` (grid coordinates, km) are final.
+    ///
+    /// # Errors
+    /// [`crate::error::CoreError::Interrupted`] when the monitor asks for it.
+    pub fn run_to(
+        &self,
+        source: Vec3,
+        wanted: &[Vec3],
+        margin_s: f32,
+        field: &mut CoarseField,
+        monitor: &Monitor,
+    ) -> Result<()> {
+        self.start(source, field);
+        let mut open: Vec<Vec3> = wanted.to_vec();
+        let mut latest_s = 0.0_f32;
+        let mut limit_s = f32::INFINITY;
+        let mut visits = 0;
+        while let Some(block) = field.queue.pop() {
+            let now_s = field.queue.earliest_s();
+            if now_s > limit_s {
+                break;
+            }
+            self.visit(block, limit_s, field);
+            visits += 1;
+            if visits % VISITS_PER_LOOK == 0 {
+                monitor.check()?;
+                open.retain(|&point| {
+                    let time_s = self.time_at(source, point, field);
+                    let settled = time_s <= now_s;
+                    if settled {
+                        latest_s = latest_s.max(time_s);
+                    }
+                    !settled
+                });
+                if open.is_empty() {
+                    limit_s = latest_s + margin_s;
+                }
+            }
+        }
+        Ok(())
+    }
+
+    /// Earliest time (s) at a point, by the nodes of the blocks around it; that
+    /// of a straight way where it shares a block with the source.
+    fn time_at(&self, source: Vec3, point: Vec3, field: &CoarseField) -> f32 {
+        let home = self.blocks.around(source);
+        let mut best = f32::INFINITY;
+        for block in self.blocks.around(point) {
+            let cell = self.blocks.cell(block);
+            let base = self.lattice.base(cell);
+            let slowness = self.blocks.slowness_of(block);
+            if home.contains(&block) {
+                let way = self.blocks.chart().distance(source, point);
+                best = best.min((way * slowness) as f32);
+            }
+            for (number, node) in self.lattice.surface().iter().enumerate() {
+                let known = field.times[base + node.offset];
+                if known < best {
+                    let at = self.lattice.node_position(cell, number);
+                    let way = self.blocks.chart().distance(at, point);
+                    best = best.min(known + (way * slowness) as f32);
+                }
+            }
+        }
+        best
     }
 
     fn start(&self, source: Vec3, field: &mut CoarseField) {
