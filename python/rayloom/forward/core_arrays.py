@@ -12,7 +12,9 @@ from scipy.sparse import csr_array
 
 from rayloom import _core
 from rayloom.errors import InputError
+from rayloom.forward.bound_check import BoundCheck
 from rayloom.forward.rays import Rays
+from rayloom.forward.settings import LengthsType
 from rayloom.model import BlockGrid, SlownessModel
 from rayloom.units import EARTH_RADIUS_KM, KM_PER_DEGREE
 
@@ -103,14 +105,20 @@ def checked_pairs(pairs: ArrayLike | None, first: int, second: int) -> NDArray[n
 
 
 def rays_of(
-    grid: BlockGrid, arrays: _core.RayArrays, *, problems: dict[str, int] | None = None
+    grid: BlockGrid,
+    arrays: _core.RayArrays,
+    *,
+    lengths_dtype: LengthsType = "float64",
+    problems: dict[str, int] | None = None,
 ) -> Rays:
-    """Wrap the core's arrays."""
+    """Wrap the core's arrays, whose points change to the package's units."""
     shape = (len(arrays.time_s), grid.block_count)
-    path_lengths = csr_array((arrays.lengths_km, arrays.columns, arrays.row_pointers), shape=shape)
+    lengths_km = arrays.lengths_km.astype(lengths_dtype, copy=False)
+    path_lengths = csr_array((lengths_km, arrays.columns, arrays.row_pointers), shape=shape)
     path_lengths.has_sorted_indices = True
     path_lengths.has_canonical_format = True
-    scale = km_per_unit(grid)
+    points = arrays.points_km
+    points[:, :2] *= 1.0 / km_per_unit(grid)
     return Rays(
         grid=grid,
         time_s=arrays.time_s,
@@ -118,6 +126,7 @@ def rays_of(
         path_lengths=path_lengths,
         traced=arrays.traced,
         point_offsets=arrays.point_offsets,
-        all_points=arrays.points_km / [scale, scale, 1.0],
+        all_points=points,
         problems=problems or {},
+        bound_check=BoundCheck(*arrays.bound_check),
     )

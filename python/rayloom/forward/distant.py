@@ -24,7 +24,7 @@ from rayloom.forward.core_arrays import (
 from rayloom.forward.joining import Part, joined, trace_in_parts
 from rayloom.forward.local import require_choice, require_counts
 from rayloom.forward.rays import Rays
-from rayloom.forward.settings import DistantMethod, Quality
+from rayloom.forward.settings import DistantMethod, LengthsType, Quality
 from rayloom.model import SlownessModel
 from rayloom.survey import Events, Stations
 
@@ -54,6 +54,7 @@ def trace_distant(
     method: DistantMethod = "bent",
     quality: Quality = "standard",
     face_nodes: int | None = None,
+    lengths_dtype: LengthsType = "float64",
     previous: Rays | None = None,
     threads: int | None = None,
     executor: Executor | None = None,
@@ -88,8 +89,12 @@ def trace_distant(
     face_nodes : int, optional
         Coarse graph nodes inside each block edge, and squared inside each face (1 to
         4); by default that of the quality (2 or 3), more along longer edges.
+    lengths_dtype : {"float64", "float32"}
+        Type of the path lengths; single precision saves a third of their memory.
     previous : Rays, optional
-        Rays of the same pairs in a similar model; changes of course are counted.
+        Rays of the same pairs in the same blocks with similar slowness. Bent rays
+        start from them, which costs less, though they are still searched for; changes
+        of course are counted.
     threads : int, optional
         Number of threads; all cores by default, one with an executor. The result
         does not depend on it.
@@ -114,8 +119,10 @@ def trace_distant(
         raise InputError("distant events need a frame on the sphere", where="model")
     require_choice("method", method, get_args(DistantMethod))
     require_choice("quality", quality, get_args(Quality))
+    require_choice("lengths_dtype", lengths_dtype, get_args(LengthsType))
     require_counts(face_nodes, threads)
     pair_rows = checked_pairs(pairs, len(events), len(stations))
+    _require_same_pairs(model, previous, len(pair_rows))
     names = _phase_names(model, phases, len(pair_rows))
     if executor is not None and len(pair_rows):
         part = partial(
@@ -127,11 +134,12 @@ def trace_distant(
             method=method,
             quality=quality,
             face_nodes=face_nodes,
+            lengths_dtype=lengths_dtype,
             threads=threads or 1,
         )
         rays = trace_in_parts(
             part,
-            {"pairs": pair_rows, "phases": names},
+            {"pairs": pair_rows, "phases": names} | ({"previous": previous} if previous else {}),
             pair_rows[:, 1].astype(np.int64),
             executor=executor,
             progress=progress,
@@ -147,15 +155,33 @@ def trace_distant(
         names,
         quality,
         face_nodes,
+        lengths_dtype,
         previous if method == "bent" else None,
         threads,
         progress,
     )
     if method == "straight":
-        rays = _chords(model, rays, stations, pair_rows)
+        rays = _chords(model, rays, stations, pair_rows, lengths_dtype)
     if method != "bent":
         rays = replace(rays, time_s=rays.predict_s(model.slowness_s_per_km))
     return _compared(rays, previous)
+
+
+def _require_same_pairs(model: SlownessModel, previous: Rays | None, count: int) -> None:
+    if previous is None:
+        return
+    if len(previous) != count:
+        raise InputError(
+            f"expected rays of the same {count} pairs, got {len(previous)}", where="previous"
+        )
+    before, now = previous.grid, model.grid
+    edges = zip(
+        (before.x_edges, before.y_edges, before.depth_edges_km),
+        (now.x_edges, now.y_edges, now.depth_edges_km),
+        strict=True,
+    )
+    if before.frame != now.frame or not all(np.array_equal(*pair) for pair in edges):
+        raise InputError("expected rays through the same blocks", where="previous")
 
 
 def _compared(rays: Rays, previous: Rays | None) -> Rays:
@@ -204,6 +230,7 @@ def _first_arrivals(
     phases: Names,
     quality: Quality,
     face_nodes: int | None,
+    lengths_dtype: LengthsType,
     previous: Rays | None,
     threads: int | None,
     progress: Progress | None,
@@ -232,7 +259,7 @@ def _first_arrivals(
         threads=threads,
         progress=progress,
     )
-    rays = rays_of(grid, arrays)
+    rays = rays_of(grid, arrays, lengths_dtype=lengths_dtype)
     distance_deg = _entry_distance_deg(rays, events, pairs[used])
     far_enough = (distance_deg >= NEAREST_ENTRY_DEG) | ~np.isin(phases[used], DIRECT)
     problems = {
@@ -240,7 +267,8 @@ def _first_arrivals(
         NO_WAVE: int((~rays.traced).sum()),
         TOO_NEAR: int((rays.traced & ~far_enough).sum()),
     }
-    part = Part(rays, np.flatnonzero(used), rays.traced & far_enough)
+    kept = ~rays.traced | far_enough
+    part = Part(rays, np.flatnonzero(used), kept)
     found = {reason: number for reason, number in problems.items() if number}
     return joined(grid, [part], len(pairs), problems=found)
 
@@ -266,7 +294,11 @@ def _entry_distance_deg(rays: Rays, events: Events, pairs: NDArray[np.uint32]) -
 
 
 def _chords(
-    model: SlownessModel, rays: Rays, stations: Stations, pairs: NDArray[np.uint32]
+    model: SlownessModel,
+    rays: Rays,
+    stations: Stations,
+    pairs: NDArray[np.uint32],
+    lengths_dtype: LengthsType,
 ) -> Rays:
     grid = model.grid
     points = station_points(model, stations)[pairs[:, 1]]
@@ -276,4 +308,4 @@ def _chords(
         np.ascontiguousarray(rays.outside_time_s),
         points_km(grid, points),
     )
-    return rays_of(grid, arrays, problems=rays.problems)
+    return rays_of(grid, arrays, lengths_dtype=lengths_dtype, problems=rays.problems)

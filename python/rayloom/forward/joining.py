@@ -5,13 +5,15 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Callable, Sequence
 from concurrent.futures import Executor
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from functools import reduce
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.sparse import csr_array, vstack
 
+from rayloom.forward.bound_check import BoundCheck
 from rayloom.forward.rays import Rays
 from rayloom.model import BlockGrid
 
@@ -60,6 +62,8 @@ def joined(
     Rays
         In the order of the pairs.
     """
+    if len(parts) == 1 and _is_whole(parts[0], count):
+        return replace(parts[0].rays, problems=problems)
     rows = np.concatenate([part.rows[part.kept] for part in parts])
     order = np.argsort(rows, kind="stable")
     rows = rows[order]
@@ -84,7 +88,12 @@ def joined(
         point_offsets=_starts(rows, lengths, count),
         all_points=points,
         problems=problems,
+        bound_check=reduce(BoundCheck.joined, (part.rays.bound_check for part in parts)),
     )
+
+
+def _is_whole(part: Part, count: int) -> bool:
+    return bool(part.kept.all()) and np.array_equal(part.rows, np.arange(count))
 
 
 def _starts(rows: Rows, lengths: Rows, count: int) -> Rows:

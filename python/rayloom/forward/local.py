@@ -21,7 +21,7 @@ from rayloom.forward.core_arrays import (
 )
 from rayloom.forward.joining import trace_in_parts
 from rayloom.forward.rays import Rays
-from rayloom.forward.settings import LocalMethod, Quality
+from rayloom.forward.settings import LengthsType, LocalMethod, Quality
 from rayloom.model import BlockGrid, SlownessModel
 
 Progress = Callable[[int, int], object]
@@ -38,6 +38,7 @@ def trace(
     method: LocalMethod = "bent",
     quality: Quality = "standard",
     face_nodes: int | None = None,
+    lengths_dtype: LengthsType = "float64",
     threads: int | None = None,
     executor: Executor | None = None,
     progress: Progress | None = None,
@@ -61,6 +62,8 @@ def trace(
     face_nodes : int, optional
         Coarse graph nodes inside each block edge, and squared inside each face (1 to
         4); by default that of the quality (2 or 3), more along longer edges.
+    lengths_dtype : {"float64", "float32"}
+        Type of the path lengths; single precision saves a third of their memory.
     threads : int, optional
         Number of threads; all cores by default, one with an executor. The result
         does not depend on it.
@@ -87,6 +90,7 @@ def trace(
     receiver_points = _inside("receivers", model.grid, receivers)
     require_choice("method", method, get_args(LocalMethod))
     require_choice("quality", quality, get_args(Quality))
+    require_choice("lengths_dtype", lengths_dtype, get_args(LengthsType))
     require_counts(face_nodes, threads)
     pair_rows = checked_pairs(pairs, len(source_points), len(receiver_points))
     if executor is not None and len(pair_rows):
@@ -98,6 +102,7 @@ def trace(
             method=method,
             quality=quality,
             face_nodes=face_nodes,
+            lengths_dtype=lengths_dtype,
             threads=threads or 1,
         )
         return trace_in_parts(
@@ -118,7 +123,7 @@ def trace(
         threads=threads,
         progress=progress,
     )
-    return rays_of(model.grid, arrays)
+    return rays_of(model.grid, arrays, lengths_dtype=lengths_dtype)
 
 
 def require_counts(face_nodes: int | None, threads: int | None) -> None:

@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy.sparse import csr_array
 
+from rayloom.forward.bound_check import BoundCheck
 from rayloom.model import BlockGrid
 
 Floats = NDArray[np.float64]
@@ -29,7 +30,7 @@ class Rays:
     outside_time_s : ndarray, shape (k,)
         The part of them outside the blocks, s; zero for sources inside.
     path_lengths : csr_array, shape (k, grid.block_count)
-        Length of each ray in each block, km.
+        Length of each ray in each block, km; in single precision if asked for.
     traced : ndarray of bool, shape (k,)
         Whether a ray exists.
     point_offsets : ndarray of int, shape (k + 1,)
@@ -41,6 +42,8 @@ class Rays:
         Rays that took another course than in the rays they were compared with.
     problems : dict of str to int
         Why rays are missing, with their number.
+    bound_check : BoundCheck
+        What a wider search found for a hundredth of the bent rays.
     """
 
     grid: BlockGrid
@@ -52,9 +55,25 @@ class Rays:
     all_points: Floats
     basin_jumps: int = 0
     problems: dict[str, int] = field(default_factory=dict)
+    bound_check: BoundCheck = field(default_factory=BoundCheck)
 
     def __len__(self) -> int:
         return len(self.time_s)
+
+    def __getitem__(self, rows: NDArray[np.int64]) -> Rays:
+        """Return the rays of some rows, in their order."""
+        starts, lengths = self.point_offsets[rows], np.diff(self.point_offsets)[rows]
+        offsets = np.concatenate([[0], np.cumsum(lengths)])
+        within = np.arange(offsets[-1]) - np.repeat(offsets[:-1], lengths)
+        return Rays(
+            grid=self.grid,
+            time_s=self.time_s[rows],
+            outside_time_s=self.outside_time_s[rows],
+            path_lengths=self.path_lengths[rows],
+            traced=self.traced[rows],
+            point_offsets=offsets,
+            all_points=self.all_points[np.repeat(starts, lengths) + within],
+        )
 
     def __repr__(self) -> str:
         return (

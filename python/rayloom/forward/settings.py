@@ -9,6 +9,7 @@ from pydantic import BaseModel, ConfigDict, Field
 DistantMethod = Literal["bent", "reference", "straight"]
 LocalMethod = Literal["bent", "graph", "straight"]
 Quality = Literal["standard", "thorough"]
+LengthsType = Literal["float64", "float32"]
 
 
 class ForwardSettings(BaseModel):

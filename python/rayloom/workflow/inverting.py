@@ -71,6 +71,8 @@ def run_inversion(
     if isinstance(result.rays, Rays):
         for problem, count in result.rays.problems.items():
             reporter.note(f"{count} rays missing: {problem}")
+        if result.rays.bound_check.worth_telling:
+            reporter.note(str(result.rays.bound_check))
     reporter.note(f"stopped: {result.stopped_because}")
     remarks = {"stopped_because": result.stopped_because}
     if result.prior_sentence():

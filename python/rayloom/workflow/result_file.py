@@ -14,7 +14,7 @@ import numpy as np
 from scipy.sparse import csr_array
 
 from rayloom.errors import InputError
-from rayloom.forward import Rays
+from rayloom.forward import BoundCheck, Rays
 from rayloom.inversion import (
     Counts,
     InversionResult,
@@ -173,6 +173,7 @@ def _ray_arrays(rays: object) -> dict[str, Any]:
     arrays["ray_problems"] = np.array([*rays.problems], dtype=np.str_)
     arrays["ray_problem_counts"] = np.array([*rays.problems.values()], dtype=np.int64)
     arrays["ray_basin_jumps"] = np.array(rays.basin_jumps)
+    arrays["ray_bound_check"] = np.array(astuple(rays.bound_check))
     return arrays
 
 
@@ -189,9 +190,15 @@ def _rays(arrays: dict[str, Any], grid: BlockGrid) -> Rays:
         grid=grid,
         path_lengths=paths,
         basin_jumps=int(arrays["ray_basin_jumps"]),
+        bound_check=_bound_check(arrays),
         problems=dict(problems),
         **kept,
     )
+
+
+def _bound_check(arrays: dict[str, Any]) -> BoundCheck:
+    checked, improved, largest_gain_s = arrays["ray_bound_check"].tolist()
+    return BoundCheck(int(checked), int(improved), largest_gain_s)
 
 
 def _state_arrays(state: InversionState) -> dict[str, Any]:

@@ -89,11 +89,7 @@ pub struct Entry {
 
 /// The axis of the side of the model that a wave enters most steeply at a point
 /// of the surface (grid coordinates, km); `None` where it does not enter.
-pub fn entry_axis_at<C: Chart>(
-    blocks: &Blocks<C>,
-    wave: &dyn Incoming,
-    point: Vec3,
-) -> Option<u8> {
+pub fn entry_axis_at<C: Chart>(blocks: &Blocks<C>, wave: &dyn Incoming, point: Vec3) -> Option<u8> {
     let arrival = wave.at(point)?;
     (0..6)
         .filter(|&side| {

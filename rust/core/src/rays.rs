@@ -1,6 +1,7 @@
 //! Whole data sets of rays, traced in parallel: [`RayBatch`].
 
 use std::f64::consts::PI;
+use std::ops::Range;
 
 use rayon::prelude::*;
 
@@ -12,7 +13,7 @@ use crate::fermat::straight_path;
 use crate::frame::{Chart, SphereChart};
 use crate::monitor::Monitor;
 use crate::path::Path;
-use crate::tracer::{Beginning, Quality, Ray, Tracer};
+use crate::tracer::{Beginning, Quality, Ray, Tracer, Workspace};
 use crate::vec3::{Vec3, dot};
 
 /// How a path is found.
@@ -44,10 +45,51 @@ pub struct RayBatch {
     pub lengths_km: Vec<f64>,
     /// Start of each poly-line, and the end of the last.
     pub point_offsets: Vec<i64>,
-    /// Grid coordinates (km) of all poly-lines, `[x, y, depth]` in turn.
-    pub points_km: Vec<f64>,
-    /// Block of each segment of the poly-lines (one fewer than points, per ray).
+    /// Grid coordinates (km) of all poly-lines.
+    pub points_km: Vec<Vec3>,
+    /// Block of the segment that begins at each point; −1 at a poly-line's end.
     pub segment_blocks: Vec<i32>,
+    /// What a second search inside a wider bound found for some of the rays.
+    pub bound_check: BoundCheck,
+}
+
+/// Outcome of second searches inside a wider bound; the rays stay as they are.
+#[derive(Debug, Clone, Copy, Default, PartialEq)]
+pub struct BoundCheck {
+    /// Rays searched again.
+    pub checked: usize,
+    /// Those found earlier by more than [`BoundCheck::COUNTS_S`].
+    pub improved: usize,
+    /// Largest gain (s).
+    pub largest_gain_s: f64,
+}
+
+impl BoundCheck {
+    /// Gains up to this (s) are left out of the count.
+    pub const COUNTS_S: f64 = 1e-3;
+    /// One ray in so many is searched again.
+    pub const ONE_IN: u64 = 100;
+
+    /// Whether the ray of a pair is searched again: about one per
+    /// [`Self::ONE_IN`], scattered over the pairs.
+    fn takes(pair: usize) -> bool {
+        let scattered = (pair as u64).wrapping_mul(0x9E37_79B9_7F4A_7C15) >> 32;
+        (scattered * Self::ONE_IN) >> 32 == 0
+    }
+
+    fn add(&mut self, gain_s: f64) {
+        self.join(Self {
+            checked: 1,
+            improved: usize::from(gain_s > Self::COUNTS_S),
+            largest_gain_s: gain_s,
+        });
+    }
+
+    fn join(&mut self, other: Self) {
+        self.checked += other.checked;
+        self.improved += other.improved;
+        self.largest_gain_s = self.largest_gain_s.max(other.largest_gain_s);
+    }
 }
 
 /// Rays of the same pairs in a similar model, from which to start.
@@ -214,7 +256,7 @@ pub fn trace_between<C: Chart>(
     let quality = quality.suited_to(blocks);
     let lattice = quality.lattice(blocks);
     let tracer = Tracer::new(blocks, &lattice, None, quality);
-    let rays = per_group(
+    per_group(
         pairs,
         near,
         || tracer.workspace(),
@@ -224,19 +266,40 @@ pub fn trace_between<C: Chart>(
                 .iter()
                 .map(|&member| ends[far][pairs[member][far] as usize])
                 .collect();
-            let mut rays = if method == Method::Graph {
-                tracer.graph_paths(goal, &points, workspace, monitor)?
+            let (mut rays, check) = if method == Method::Graph {
+                let paths = tracer.graph_paths(goal, &points, workspace, monitor)?;
+                (paths, BoundCheck::default())
             } else {
                 let beginnings: Vec<_> = points.into_iter().map(Beginning::Point).collect();
-                tracer.trace_to(goal, &beginnings, workspace, monitor)?
+                traced_and_checked(&tracer, goal, (&beginnings, members), workspace, monitor)?
             };
             if from_sources {
                 rays.iter_mut().flatten().for_each(|ray| ray.path.reverse());
             }
-            Ok(rays)
+            Ok(RayBatch {
+                bound_check: check,
+                ..pack(blocks, rays)
+            })
         },
-    )?;
-    Ok(pack(blocks, rays))
+    )
+}
+
+/// The rays of some pairs to one receiver, and the check of their bound.
+fn traced_and_checked<'b, C: Chart>(
+    tracer: &Tracer<'b, C>,
+    receiver: Vec3,
+    (beginnings, members): (&[Beginning<'b>], &[usize]),
+    workspace: &mut Workspace<'b, C>,
+    monitor: &Monitor,
+) -> Result<(Vec<Option<Ray>>, BoundCheck)> {
+    let rays = tracer.trace_to(receiver, beginnings, workspace, monitor)?;
+    let mut check = BoundCheck::default();
+    for ((ray, &beginning), &member) in rays.iter().zip(beginnings).zip(members) {
+        if let (Some(ray), true) = (ray, BoundCheck::takes(member)) {
+            check.add(tracer.bound_gain(receiver, beginning, ray, workspace));
+        }
+    }
+    Ok((rays, check))
 }
 
 /// Traces rays of distant events to stations inside a model. `pairs` holds
@@ -276,7 +339,7 @@ pub fn trace_distant(
         .map(|wave| wave.as_ref().map(|wave| surface.sample(wave)))
         .collect();
     let tracer = Tracer::new(blocks, &lattice, Some(&surface), quality);
-    let rays = per_group(
+    per_group(
         pairs,
         1,
         || tracer.workspace(),
@@ -296,10 +359,15 @@ pub fn trace_distant(
                 })
                 .collect();
             let station = stations[pairs[members[0]][1] as usize];
-            tracer.trace_to(station, &beginnings, workspace, monitor)
+            let found = (&beginnings[..], members);
+            let (rays, bound_check) =
+                traced_and_checked(&tracer, station, found, workspace, monitor)?;
+            Ok(RayBatch {
+                bound_check,
+                ..pack(blocks, rays)
+            })
         },
-    )?;
-    Ok(pack(blocks, rays))
+    )
 }
 
 /// Straight chords from given entry points to stations; `outside_time_s` is
@@ -358,25 +426,76 @@ fn per_group<W>(
     pairs: &[[u32; 2]],
     by: usize,
     workspace: impl Fn() -> W + Sync + Send,
-    work: impl Fn(&mut W, &[usize]) -> Result<Vec<Option<Ray>>> + Sync + Send,
-) -> Result<Vec<Option<Ray>>> {
+    work: impl Fn(&mut W, &[usize]) -> Result<RayBatch> + Sync + Send,
+) -> Result<RayBatch> {
     let mut order: Vec<usize> = (0..pairs.len()).collect();
     order.sort_by_key(|&pair| (pairs[pair][by], pair));
     let groups: Vec<&[usize]> = order
         .chunk_by(|&a, &b| pairs[a][by] == pairs[b][by])
         .collect();
-    let results = groups
+    let batches = groups
         .par_iter()
         .with_max_len(1)
         .map_init(workspace, |workspace, members| work(workspace, members))
         .collect::<Result<Vec<_>>>()?;
-    let mut rays = vec![None; pairs.len()];
-    for (members, found) in groups.iter().zip(results) {
-        for (&member, ray) in members.iter().zip(found) {
-            rays[member] = ray;
+    Ok(in_order(pairs.len(), &groups, batches))
+}
+
+/// Joins batches; ray `k` of each is that of pair `groups[…][k]`. Arrays are
+/// moved one after the other, so that hardly more than one exists twice.
+fn in_order(count: usize, groups: &[&[usize]], mut batches: Vec<RayBatch>) -> RayBatch {
+    let mut places = vec![(0, 0); count];
+    for (batch, members) in groups.iter().enumerate() {
+        for (ray, &member) in members.iter().enumerate() {
+            places[member] = (batch, ray);
         }
     }
-    Ok(rays)
+    let one = |_: &RayBatch, ray: usize| ray..ray + 1;
+    let row = |batch: &RayBatch, ray: usize| batch.row(ray);
+    let line = |batch: &RayBatch, ray: usize| batch.line(ray);
+    let ends = |range: &dyn Fn(&RayBatch, usize) -> Range<usize>| {
+        let mut ends = vec![0_i64];
+        for &(batch, ray) in &places {
+            ends.push(ends[ends.len() - 1] + range(&batches[batch], ray).len() as i64);
+        }
+        ends
+    };
+    let (row_pointers, point_offsets) = (ends(&row), ends(&line));
+    let mut bound_check = BoundCheck::default();
+    for batch in &batches {
+        bound_check.join(batch.bound_check);
+    }
+    let parts = &mut batches;
+    RayBatch {
+        traced: moved(&places, parts, |batch| &mut batch.traced, one),
+        time_s: moved(&places, parts, |batch| &mut batch.time_s, one),
+        outside_time_s: moved(&places, parts, |batch| &mut batch.outside_time_s, one),
+        columns: moved(&places, parts, |batch| &mut batch.columns, row),
+        lengths_km: moved(&places, parts, |batch| &mut batch.lengths_km, row),
+        points_km: moved(&places, parts, |batch| &mut batch.points_km, line),
+        segment_blocks: moved(&places, parts, |batch| &mut batch.segment_blocks, line),
+        row_pointers,
+        point_offsets,
+        bound_check,
+    }
+}
+
+/// One array of all batches, the part of every ray in the order of `places`.
+fn moved<T: Copy>(
+    places: &[(usize, usize)],
+    batches: &mut [RayBatch],
+    array: impl Fn(&mut RayBatch) -> &mut Vec<T>,
+    part: impl Fn(&RayBatch, usize) -> Range<usize>,
+) -> Vec<T> {
+    let arrays: Vec<Vec<T>> = batches
+        .iter_mut()
+        .map(|batch| std::mem::take(array(batch)))
+        .collect();
+    let mut all = Vec::with_capacity(arrays.iter().map(Vec::len).sum());
+    for &(batch, ray) in places {
+        all.extend_from_slice(&arrays[batch][part(&batches[batch], ray)]);
+    }
+    all
 }
 
 fn distinct(pairs: &[[u32; 2]], column: usize) -> usize {
@@ -443,7 +562,7 @@ fn pack<C: Chart>(blocks: &Blocks<C>, rays: Vec<Option<Ray>>) -> RayBatch {
         batch.columns.extend(row.iter().map(|entry| entry.0 as i32));
         batch.lengths_km.extend(row.iter().map(|entry| entry.1));
         batch.row_pointers.push(batch.columns.len() as i64);
-        batch.point_offsets.push((batch.points_km.len() / 3) as i64);
+        batch.point_offsets.push(batch.points_km.len() as i64);
         batch.time_s.push(inside + outside);
         batch.outside_time_s.push(outside);
     }
@@ -461,8 +580,17 @@ fn segment_lengths<C: Chart>(blocks: &Blocks<C>, path: &Path) -> Vec<(u32, f64)>
 
 impl RayBatch {
     fn append_points(&mut self, path: &Path) {
-        self.points_km.extend(path.points.iter().flatten());
+        self.points_km.extend(&path.points);
         self.segment_blocks
             .extend(path.blocks.iter().map(|&block| block as i32));
+        self.segment_blocks.push(-1);
+    }
+
+    fn row(&self, ray: usize) -> Range<usize> {
+        self.row_pointers[ray] as usize..self.row_pointers[ray + 1] as usize
+    }
+
+    fn line(&self, ray: usize) -> Range<usize> {
+        self.point_offsets[ray] as usize..self.point_offsets[ray + 1] as usize
     }
 }

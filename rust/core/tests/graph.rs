@@ -139,3 +139,31 @@ fn times_equal_dijkstra_on_the_sphere() {
         agree(&model, per_edge, &mut random);
     }
 }
+
+#[test]
+fn a_search_to_points_has_the_same_times_as_far_as_asked() {
+    let mut random = Random(4);
+    let axes = [30, 24, 20].map(|count| uneven_edges(count, 0.0, 10.0, &mut random));
+    let model = rough_model(FlatChart, axes, 0.2, &mut random);
+    let lattice = Lattice::new(&model, 2);
+    let search = CoarseSearch::new(&model, &lattice);
+    let source = [40.0, 50.0, 30.0];
+    let wanted = [[70.0, 60.0, 50.0], [41.0, 90.0, 30.0]];
+    let (mut whole, mut part) = (CoarseField::default(), CoarseField::default());
+    search
+        .run(source, f32::INFINITY, &mut whole, &Monitor::default())
+        .expect("nobody interrupts");
+    search
+        .run_to(source, &wanted, 1.0, &mut part, &Monitor::default())
+        .expect("nobody interrupts");
+    let least = wanted.map(|point| rayloom_core::vec3::distance(source, point) / 7.2);
+    let limit = 1.0 + least[0].max(least[1]) as f32;
+    let mut later = 0;
+    for (&whole, &part) in whole.times().iter().zip(part.times()) {
+        if whole <= limit {
+            assert!((whole - part).abs() <= 1e-6 * whole, "{part} for {whole}");
+        }
+        later += usize::from(part.is_infinite() && whole.is_finite());
+    }
+    assert!(later > whole.times().len() / 4, "{later} nodes were spared");
+}

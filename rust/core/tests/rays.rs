@@ -4,6 +4,7 @@ mod common;
 
 use common::{Random, edges, point_inside, rough_model, uneven_edges};
 use rayloom_core::blocks::Blocks;
+use rayloom_core::course::path_along;
 use rayloom_core::frame::{Chart, FlatChart, SphereChart};
 use rayloom_core::monitor::Monitor;
 use rayloom_core::rays::{Method, RayBatch, trace_between};
@@ -32,15 +33,10 @@ fn trace<C: Chart>(blocks: &Blocks<C>, ends: [&[Vec3]; 2], choice: (Method, Qual
 /// Each segment lies in its block, neighbours share a face, and the time is the
 /// sum of slowness times length.
 fn check_polylines<C: Chart>(blocks: &Blocks<C>, rays: &RayBatch) {
-    let mut first_segment = 0;
     for ray in 0..rays.time_s.len() {
         let range = rays.point_offsets[ray] as usize..rays.point_offsets[ray + 1] as usize;
-        let points: Vec<Vec3> = rays.points_km[3 * range.start..3 * range.end]
-            .chunks(3)
-            .map(|point| [point[0], point[1], point[2]])
-            .collect();
-        let sequence = &rays.segment_blocks[first_segment..first_segment + points.len() - 1];
-        first_segment += sequence.len();
+        let points = &rays.points_km[range.clone()];
+        let sequence = &rays.segment_blocks[range.start..range.end - 1];
         let mut time = 0.0;
         for (ends, &block) in points.windows(2).zip(sequence) {
             let block = block as u32;
@@ -58,6 +54,8 @@ fn check_polylines<C: Chart>(blocks: &Blocks<C>, rays: &RayBatch) {
             assert_eq!(steps, 1, "blocks {a:?} and {b:?} share no face");
         }
         assert!((time - rays.time_s[ray]).abs() <= 1e-9 * time);
+        let along = path_along(blocks, points).expect("the poly-line runs from block to block");
+        assert!(along.time(blocks) <= rays.time_s[ray] + 1e-5);
         let row = rays.row_pointers[ray] as usize..rays.row_pointers[ray + 1] as usize;
         let product: f64 = rays.columns[row.clone()]
             .iter()
@@ -79,6 +77,7 @@ fn check_model<C: Chart>(blocks: &Blocks<C>, random: &mut Random) {
         assert!(rays.traced.iter().all(|&traced| traced));
     }
     check_polylines(blocks, &bent);
+    assert!(bent.bound_check.checked > 0);
     check_polylines(blocks, &graph);
     for ray in 0..bent.time_s.len() {
         assert!(bent.time_s[ray] <= graph.time_s[ray] + 1e-9);

@@ -64,11 +64,13 @@ struct RayArrays {
     lengths_km: Py<PyArray1<f64>>,
     point_offsets: Py<PyArray1<i64>>,
     points_km: Py<PyArray2<f64>>,
+    bound_check: (usize, usize, f64),
 }
 
 impl RayArrays {
     fn new(py: Python<'_>, batch: RayBatch) -> PyResult<Self> {
-        let points = batch.points_km.len() / 3;
+        let points = batch.points_km.len();
+        let check = batch.bound_check;
         Ok(Self {
             traced: batch.traced.into_pyarray(py).unbind(),
             time_s: batch.time_s.into_pyarray(py).unbind(),
@@ -79,9 +81,11 @@ impl RayArrays {
             point_offsets: batch.point_offsets.into_pyarray(py).unbind(),
             points_km: batch
                 .points_km
+                .into_flattened()
                 .into_pyarray(py)
                 .reshape([points, 3])?
                 .unbind(),
+            bound_check: (check.checked, check.improved, check.largest_gain_s),
         })
     }
 }
