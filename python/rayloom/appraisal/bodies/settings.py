@@ -37,7 +37,7 @@ class BodySettings(BaseModel):
         "terms and blocks cannot be told apart there, and leak tests fix or free them.",
     )
     squeezing_size: int = Field(
-        default=500,
+        default=800,
         ge=50,
         le=5000,
         description="Combinations of the data that squeezing works on; more see more and cost "
