@@ -97,9 +97,12 @@ def _model_lines(folder: RunFolder, remarks: Mapping[str, str]) -> list[tuple[st
     first: Any = history.iloc[0]
     last: Any = history.iloc[-1]
     suspects = int(last["suspected_outliers"])
-    chi2 = f"chi2 {last['chi2']:.0f}"
+    chi2 = f"chi2 {last['chi2']:.0f}, without suspected outliers {last['chi2_kept']:.0f}"
     if math.isfinite(last["chi2_expected"]):
-        chi2 += f" ({last['chi2_expected']:.0f} expected if the uncertainties are right)"
+        chi2 += (
+            f" ({last['chi2_expected']:.0f} and {last['chi2_kept_expected']:.0f}, rms "
+            f"{last['rms_kept_expected_s']:.3f} s, expected if the uncertainties are right)"
+        )
     return [
         (
             "misfit",
