@@ -22,6 +22,7 @@ SUBJECTS = {
     "appraisal": "samples, probes, restorations, bootstrap and squeezing of 6,000 residuals",
     "squeezing": "power of squeezing and coverage of body intervals on the demo's survey",
     "comparison": "straight, reference and bent rays at equal misfit on a known structure",
+    "tradeoff": "what the trade-off recommends, for truths drawn from a prior",
     "solver": "warm starts, column scaling, merged blocks, errors of station terms",
     "screening": "faults planted in surveys against what the check finds, and clean surveys",
 }
