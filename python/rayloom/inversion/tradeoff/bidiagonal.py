@@ -195,7 +195,8 @@ class _Basis:
 
     @property
     def vectors(self) -> Floats:
-        return self._store[: self._count].copy()
+        vectors: Floats = self._store[: self._count]
+        return vectors
 
     @property
     def last(self) -> Floats:

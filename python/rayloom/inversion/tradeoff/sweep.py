@@ -17,6 +17,7 @@ from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]
 from rayloom.inversion.assembly import block_prior
 from rayloom.inversion.forward_map import Report
 from rayloom.inversion.linearised import LinearisedProblem
+from rayloom.inversion.priors import Prior
 from rayloom.inversion.settings import InversionSettings
 from rayloom.inversion.tradeoff.agreement import Agreement
 from rayloom.inversion.tradeoff.bidiagonal import Bidiagonal
@@ -257,17 +258,7 @@ class _Sweep:
         self._crossed[problem.system.groups[0].matrix.indices] = True
 
     def run(self) -> Tradeoff:
-        measured = [
-            measure_curve(
-                self._system.with_prior(prior),
-                self._problem.target_s,
-                self._damping,
-                free_count=self._problem.free_count,
-                accuracy=self._accuracy,
-                step=self._step,
-            )
-            for prior in self._priors
-        ]
+        measured = [self._measure(prior) for prior in self._priors]
         scores = None
         if self._settings.folds >= 2:
             scores = cross_validate(
@@ -279,17 +270,30 @@ class _Sweep:
                 accuracy=self._accuracy,
                 step=self._step,
             )
-        return self._gather([c for c, _ in measured], [b for _, b in measured], scores)
+        return self._gather([c for c, _ in measured], [m for _, m in measured], scores)
+
+    def _measure(self, prior: Prior) -> tuple[Curve, list[Floats]]:
+        """Measure one prior at every strength; the large basis does not outlive the call."""
+        system = self._system.with_prior(prior)
+        curve, found = measure_curve(
+            system,
+            self._problem.target_s,
+            self._damping,
+            free_count=self._problem.free_count,
+            accuracy=self._accuracy,
+            step=self._step,
+        )
+        return curve, self._models(system, found)
 
     def _gather(
-        self, curves: list[Curve], found: list[Bidiagonal], scores: EventScores | None
+        self, curves: list[Curve], models: list[list[Floats]], scores: EventScores | None
     ) -> Tradeoff:
         chosen = recommend(curves, scores)
         rows: list[TriedPrior] = []
         alike: list[Floats] = []
         best = np.zeros(self._problem.model.grid.shape)
         for index, curve in enumerate(curves):
-            for column, percent in enumerate(self._models(index, found[index])):
+            for column, percent in enumerate(models[index]):
                 row = self._row(index, column, curve, percent, scores, chosen)
                 rows.append(row)
                 if row.equally_good:
@@ -308,16 +312,16 @@ class _Sweep:
             converged=all(curve.converged for curve in curves),
         )
 
-    def _models(self, index: int, found: Bidiagonal) -> Iterator[Floats]:
+    def _models(self, system: MarginalSystem, found: Bidiagonal) -> list[Floats]:
         """Velocity perturbations of every strength, percent."""
-        system = self._system.with_prior(self._priors[index])
+        models = []
         for damping in self._damping.tolist():
             final = system.final_residual(found.residual(damping))
             white = system.unknowns(final, damping=damping)
             fractional = self._problem.prior_mean + system.blocks.parameters(white)[0]
-            yield (100.0 * (1.0 / (1.0 + fractional) - 1.0)).reshape(
-                self._problem.model.grid.shape
-            )
+            percent = 100.0 * (1.0 / (1.0 + fractional) - 1.0)
+            models.append(percent.reshape(self._problem.model.grid.shape))
+        return models
 
     def _row(
         self,
