@@ -121,17 +121,30 @@ def test_resolved_parameters_equal_the_trace_of_the_dense_resolution(
     assert compressed.resolved == pytest.approx(float(np.sum(values / (1.0 + values))), rel=1e-6)
 
 
-@pytest.mark.parametrize("factor", [1.0, 3.0])
-def test_p_values_are_uniform_where_the_squeezed_model_holds(
+def p_values_under_the_null(
     problem: LinearisedProblem, few: CompressedData, factor: float
-) -> None:
-    """200 truths of the prior's size, then of three times that: Kolmogorov-Smirnov p > 0.01."""
+) -> Floats:
     forbidden = below(problem, CUT_KM)
-    p_values = [
-        squeeze(data, forbidden, simulations=200, seed=number).p_value
+    tests = [
+        squeeze(data, forbidden, simulations=200, seed=number)
         for number, data in enumerate(truths(problem, few, 200, factor))
     ]
-    assert kstest(p_values, "uniform").pvalue > 0.01
+    return np.array([test.p_value for test in tests])
+
+
+def test_p_values_are_uniform_where_the_squeezed_model_holds(
+    problem: LinearisedProblem, few: CompressedData
+) -> None:
+    """200 truths drawn from the squeezed prior: Kolmogorov-Smirnov p > 0.01."""
+    assert kstest(p_values_under_the_null(problem, few, 1.0), "uniform").pvalue > 0.01
+
+
+def test_a_prior_that_expects_too_little_raises_no_false_alarms(
+    problem: LinearisedProblem, few: CompressedData
+) -> None:
+    """200 truths of three times the prior's size: 5 % below 0.05, two standard errors allowed."""
+    false_alarms = np.sum(p_values_under_the_null(problem, few, 3.0) < 0.05)
+    assert false_alarms <= 10 + 2.0 * np.sqrt(200 * 0.05 * 0.95)
 
 
 def test_a_deeper_column_is_detected(
