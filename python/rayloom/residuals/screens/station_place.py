@@ -24,7 +24,7 @@ _SIGMAS: Final = 5.0
 _OTHERS: Final = 4.0
 _EXPLAINED_SHARE: Final = 0.6
 _LOST_SHARE: Final = 0.5
-_GROSS: Final = ("gross_residual", "outside_distance_window", "no_arrival", "too_few_picks")
+_GROSS: Final = ("gross_residual", "outside_distance_window", "no_arrival")
 _STEPS: Final = 12
 _LARGEST_STEP_DEG: Final = 3.0
 _LOCATED_SCATTER_S: Final = 2.0
@@ -95,7 +95,7 @@ def screen_station_places(nearby: Nearby, settings: CheckSettings) -> list[Findi
     evidence = nearby.pattern.evidence
     lost = set() if evidence.ready else _lost_stations(evidence)
     found = [_located(nearby.pattern, label) for label in sorted(lost)]
-    findings = [one for one in found if one is not None]
+    findings = [one for one in found if one and one.value >= settings.station_shift_km]
     return findings + _shifted(nearby, settings, {one.who for one in findings})
 
 
