@@ -42,17 +42,18 @@ def finish(outcome: Outcome, report: Report | None) -> Finish:
     """
     problem, traced, fit = outcome.problem, outcome.traced, outcome.fit
     suspected = suspected_outliers(fit, outlier_std=problem.settings.outlier_std)
+    system = problem.system(traced, fit.weights)
     names = [group.name for group in problem.linear_groups]
     deviation = None
     if problem.settings.station_term_errors and "station_terms" in names:
         deviation = group_standard_deviation(
-            problem.system(traced, fit.weights),
+            system,
             "station_terms",
             progress=lambda done, total: _tell(report, done, total),
         )
     return Finish(
         station_term_std=deviation,
-        structure=structure_demand(problem, traced, traced.active & ~suspected),
+        structure=structure_demand(problem, traced, system, traced.active & ~suspected),
     )
 
 

@@ -56,7 +56,7 @@ class StructureDemand:
 
 
 def structure_demand(
-    problem: Problem, traced: TracedModel, kept: NDArray[np.bool_]
+    problem: Problem, traced: TracedModel, system: WhitenedSystem, kept: NDArray[np.bool_]
 ) -> StructureDemand | None:
     """Test the last model against noise alone.
 
@@ -74,6 +74,8 @@ def structure_demand(
         The problem.
     traced : TracedModel
         The last model.
+    system : WhitenedSystem
+        The problem linearised about it, under any weights.
     kept : (rows,) bool array
         Rows to trust.
 
@@ -83,7 +85,7 @@ def structure_demand(
         None where ``trace_probes`` is 0 or too few rows are left.
     """
     probes = problem.settings.trace_probes
-    system = problem.system(traced, kept.astype(np.float64))
+    system = system.with_means(problem.means(kept.astype(np.float64)))
     data = system.whiten_rows(traced.unexplained_s + system.seconds(traced.white))
     if probes == 0 or not np.any(kept):
         return None
