@@ -182,9 +182,9 @@ def test_scan_brackets_the_depth_range_of_a_column(
     lower = scan_depths(case, grid, "below", columns=columns)
     upper = scan_depths(case, grid, "above", columns=columns)
     assert lower.depth_km.tolist() == grid.depth_edges_km[1:-1].tolist()
-    assert 120.0 <= lower.demanded_km() <= 200.0
-    assert 80.0 <= upper.demanded_km() <= 160.0
-    assert upper.demanded_km() <= lower.demanded_km()
+    assert 120.0 <= lower.demanded_km(0.05) <= 200.0
+    assert 80.0 <= upper.demanded_km(0.05) <= 160.0
+    assert upper.demanded_km(0.05) <= lower.demanded_km(0.05)
 
 
 def test_noise_alone_demands_nothing(
