@@ -20,7 +20,21 @@ from rayloom.cli.console import BarReporter, LineReporter
 from rayloom.cli.teaching import keep_examples
 from run_folder_cases import write_run_folder, write_small_survey
 
-COMMANDS = ("demo", "init", "run", "residuals", "invert", "export", "ratio")
+COMMANDS = (
+    "demo",
+    "init",
+    "check",
+    "run",
+    "residuals",
+    "invert",
+    "tradeoff",
+    "compare",
+    "appraise",
+    "bodies",
+    "export",
+    "import-model",
+    "ratio",
+)
 
 
 def test_version() -> None:

@@ -168,7 +168,9 @@ def test_faults_of_the_file_are_told_by_line(survey: Survey, tmp_path: Path) -> 
 
 def test_missing_column_is_named(survey: Survey, tmp_path: Path) -> None:
     path = tmp_path / "delays.csv"
-    path.write_text("event,network_a,station_a,network_b,delay_s,uncertainty_s\nsouth,XA,S1,XA,0.1,0.1\n")
+    path.write_text(
+        "event,network_a,station_a,network_b,delay_s,uncertainty_s\nsouth,XA,S1,XA,0.1,0.1\n"
+    )
     with pytest.raises(FileProblemsError, match="column station_b is missing"):
         read_delays(path, survey.stations, survey.events)
 
