@@ -14,7 +14,7 @@ from rayloom.survey.columns import ColumnReader, Span
 from rayloom.survey.notices import few
 from rayloom.survey.references import find_events, find_stations
 from rayloom.survey.tables import ColumnTable, FloatArray, IndexArray, TextArray, TimeArray
-from rayloom.survey.text_table import read_text_table
+from rayloom.survey.text_table import TextTable, read_text_table
 from rayloom.survey.uncertainty import read_uncertainty
 
 DELAY: Final = Span(-600.0, 600.0, "s", "arrival at station a minus arrival at station b")
@@ -91,42 +91,44 @@ def read_delays(
     known = _REQUIRED + _OPTIONAL
     reader.require(_REQUIRED, known)
     remarks = [] if reader.has("phase") else reader.misspelt(["phase"], known)
-    event = reader.text("event")
-    event_index = find_events(event, events, table.lines, table.problems)
-    origin = np.where(
-        event_index >= 0, events.time[np.maximum(event_index, 0)], np.datetime64("NaT", "ns")
-    )
-    arrival: TimeArray = np.add(origin, _TYPICAL_TRAVEL)
-    sides = [
-        find_stations(
-            reader.text(f"network_{side}"),
-            reader.text(f"station_{side}"),
-            arrival,
-            stations,
-            table.lines,
-            table.problems,
-        )
-        for side in ("a", "b")
-    ]
+    event_index = find_events(reader.text("event"), events, table.lines, table.problems)
     phase = reader.text("phase") if reader.has("phase") else np.full(len(table), DEFAULT_PHASE)
     delays = Delays(
         event_index=event_index,
-        first_index=sides[0],
-        second_index=sides[1],
+        first_index=_stations_of(reader, "a", event_index, stations, events),
+        second_index=_stations_of(reader, "b", event_index, stations, events),
         phase=np.array([standard_phase(str(name)) for name in phase], dtype=np.str_),
         delay_s=reader.number("delay_s", DELAY),
         uncertainty_s=read_uncertainty(reader, settings or SurveySettings(), remarks),
     )
-    for row in np.flatnonzero((sides[0] == sides[1]) & (sides[0] >= 0)).tolist():
-        label = stations.labels[sides[0][row]]
+    _check_pairs(delays, stations, table)
+    table.problems.raise_if_any()
+    if notices is not None:
+        notices += [*remarks, *_repeats(delays, table.lines, table.source)]
+    return delays
+
+
+def _stations_of(
+    reader: ColumnReader, side: str, event_index: IndexArray, stations: Stations, events: Events
+) -> IndexArray:
+    """Find the stations of one side at the time of a typical arrival."""
+    table = reader.table
+    origin = np.where(
+        event_index >= 0, events.time[np.maximum(event_index, 0)], np.datetime64("NaT", "ns")
+    )
+    arrival: TimeArray = np.add(origin, _TYPICAL_TRAVEL)
+    network, station = (reader.text(f"{what}_{side}") for what in ("network", "station"))
+    return find_stations(network, station, arrival, stations, table.lines, table.problems)
+
+
+def _check_pairs(delays: Delays, stations: Stations, table: TextTable) -> None:
+    """Note delays of a station against itself."""
+    same = (delays.first_index == delays.second_index) & (delays.first_index >= 0)
+    for row in np.flatnonzero(same).tolist():
+        label = stations.labels[delays.first_index[row]]
         table.problems.add(
             table.lines[row], f"a delay of {label} against itself; expected two stations"
         )
-    table.problems.raise_if_any()
-    remarks += _repeats(delays, table.lines, table.source)
-    if notices is not None:
-        notices.extend(remarks)
-    return delays
 
 
 def _repeats(delays: Delays, lines: list[int], source: str) -> list[Notice]:
