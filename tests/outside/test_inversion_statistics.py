@@ -162,11 +162,16 @@ def test_a_fifth_of_the_structure_is_noticed() -> None:
         assert "the data demand structure" in result.structure.sentence()
 
 
-@pytest.mark.parametrize("robust", ["huber", "student_t"])
-def test_weighted_misfit_has_its_expectation_for_gaussian_errors(robust: str) -> None:
+@pytest.mark.parametrize(("robust", "kept_bar"), [("huber", 0.05), ("student_t", 0.08)])
+def test_weighted_misfit_has_its_expectation_for_gaussian_errors(
+    robust: str, kept_bar: float
+) -> None:
     """Robust weights lower χ², and its expectation by as much: 2Φ(k) − 1 for Huber.
 
-    Compared within three standard errors of the mean of the runs, and 1 %.
+    Compared within three standard errors of the mean of the runs, and 1 %. The
+    expectation of the RMS without suspected outliers takes the fit for one of least
+    squares and is low where the model takes half of the freedom, as here: by 3 % for
+    Huber's weights and 5 % for Student's t, which weigh every row (measured).
     """
     settings = InversionSettings.model_validate(
         QUICK | {"robust": robust, "mislocation": False, "station_term_std_s": 0.1}
@@ -178,7 +183,7 @@ def test_weighted_misfit_has_its_expectation_for_gaussian_errors(robust: str) ->
         ratio.append(last.chi2 / last.chi2_expected)
         kept.append(last.rms_kept_s / last.rms_kept_expected_s)
     assert abs(np.mean(ratio) - 1.0) <= 3.0 * np.std(ratio) / np.sqrt(REPEATS) + 0.01
-    assert np.mean(kept) == pytest.approx(1.0, abs=0.05)
+    assert np.mean(kept) == pytest.approx(1.0, abs=kept_bar)
 
 
 def test_huber_weights_leave_the_textbook_share_of_a_square() -> None:
