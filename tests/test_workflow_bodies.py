@@ -4,10 +4,12 @@ from __future__ import annotations
 
 from pathlib import Path
 
+import numpy as np
 import pytest
 from click.testing import CliRunner
 
 from rayloom.cli import main
+from rayloom.model import SlownessModel
 from run_folder_cases import write_run_folder, write_small_survey
 
 FAST = """
@@ -58,8 +60,11 @@ def test_everything_is_written_and_told(folder: Path) -> None:
     assert "not a hazard assessment" in said
     for name in ("bodies.csv", "bodies.json", "squeezing.csv", "leaks.csv"):
         assert (folder / name).stat().st_size > 0
-    for name in ("bodies", "squeezing", "leaks"):
+    for name in ("bodies", "squeezing", "demanded_outside", "leaks"):
         assert (folder / "figures" / f"{name}.png").read_bytes().startswith(b"\x89PNG")
+    stored = SlownessModel.read_netcdf(folder / "squeezed.nc").fields
+    assert stored["body_number"].max() >= 1
+    assert np.all(stored["bodies_only_percent"][stored["body_number"] > 0] != 0.0)
     report = (folder / "report.html").read_text(encoding="utf-8")
     assert "Where the anomalies are" in report
     assert "up to date" in command("bodies", str(folder))

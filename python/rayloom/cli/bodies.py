@@ -27,8 +27,10 @@ def bodies(ctx: click.Context, folder: Path, again: bool, quiet: bool) -> None:
 
     Reads:   model.nc, inversion.npz, posterior_samples.npz (of 'rayloom appraise');
              [bodies] [inversion] [outputs]
-    Writes:  bodies.csv, bodies.json, squeezing.csv, leaks.csv, figures/bodies.png,
-             figures/squeezing.png, figures/leaks.png, a section of report.html
+    Writes:  bodies.csv, bodies.json, squeezing.csv, leaks.csv, squeezed.nc (body_number,
+             bodies_only_percent, demanded_outside_percent), figures/bodies.png,
+             figures/squeezing.png, figures/demanded_outside.png, figures/leaks.png, a section
+             of report.html
     Example: rayloom bodies highland
     """
     from rayloom.cli.console import listening

@@ -8,6 +8,8 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 from typing import Final
 
+import numpy as np
+
 from rayloom.appraisal import Samples
 from rayloom.appraisal.bodies import (
     Body,
@@ -21,6 +23,7 @@ from rayloom.appraisal.bodies import (
 from rayloom.appraisal.compressed import compress
 from rayloom.appraisal.leak_sources import outside_sources, station_middle
 from rayloom.appraisal.leaks import Leak, crust_source, leak_tests
+from rayloom.appraisal.squeezing import SqueezedFirst, squeezed_first
 from rayloom.inversion import InversionResult, LinearisedProblem, linearise
 from rayloom.outputs import BlockField, perturbation_field
 from rayloom.settings import RunSettings
@@ -47,6 +50,9 @@ class FoundBodies:
         The bodies.
     extents : dict of str to BodyExtent
         Squeezing by the name of the body.
+    squeezed : SqueezedFirst or None
+        The model with structure in the bodies and the crust alone, and what the
+        data demand elsewhere; None without bodies.
     leaks : tuple of Leak
         Leak tests, if any.
     """
@@ -55,6 +61,7 @@ class FoundBodies:
     field: BlockField
     bodies: tuple[Body, ...]
     extents: dict[str, BodyExtent]
+    squeezed: SqueezedFirst | None
     leaks: tuple[Leak, ...]
 
 
@@ -77,6 +84,7 @@ def run_bodies(folder: RunFolder, settings: RunSettings, reporter: Reporter) -> 
         field=_field(result, samples, chosen),
         bodies=bodies,
         extents=_extents(problem, bodies, chosen, reporter),
+        squeezed=_squeezed(problem, bodies, chosen),
         leaks=_leaks(problem, result, settings, reporter) if chosen.leak_tests else (),
     )
     written = write_bodies(folder, settings, found)
@@ -149,6 +157,16 @@ def _extents(
         )
         for number, body in enumerate(bodies, start=1)
     }
+
+
+def _squeezed(
+    problem: LinearisedProblem, bodies: tuple[Body, ...], chosen: BodySettings
+) -> SqueezedFirst | None:
+    if not bodies:
+        return None
+    allowed = np.logical_or.reduce([body.region.domain for body in bodies])
+    below = problem.model.grid.depth_centres_km >= chosen.top_km
+    return squeezed_first(problem, ~allowed & below)
 
 
 def _leaks(

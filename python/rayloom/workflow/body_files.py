@@ -2,15 +2,16 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
 from rayloom.appraisal.bodies import Body, BodyExtent, Interval
 from rayloom.appraisal.leaks import Leak
+from rayloom.appraisal.squeezing import SqueezedFirst
 from rayloom.appraisal.temperature import ALTERNATIVES, CAVEAT
-from rayloom.outputs import save_figure, write_table
+from rayloom.outputs import figure_depth_slices, save_figure, write_table
 from rayloom.outputs.body_figures import figure_bodies
 from rayloom.outputs.body_tables import (
     body_table,
@@ -29,6 +30,7 @@ if TYPE_CHECKING:
     from rayloom.workflow.bodies import FoundBodies
 
 SECTION_FILE: Final = "bodies_report.json"
+SQUEEZED_FILE: Final = "squeezed.nc"
 
 _CAPTIONS: Final = {
     "bodies": "Bodies: outline of the blocks that reach half of the peak (on the map from all "
@@ -37,6 +39,9 @@ _CAPTIONS: Final = {
     "squeezing": "Squeezing: structure is forbidden below (red) or above (blue) a depth, in the "
     "block columns of the body. A low p-value says that the data object. What they demand may "
     "be the body or anything else in its columns.",
+    "demanded_outside": "What the data demand outside the bodies: structure was first allowed in "
+    "the bodies, their surroundings and the crust alone; this is what a free inversion of the "
+    "rest adds. Relative to the regional mean.",
     "leaks": "Leak tests: inversions of the delays of anomalies beside, below and in the crust "
     "alone. Strongest perturbation along y, relative to the regional mean.",
 }
@@ -86,6 +91,8 @@ def write_bodies(folder: RunFolder, settings: RunSettings, found: FoundBodies) -
         write_table(folder.file(name), table)
     write_bodies_json(folder.file("bodies.json"), found.bodies, found.extents)
     figures = _write_figures(folder, settings, found)
+    if found.squeezed is not None:
+        _write_squeezed(folder, found, found.squeezed)
     section = ReportSection(
         title="Where the anomalies are",
         sentences=tuple(sentences(found)),
@@ -95,6 +102,8 @@ def write_bodies(folder: RunFolder, settings: RunSettings, found: FoundBodies) -
     section.write(folder.file(SECTION_FILE))
     drawn = [path for figure in figures for path in figure.paths]
     names = [*tables, "bodies.json", SECTION_FILE, *drawn]
+    if found.squeezed is not None:
+        names.append(SQUEEZED_FILE)
     return WrittenBodies({name: folder.file(name) for name in names}, section)
 
 
@@ -112,6 +121,8 @@ def sentences(found: FoundBodies) -> list[str]:
         said = [_said_of(body, found.extents[body.name]) for body in found.bodies]
     if any(body.temperature for body in found.bodies):
         said.append(f"temperatures: {CAVEAT} Alternatives: {'; '.join(ALTERNATIVES)}.")
+    if found.squeezed is not None:
+        said.append(_said_of_the_rest(found, found.squeezed))
     if found.leaks:
         said.append(_said_of_leaks(found.leaks))
     return said
@@ -142,6 +153,28 @@ def _said_of(body: Body, extent: BodyExtent) -> str:
     if body.temperature is not None:
         parts.append(str(body.temperature))
     return "; ".join(parts)
+
+
+def _said_of_the_rest(found: FoundBodies, squeezed: SqueezedFirst) -> str:
+    outside = found.field.shown & ~np.logical_or.reduce(
+        [body.region.domain for body in found.bodies]
+    )
+    largest = np.abs(squeezed.demanded_percent[outside]).max(initial=0.0)
+    return (
+        "with structure in the bodies and the crust tried first, the data still demand up to "
+        f"{largest:.1f} % in the resolved blocks elsewhere"
+    )
+
+
+def _write_squeezed(folder: RunFolder, found: FoundBodies, squeezed: SqueezedFirst) -> None:
+    number = np.zeros(found.result.model.grid.shape)
+    for position, body in enumerate(found.bodies, start=1):
+        number[body.region.mask] = position
+    found.result.model.with_fields(
+        body_number=number,
+        bodies_only_percent=squeezed.squeezed_percent,
+        demanded_outside_percent=squeezed.demanded_percent,
+    ).write_netcdf(folder.file(SQUEEZED_FILE))
 
 
 def _said_of_leaks(leaks: tuple[Leak, ...]) -> str:
@@ -193,6 +226,13 @@ def _write_figures(
             grid, found.field, found.bodies, stations=found.result.data.stations
         )
         figures["squeezing"] = figure_squeezing(found.extents)
+    if found.squeezed is not None:
+        figures["demanded_outside"] = figure_depth_slices(
+            found.result.model,
+            stations=found.result.data.stations,
+            depths_km=settings.outputs.slice_depths_km,
+            field=replace(found.field, values=found.squeezed.demanded_percent),
+        )
     if found.leaks:
         figures["leaks"] = figure_leaks(grid, found.leaks, crust_km=settings.bodies.top_km)
     chosen = settings.outputs
