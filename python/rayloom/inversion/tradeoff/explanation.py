@@ -12,6 +12,8 @@ import numpy as np
 from rayloom.inversion.tradeoff.sweep import CurveChoice, Tradeoff
 
 _UNCERTAINTIES_OFF = 1.2
+_UNSEEN_OFF = 2.0
+_HARDLY_A_CHOICE = 0.6
 
 
 def explain(tradeoff: Tradeoff) -> list[str]:
@@ -93,6 +95,17 @@ def _doubts(tradeoff: Tradeoff) -> list[str]:
         )
     if not tradeoff.converged:
         doubts.append("not all solutions converged: leave out the largest prior_std_percent")
+    unseen = tradeoff.recommended.cross_validation
+    if unseen > _UNSEEN_OFF:
+        doubts.append(
+            f"events left out are missed by {math.sqrt(unseen):.1f} times their uncertainties: "
+            "these are too small, or the events tell of structure that the others do not see"
+        )
+    if len(tradeoff.equally_good) > _HARDLY_A_CHOICE * len(tradeoff.rows):
+        doubts.append(
+            "most priors are as good: the data hardly choose, and the map of signs says more "
+            "than any one model"
+        )
     scale = tradeoff.noise_scale
     if not 1.0 / _UNCERTAINTIES_OFF < scale < _UNCERTAINTIES_OFF:
         doubts.append(
