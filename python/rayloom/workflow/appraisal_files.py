@@ -28,6 +28,7 @@ if TYPE_CHECKING:
     import pandas as pd
     from matplotlib.figure import Figure
 
+    from rayloom.inversion import InversionResult
     from rayloom.workflow.appraising import Appraisal
 
 Floats = NDArray[np.float64]
@@ -150,10 +151,19 @@ def sentences(found: Appraisal, min_hits: int) -> list[str]:
         )
         said.append(
             f"Events weighted at random ({found.bootstrap.count} times) scatter the model by "
-            f"{np.median(ratio):.2f} times (median) what the uncertainties of the picks promise; "
-            "both leave out how far the prior pulls the model."
+            f"{np.median(ratio):.2f} times (median) what the uncertainties of the picks promise"
+            f"{_expected_scatter(found.result)}; both leave out how far the prior pulls the model."
         )
     return [*said, *_width_sentences(found, covered)]
+
+
+def _expected_scatter(result: InversionResult) -> str:
+    """Tell what right uncertainties would give: the model takes up part of the errors."""
+    free = result.counts.data - result.counts.groups
+    taken = result.history[-1].resolved / max(free, 1)
+    if not 0.0 <= taken < 1.0:
+        return ""
+    return f" (right ones give {0.85 * np.sqrt(1.0 - taken):.2f} to {np.sqrt(1.0 - taken):.2f})"
 
 
 def _width_sentences(found: Appraisal, covered: NDArray[np.bool_]) -> list[str]:
