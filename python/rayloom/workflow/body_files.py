@@ -129,19 +129,22 @@ def sentences(found: FoundBodies) -> list[str]:
 
 
 def _said_of(body: Body, extent: BodyExtent) -> str:
-    demanded = (
-        f"the data demand its columns to hold structure from {extent.demanded_top_km:.0f} km or "
-        f"higher to {extent.demanded_base_km:.0f} km or deeper (squeezing, p < 0.01)"
-        if np.isfinite([extent.demanded_top_km, extent.demanded_base_km]).all()
-        else "squeezing does not pin its ends down (p < 0.01)"
-    )
+    demanded = [
+        f"{side} {depth_km:.0f} km"
+        for side, depth_km in (
+            ("above", extent.demanded_top_km),
+            ("below", extent.demanded_base_km),
+        )
+        if np.isfinite(depth_km)
+    ]
     parts = [
         f"{body.name}: centroid {body.longitude_deg.estimate:.2f}, "
         f"{body.latitude_deg.estimate:.2f}, depth {_shown(body.interval('depth_km'))} km; "
         f"top {_shown(body.interval('top_km'))} km, base {_shown(body.interval('base_km'))} km; "
         f"peak {_shown(body.interval('peak_percent'), '.1f')} %; "
         f"in {100.0 * body.existence_share:.0f} % of the samples",
-        demanded,
+        f"in its columns the data demand structure {' and '.join(demanded) or 'nowhere for sure'} "
+        "(squeezing, p < 0.01)",
     ]
     if body.touches_edge:
         parts.append("it may go on in blocks that are not resolved")
