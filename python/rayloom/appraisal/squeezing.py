@@ -1,6 +1,7 @@
 """Squeezing: whether the data demand structure in some blocks or would do without it.
 
-Structure is forbidden in some blocks. What the objective Φ = misfit + prior
+Structure is forbidden in some blocks: they stay at the prior's mean, which is the
+reference unless a run chooses another. What the objective Φ = misfit + prior
 norm rises by, ΔΦ, is compared with its rise in data sets simulated from the
 best model that obeys. Main functions: :func:`squeeze` for any blocks and
 :func:`scan_depths` for the depth extent; :func:`squeezed_first` maps what the
@@ -258,7 +259,7 @@ def squeezed_first(problem: LinearisedProblem, forbidden: Flags) -> SqueezedFirs
     first = _solve(system, problem.right_hand_side)
     second = _solve(problem.system, problem.right_hand_side - system.times(first.white))
     shape = problem.model.grid.shape
-    squeezed = system.parameters(first.white)[0].reshape(shape)
+    squeezed = (problem.prior_mean + system.parameters(first.white)[0]).reshape(shape)
     total = squeezed + problem.system.parameters(second.white)[0].reshape(shape)
     squeezed_percent, total_percent = (100.0 * (1.0 / (1.0 + m) - 1.0) for m in (squeezed, total))
     return SqueezedFirst(squeezed_percent, total_percent - squeezed_percent)
