@@ -16,6 +16,8 @@ from rayloom.inversion.system import WhitenedSystem
 
 _COLUMNS_AT_ONCE = 48
 """Enough for the columns to help each other; bounds the memory."""
+_SAFE_RATIO = 1e-5
+"""Of the diagonal of a Cholesky factor; below it columns are nearly dependent."""
 
 
 def posterior_variance(
@@ -118,7 +120,7 @@ def _batch(
     max_iterations: int,
 ) -> NDArray[np.float64]:
     """Sum of Bᵀ P (Pᵀ A P)⁻¹ C over the block directions P, A = ÃᵀÃ + I."""
-    residual, coefficients = np.linalg.qr(columns)
+    residual, coefficients = _orthonormal(columns)
     direction = residual
     variance = np.zeros(columns.shape[1])
     for _ in range(max_iterations):
@@ -128,10 +130,31 @@ def _batch(
         variance += added
         if np.all(added <= tolerance * variance):
             break
-        residual, rest = np.linalg.qr(residual - image @ inverse)
+        residual, rest = _orthonormal(residual - image @ inverse)
         coefficients = rest @ coefficients
         direction = residual + direction @ rest.T
     return np.maximum(variance, 0.0)
+
+
+def _orthonormal(
+    columns: NDArray[np.float64],
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """QR factors: Cholesky twice, a fifth of the work of reflections where it is safe.
+
+    References
+    ----------
+    Yamamoto, Y., Nakatsukasa, Y., Yanagisawa, Y. & Fukaya, T. (2015). Roundoff error
+    analysis of the CholeskyQR2 algorithm. Electron. Trans. Numer. Anal. 44, 306-326.
+    """
+    try:
+        first = np.linalg.cholesky(columns.T @ columns).T
+        if np.diag(first).min() > _SAFE_RATIO * np.diag(first).max():
+            once = columns @ np.linalg.inv(first)
+            second = np.linalg.cholesky(once.T @ once).T
+            return once @ np.linalg.inv(second), second @ first
+    except np.linalg.LinAlgError:
+        pass
+    return np.linalg.qr(columns)
 
 
 def _normal_times(system: WhitenedSystem, columns: NDArray[np.float64]) -> NDArray[np.float64]:
