@@ -173,6 +173,17 @@ def test_found_bodies_carry_all_that_is_said_of_them(
         assert np.sign(body.temperature.highest_c + body.temperature.lowest_c) == -body.region.sign
 
 
+def test_weak_anomalies_are_no_bodies_unless_asked_for(
+    problem: LinearisedProblem, samples: Samples
+) -> None:
+    """1.5 times the prior's 2 % by default: as many bodies as with 3 % in so many words."""
+    choice = {"min_resolution": 0.1, "min_volume_km3": 6e4, "top_km": 0.0}
+    usual = find_bodies(problem, samples, **choice)
+    named = find_bodies(problem, samples, threshold_percent=3.0, **choice)
+    assert [body.region.mask.sum() for body in usual] == [body.region.mask.sum() for body in named]
+    assert len(find_bodies(problem, samples, threshold_percent=1.0, **choice)) > len(usual)
+
+
 def test_samples_of_other_blocks_are_refused(problem: LinearisedProblem, samples: Samples) -> None:
     other = dataclasses.replace(samples, shape=(2, 2, 2))
     with pytest.raises(InputError, match="do not belong"):

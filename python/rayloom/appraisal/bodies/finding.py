@@ -28,6 +28,8 @@ Floats = NDArray[np.float64]
 Flags = NDArray[np.bool_]
 
 _DEEPEST_PARTIAL_KM = 800.0
+_PRIOR_SHARE = 1.5
+"""Prior standard deviations that make a body: what is weaker may be any disorder."""
 
 
 @dataclass(frozen=True)
@@ -79,7 +81,7 @@ def find_bodies(
     problem: LinearisedProblem,
     samples: Samples,
     *,
-    threshold_percent: float = 1.0,
+    threshold_percent: float | None = None,
     min_resolution: float = 0.2,
     min_volume_km3: float = 200_000.0,
     top_km: float = 35.0,
@@ -93,7 +95,8 @@ def find_bodies(
     samples : Samples
         Of its posterior.
     threshold_percent : float, optional
-        Smallest |dV| of a body, relative to the median of the layer's resolved blocks.
+        Smallest |dV| of a body, relative to the median of the layer's resolved
+        blocks; 1.5 times the prior's standard deviation by default.
     min_resolution : float, optional
         Smallest 1 − (σ_posterior/σ_prior)² of its blocks.
     min_volume_km3 : float, optional
@@ -118,6 +121,8 @@ def find_bodies(
             f"samples of {samples.shape} blocks do not belong to a model of {grid.shape}",
             where="samples",
         )
+    if threshold_percent is None:
+        threshold_percent = 100.0 * _PRIOR_SHARE * float(np.median(samples.prior_std))
     usable = usable_blocks(grid, samples, min_resolution=min_resolution, top_km=top_km)
     mean = relative_to_layers(grid, samples.mean_percent, usable)
     regions = find_regions(

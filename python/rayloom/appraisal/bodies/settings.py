@@ -15,10 +15,10 @@ class BodySettings(BaseModel):
 
     model_config = ConfigDict(extra="forbid", frozen=True)
 
-    threshold_percent: Positive = Field(
-        default=1.0,
+    threshold_percent: Positive | None = Field(
+        default=None,
         description="Smallest |dV| of a body's blocks, relative to the median of their layer, "
-        "percent.",
+        "percent; 1.5 times the prior's standard deviation if not given.",
     )
     min_resolution: float = Field(
         default=0.2,
