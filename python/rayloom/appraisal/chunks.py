@@ -14,8 +14,8 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]
 
+from rayloom.appraisal.blas import one_blas_thread
 from rayloom.errors import FileAccessError
 
 Arrays = dict[str, NDArray[Any]]
@@ -123,7 +123,7 @@ def run_chunks(
     missing = [number for number, piece in enumerate(found) if piece is None]
     if progress is not None:
         progress(done, count)
-    with threadpool_limits(1):
+    with one_blas_thread():
         for number, piece in _as_done(task, spans, missing, executor):
             found[number] = piece
             if checkpoints is not None:
@@ -158,7 +158,7 @@ def _as_done(
 
 def _single_threaded(task: Callable[[int, int], Arrays], start: int, stop: int) -> Arrays:
     """Do a piece with one thread of linear algebra, so that its bits depend on nothing else."""
-    with threadpool_limits(1):
+    with one_blas_thread():
         return task(start, stop)
 
 

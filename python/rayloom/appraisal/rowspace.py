@@ -14,8 +14,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 from scipy.sparse import csr_array, hstack
-from threadpoolctl import threadpool_limits  # type: ignore[import-untyped]
 
+from rayloom.appraisal.blas import one_blas_thread
 from rayloom.inversion import GroupMeans, LinearisedProblem, Prior
 
 Floats = NDArray[np.float64]
@@ -163,7 +163,7 @@ class RowSpace:
         Dubrulle, A. A. (2001). Retooling the method of block conjugate gradients.
         Electron. Trans. Numer. Anal. 12, 216-233 (the variant with QR factors).
         """
-        with threadpool_limits(1):
+        with one_blas_thread():
             return self._solve(rows, tolerance, max_iterations)
 
     def _solve(self, rows: Floats, tolerance: float, max_iterations: int) -> RowSolution:
