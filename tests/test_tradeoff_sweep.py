@@ -217,11 +217,11 @@ def test_a_sweep_tells_everything(problem: LinearisedProblem) -> None:
     assert np.all(percent <= fields["highest_percent"] + 1e-9)
 
 
-def test_without_cross_validation_gcv_decides(problem: LinearisedProblem) -> None:
+def test_without_cross_validation_the_evidence_decides(problem: LinearisedProblem) -> None:
     tried = TradeoffSettings(prior_std_percent=(0.5, 1.0, 2.0), folds=0, probes=3)
     found = sweep(problem, SETTINGS, tried)
     assert not found.validated
-    assert found.recommended.gcv == min(row.gcv for row in found.rows)
+    assert found.recommended.log_evidence == max(row.log_evidence for row in found.rows)
     assert np.isnan(found.recommended.cross_validation)
 
 
@@ -233,8 +233,8 @@ def test_damping_and_smoothing_stand_for_the_same_sizes() -> None:
     assert changed.smoothing_km == pytest.approx((6000.0, 3000.0))
 
 
-def curve_with(gcv: list[float]) -> Curve:
-    values = np.array(gcv)
+def curve_with(log_evidence: list[float]) -> Curve:
+    values = np.array(log_evidence)
     ones = np.ones_like(values)
     return Curve(
         damping=np.arange(1.0, values.size + 1.0),
@@ -244,8 +244,8 @@ def curve_with(gcv: list[float]) -> Curve:
         marginal_norm=ones,
         objective=ones,
         resolved=ones,
-        gcv=values,
-        log_evidence=ones,
+        gcv=ones,
+        log_evidence=values,
         noise_scale=ones,
         curvature=ones,
         free_count=100,
@@ -253,11 +253,11 @@ def curve_with(gcv: list[float]) -> Curve:
     )
 
 
-def test_gcv_decides_among_priors_that_predict_equally_well() -> None:
+def test_the_evidence_decides_among_priors_that_predict_equally_well() -> None:
     """The one-standard-error rule of Breiman et al. (1984) bounds the choice."""
     per_event = np.array([[9.0, 5.0, 5.2, 5.4]] * 6) + np.array([-1, 1, -1, 1, -1, 1])[:, None]
     scores = EventScores(squares=per_event[:, None, :], freedom=np.full(6, 5.0))
-    chosen = recommend([curve_with([0.5, 1.0, 0.9, 0.8])], scores)
+    chosen = recommend([curve_with([9.0, 5.0, 6.0, 7.0])], scores)
     assert chosen.equally_good.tolist() == [[False, True, True, True]]
     assert (chosen.curve, chosen.damping) == (0, 3)
     assert chosen.at_edge

@@ -39,10 +39,10 @@ def _recommended(tradeoff: Tradeoff) -> str:
         f"{row.correlation_horizontal_km:g} × {row.correlation_vertical_km:g} km"
     )
     if not tradeoff.validated:
-        return f"{head}: GCV is least there ({row.gcv:.3f})"
+        return f"{head}: under this prior the data are most probable"
     return (
         f"{head}: of all priors that predict events left out as well as the best within one "
-        f"standard error it has the least GCV ({row.gcv:.3f}); of those events it leaves a mean "
+        "standard error it makes the data most probable; of those events it leaves a mean "
         f"square of {row.cross_validation:.3f} ± {row.cross_validation_error:.3f} in units of "
         "the uncertainties (1 if only noise were left)"
     )
@@ -112,21 +112,21 @@ def _doubts(tradeoff: Tradeoff) -> list[str]:
             f"residuals scatter {scale:.2f} times as much as their uncertainties say; "
             "the choice does not hang on it, error bars do"
         )
-    if _evidence_disagrees(tradeoff):
+    if _gcv_disagrees(tradeoff):
         doubts.append(
-            "the evidence would take another strength by more than a factor of 1.6: the structure "
+            "GCV would take another strength by more than a factor of 1.6: the structure "
             "is unlike a random field of one size, or errors are shared among stations"
         )
     return doubts
 
 
-def _evidence_disagrees(tradeoff: Tradeoff) -> bool:
+def _gcv_disagrees(tradeoff: Tradeoff) -> bool:
     choice: CurveChoice = next(
         entry
         for entry in tradeoff.choices
         if entry.correlation_km[0] == tradeoff.recommended.correlation_horizontal_km
     )
-    ratio = choice.evidence / tradeoff.recommended.prior_std_percent
+    ratio = choice.gcv / tradeoff.recommended.prior_std_percent
     return bool(abs(np.log(ratio)) > np.log(1.6))
 
 

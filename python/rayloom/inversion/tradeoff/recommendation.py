@@ -16,6 +16,7 @@ from rayloom.inversion.tradeoff.curve import Curve
 
 Floats = NDArray[np.float64]
 _ENOUGH_EVENTS = 4
+_EVIDENCE_APART = 3.0
 
 
 @dataclass(frozen=True)
@@ -42,13 +43,14 @@ class Recommendation:
 
 
 def recommend(curves: Sequence[Curve], scores: EventScores | None) -> Recommendation:
-    """Take the prior of least GCV among those that predict unseen events well.
+    """Take the most probable prior among those that predict unseen events well.
 
-    GCV varies least from one draw of the noise to the next, but trusts errors to be
-    independent; cross-validation of whole events does not. Equally good are all priors
-    whose score exceeds the best by at most its standard error (Breiman et al. 1984).
-    Without scores, or with fewer than four events, they are those whose GCV exceeds the
-    least by at most the share √(2/(N − N_g − tr H)), the scatter of a χ².
+    The evidence varies least from one draw of truth and noise to the next, but trusts
+    that the structure is like the prior and that errors are independent;
+    cross-validation of whole events does neither. Equally good are all priors whose
+    score exceeds the best by at most its standard error (Breiman et al. 1984). Without
+    scores, or with fewer than four events, they are those whose log evidence lies within
+    3 of the highest: 95 % of a likelihood in two parameters.
 
     Parameters
     ----------
@@ -62,22 +64,20 @@ def recommend(curves: Sequence[Curve], scores: EventScores | None) -> Recommenda
     Breiman, L., Friedman, J. H., Olshen, R. A. & Stone, C. J. (1984). Classification
     and regression trees. Wadsworth, section 3.4.3.
     """
-    gcv = np.array([curve.gcv for curve in curves])
+    evidence = np.array([curve.log_evidence for curve in curves])
     validated = scores is not None and int(np.sum(scores.freedom > 0.0)) >= _ENOUGH_EVENTS
     if scores is not None and validated:
         best = _lowest(scores.score)
         equally_good = scores.score <= scores.score[best] + scores.standard_error[best]
     else:
-        best = _lowest(gcv)
-        scatter = np.sqrt(2.0 / curves[best[0]].chi2_expected[best[1]])
-        equally_good = gcv <= gcv[best] * (1.0 + scatter)
-    curve, damping = _lowest(np.where(equally_good, gcv, np.inf))
+        equally_good = evidence >= evidence.max() - _EVIDENCE_APART
+    curve, damping = _lowest(np.where(equally_good, -evidence, np.inf))
     return Recommendation(
         curve=curve,
         damping=damping,
         equally_good=equally_good,
         validated=validated,
-        at_edge=damping in (0, gcv.shape[1] - 1),
+        at_edge=damping in (0, evidence.shape[1] - 1),
     )
 
 

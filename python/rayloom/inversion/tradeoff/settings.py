@@ -30,7 +30,7 @@ class TradeoffSettings(BaseModel):
         ge=0,
         le=50,
         description="Parts that the events are dealt into for cross-validation, each left out "
-        "in turn; 0 leaves cross-validation out, and GCV recommends.",
+        "in turn; 0 leaves cross-validation out, and the evidence alone recommends.",
     )
     probes: int = Field(
         default=6, ge=1, le=1000, description="Random probes for the traces of GCV and evidence."
