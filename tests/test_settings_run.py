@@ -62,7 +62,8 @@ def test_tracing_is_chosen_in_forward_and_reaches_the_inversion(tmp_path: Path) 
 @pytest.mark.parametrize("extra", ["", 'residuals = "r.csv"\npicks = "p.csv"\n'])
 def test_picks_or_residuals_one_of_them(tmp_path: Path, extra: str) -> None:
     text = '[inputs]\nstations = "s.csv"\nevents = "e.csv"\n' + extra
-    with pytest.raises(FileProblemsError, match="inputs: give either picks or residuals or delays"):
+    wanted = "inputs: give either picks or residuals or delays"
+    with pytest.raises(FileProblemsError, match=wanted):
         read(tmp_path, text + COARSE_GRID)
 
 

@@ -16,7 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rayloom.appraisal.blas import one_blas_thread
-from rayloom.errors import FileAccessError
+from rayloom.writing import replacing
 
 Arrays = dict[str, NDArray[Any]]
 Progress = Callable[[int, int], None]
@@ -60,14 +60,8 @@ class Checkpoints:
             If it cannot be written.
         """
         path = self._path(name)
-        temporary = path.with_suffix(".part")
-        try:
-            self.folder.mkdir(parents=True, exist_ok=True)
-            with temporary.open("wb") as file:
-                np.savez(file, fingerprint=np.array(self.fingerprint), **arrays)  # type: ignore[arg-type]
-            temporary.replace(path)
-        except OSError as error:
-            raise FileAccessError(f"{path}: cannot be written ({error})") from error
+        with replacing(path) as temporary, temporary.open("wb") as file:
+            np.savez(file, fingerprint=np.array(self.fingerprint), **arrays)  # type: ignore[arg-type]
 
     def clear(self) -> None:
         """Remove all pieces."""

@@ -17,8 +17,8 @@ from rayloom.demo.places import PLACES
 from rayloom.demo.seismicity import Seismicity
 from rayloom.demo.times import PHASE, Progress
 from rayloom.demo.truth import DemoTruth
-from rayloom.outputs.atomic import write_text
 from rayloom.survey import Stations
+from rayloom.writing import write_text
 
 STATIONS_FILE: Final = "stations.csv"
 EVENTS_FILE: Final = "events.csv"

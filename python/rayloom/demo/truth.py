@@ -23,8 +23,8 @@ from rayloom.demo.structure import (
 )
 from rayloom.errors import FileAccessError, InputError
 from rayloom.model import BlockGrid
-from rayloom.outputs.atomic import write_text
 from rayloom.units import KM_PER_DEGREE
+from rayloom.writing import write_text
 
 
 @dataclass(frozen=True)

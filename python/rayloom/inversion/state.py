@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rayloom.errors import FileAccessError, InputError
+from rayloom.writing import replacing
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -171,7 +172,6 @@ def save_state(path: str | Path, state: InversionState) -> None:
     FileAccessError
         If the file cannot be written.
     """
-    path = Path(path)
     arrays = {
         "white": state.white,
         "active": state.active,
@@ -183,14 +183,8 @@ def save_state(path: str | Path, state: InversionState) -> None:
     for field in fields(Iteration):
         column = [getattr(row, field.name) for row in state.history]
         arrays[f"history_{field.name}"] = np.array(column)
-    partial = path.with_name(path.name + ".partial")
-    try:
-        with partial.open("wb") as file:
-            np.savez(file, allow_pickle=False, **arrays)
-        partial.replace(path)
-    except OSError as error:
-        partial.unlink(missing_ok=True)
-        raise FileAccessError(f"{path}: cannot write the checkpoint ({error})") from error
+    with replacing(path) as temporary, temporary.open("wb") as file:
+        np.savez(file, allow_pickle=False, **arrays)
 
 
 def load_state(path: str | Path) -> InversionState:

@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-import os
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Final
 
 from rayloom.errors import FileAccessError, InputError
 from rayloom.model.dataset import dataset_of, model_of
 from rayloom.model.slowness import SlownessModel
+from rayloom.writing import replacing
 
 if TYPE_CHECKING:
     import xarray
@@ -54,14 +54,8 @@ def write_dataset(dataset: xarray.Dataset, path: Path) -> None:
         name: {"_FillValue": None, **(packed if variable.ndim == 3 else {})}
         for name, variable in dataset.variables.items()
     }
-    temporary = path.with_name(f".{path.name}.{os.getpid()}.part")
-    try:
+    with replacing(path) as temporary:
         dataset.to_netcdf(temporary, engine=ENGINE, encoding=encoding)
-        temporary.replace(path)
-    except OSError as error:
-        raise FileAccessError(f"{path}: cannot be written ({error})") from error
-    finally:
-        temporary.unlink(missing_ok=True)
 
 
 def read(path: Path) -> SlownessModel:

@@ -1,11 +1,10 @@
 """What a run leaves behind: viewer files, tables, figures and the report.
 
 Every file is written to a temporary name and renamed
-(:func:`rayloom.outputs.atomic.replacing`). Figures are matplotlib ``Figure``
+(:func:`rayloom.writing.replacing`). Figures are matplotlib ``Figure``
 objects; :func:`save_figure` writes them.
 """
 
-from rayloom.outputs.atomic import replacing, write_text
 from rayloom.outputs.linear_system import block_table, write_linear_system
 from rayloom.outputs.report import render_report, write_report
 from rayloom.outputs.residual_figures import figure_misfit, figure_station_residuals
@@ -37,6 +36,7 @@ from rayloom.outputs.vtk import (
     write_rays_vtp,
     write_stations_vtp,
 )
+from rayloom.writing import replacing, write_text
 
 __all__ = [
     "BlockField",

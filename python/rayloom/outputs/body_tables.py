@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
-from rayloom.outputs.atomic import write_text
+from rayloom.writing import write_text
 
 if TYPE_CHECKING:
     import pandas as pd

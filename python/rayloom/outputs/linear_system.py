@@ -9,8 +9,8 @@ import numpy as np
 import numpy.typing as npt
 
 from rayloom.errors import InputError
-from rayloom.outputs.atomic import replacing
 from rayloom.outputs.tables import residual_table, write_table
+from rayloom.writing import replacing
 
 if TYPE_CHECKING:
     import pandas as pd

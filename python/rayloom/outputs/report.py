@@ -11,10 +11,10 @@ from typing import TYPE_CHECKING, Any, Final
 import numpy as np
 
 from rayloom import __version__
-from rayloom.outputs.atomic import write_text
 from rayloom.outputs.report_section import ReportSection
 from rayloom.outputs.results import WrittenFigure
 from rayloom.outputs.tables import exclusion_table
+from rayloom.writing import write_text
 
 if TYPE_CHECKING:
     import pandas as pd

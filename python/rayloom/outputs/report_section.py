@@ -12,7 +12,7 @@ from pathlib import Path
 from typing import Any
 
 from rayloom.errors import InputError
-from rayloom.outputs.atomic import write_text
+from rayloom.writing import write_text
 
 
 @dataclass(frozen=True)

@@ -13,7 +13,7 @@ import numpy.typing as npt
 
 from rayloom.errors import InputError
 from rayloom.model import SlownessModel
-from rayloom.outputs.atomic import replacing
+from rayloom.writing import replacing
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes

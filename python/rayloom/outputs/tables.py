@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
-from rayloom.outputs.atomic import replacing
+from rayloom.writing import replacing
 
 if TYPE_CHECKING:
     import pandas as pd

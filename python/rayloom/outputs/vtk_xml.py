@@ -20,7 +20,7 @@ from xml.sax.saxutils import quoteattr
 import numpy as np
 import numpy.typing as npt
 
-from rayloom.outputs.atomic import replacing
+from rayloom.writing import replacing
 
 Arrays = Mapping[str, npt.NDArray[Any]]
 

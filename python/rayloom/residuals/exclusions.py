@@ -9,8 +9,8 @@ from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
-from rayloom.residuals.files import write_frame
 from rayloom.survey.tables import BoolArray, ColumnTable, TextArray
+from rayloom.writing import write_frame
 
 if TYPE_CHECKING:
     import pandas as pd

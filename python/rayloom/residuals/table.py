@@ -10,7 +10,6 @@ import numpy as np
 
 from rayloom.earth import ReferenceEarth
 from rayloom.residuals.exclusions import Exclusions
-from rayloom.residuals.files import write_frame
 from rayloom.residuals.groups import group_numbers, relative_to_median_s
 from rayloom.survey import Events, Notice, Stations
 from rayloom.survey.tables import (
@@ -21,6 +20,7 @@ from rayloom.survey.tables import (
     TextArray,
     no_floats,
 )
+from rayloom.writing import write_frame
 
 if TYPE_CHECKING:
     import pandas as pd

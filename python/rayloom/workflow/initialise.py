@@ -16,7 +16,6 @@ import numpy as np
 from rayloom.earth import ReferenceEarth
 from rayloom.errors import InputError
 from rayloom.model import suggest_grid
-from rayloom.outputs.atomic import replacing, write_text
 from rayloom.residuals import Residuals, ResidualSettings
 from rayloom.settings import (
     EarthSettings,
@@ -28,6 +27,7 @@ from rayloom.survey import Picks, Survey, SurveySettings
 from rayloom.workflow.data import Tables, is_table, residuals_from_tables
 from rayloom.workflow.folder import RunFolder
 from rayloom.workflow.reporting import Reporter
+from rayloom.writing import replacing, write_text
 
 INPUTS: Final = "inputs"
 """Folder inside the run folder that holds copied tables."""

@@ -18,8 +18,8 @@ from pathlib import Path
 from typing import Any
 
 from rayloom.errors import FileAccessError
-from rayloom.outputs.atomic import replacing
 from rayloom.survey.text_table import unreadable
+from rayloom.writing import replacing
 
 _PACKAGES = ("rayloom", "numpy", "scipy", "pandas", "xarray", "h5netcdf", "pydantic")
 

@@ -7,7 +7,7 @@ from dataclasses import dataclass, fields
 from pathlib import Path
 from typing import TYPE_CHECKING, Final, Literal
 
-from rayloom.residuals.files import write_frame
+from rayloom.writing import write_frame
 
 if TYPE_CHECKING:
     import pandas as pd

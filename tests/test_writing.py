@@ -1,7 +1,7 @@
 import pytest
 
 from rayloom.errors import FileAccessError
-from rayloom.outputs import replacing, write_text
+from rayloom.writing import replacing, write_text
 
 
 def names(folder):

@@ -6,8 +6,12 @@ import secrets
 from collections.abc import Iterator
 from contextlib import contextmanager, suppress
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from rayloom.errors import FileAccessError
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 
 @contextmanager
@@ -68,3 +72,22 @@ def write_text(path: str | Path, text: str) -> None:
     """
     with replacing(path) as temporary:
         temporary.write_text(text, encoding="utf-8")
+
+
+def write_frame(frame: pd.DataFrame, path: str | Path) -> None:
+    """Write a data frame as CSV, all of it or nothing.
+
+    Parameters
+    ----------
+    frame : pandas.DataFrame
+        The table; its index is left out.
+    path : str or Path
+        The final name.
+
+    Raises
+    ------
+    FileAccessError
+        The file cannot be written.
+    """
+    with replacing(path) as temporary:
+        frame.to_csv(temporary, index=False)
