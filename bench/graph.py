@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import subprocess
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
+from statistics import median
 from typing import Any
 
 import numpy as np
@@ -57,6 +59,7 @@ def run(*, quick: bool, output: Path) -> Report:
     present, missing = available()
     for case in QUICK if quick else FULL:
         _one_case(report, case, [name for name in case.libraries if name in present])
+    _plain_reference(report, (12, 12, 12) if quick else FULL[0].shape)
     report.remarks += [
         f"Not installed and left out: {join(missing)} (optional extra `bench`).",
         "Library times are the search alone, on a graph already built; rayloom's are the "
@@ -68,6 +71,26 @@ def run(*, quick: bool, output: Path) -> Report:
         "which they hold in a few GiB.",
     ]
     return report
+
+
+def _plain_reference(report: Report, shape: tuple[int, int, int]) -> None:
+    """Race the search with a plain bucket Dijkstra of our own, compiled alike."""
+    command = ["cargo", "bench", "--quiet", "--bench", "plain_dijkstra", "--", *map(str, shape)]
+    root = Path(__file__).parent.parent
+    done = subprocess.run(command, stdout=subprocess.PIPE, text=True, check=True, cwd=root)
+    runs = [[float(word) for word in line.split()] for line in done.stdout.splitlines()]
+    table = report.table(
+        f"Own plain bucket Dijkstra on the same nodes, {int(np.prod(shape)):,} blocks",
+        "run",
+        "plain Dijkstra, wall (s)",
+        "rayloom's search, wall (s)",
+        "plain over rayloom",
+        "largest difference of times (s)",
+    )
+    for number, (plain_s, own_s, difference_s) in enumerate(runs, start=1):
+        table.add(number, plain_s, own_s, plain_s / own_s, difference_s)
+    faster = median(plain_s / own_s for plain_s, own_s, _ in runs)
+    report.at_least("own plain bucket Dijkstra over rayloom's search (wall)", faster, 8.0)
 
 
 def rough_model(shape: tuple[int, int, int]) -> rl.SlownessModel:

@@ -78,7 +78,7 @@ impl Quality {
             fine_bias: 0.0033,
             slack: 0.08,
             slack_again: 0.03,
-            again: effort(0, 4),
+            again: effort(0, 2),
             first: effort(0, 0),
             last: effort(2, 10),
         }
@@ -94,7 +94,7 @@ impl Quality {
             fine_bias: 0.0016,
             slack: 0.05,
             slack_again: 0.02,
-            again: effort(0, 4),
+            again: effort(0, 2),
             first: effort(2, 4),
             last: effort(3, 20),
         }
@@ -393,7 +393,13 @@ impl<'a, C: Chart> Tracer<'a, C> {
             let refiner = &mut workspace.refiner;
             refiner.refine(&mut path, effort);
             if let Some(mut other) = found {
-                refiner.refine(&mut other, self.quality.last);
+                let narrow = slacks.len() == 1;
+                if narrow {
+                    refiner.settle(&mut other);
+                }
+                if !narrow || refiner.total_time(&other) < refiner.total_time(&path) {
+                    refiner.refine(&mut other, self.quality.last);
+                }
                 if refiner.total_time(&other) < refiner.total_time(&path) {
                     path = other;
                 }
