@@ -78,7 +78,11 @@ impl Quality {
             fine_bias: 0.0033,
             slack: 0.08,
             slack_again: 0.03,
-            again: effort(0, 2),
+            again: Effort {
+                chord_rounds: 0,
+                flip_rounds: 1,
+                flip_patience: 0.02,
+            },
             first: effort(0, 0),
             last: effort(2, 10),
         }
@@ -94,7 +98,11 @@ impl Quality {
             fine_bias: 0.0016,
             slack: 0.05,
             slack_again: 0.02,
-            again: effort(0, 2),
+            again: Effort {
+                chord_rounds: 0,
+                flip_rounds: 1,
+                flip_patience: 0.02,
+            },
             first: effort(2, 4),
             last: effort(3, 20),
         }
@@ -431,9 +439,7 @@ impl<'a, C: Chart> Tracer<'a, C> {
         let graph = GraphLeg::of(&path, self.blocks, refiner);
         let known = self.settled_again(beginning, refiner);
         let mut trusted = known.as_ref().is_some_and(|known| known.trusted);
-        if trusted {
-            refiner.settle(&mut path);
-        } else {
+        if !trusted {
             refiner.refine(&mut path, self.quality.first);
             if let Some(incoming) = beginning.incoming()
                 && let Some(mut other) = undisturbed_ray(self.blocks, incoming, receiver)

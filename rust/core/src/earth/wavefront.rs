@@ -12,7 +12,7 @@ use crate::error::{CoreError, Result};
 const STEP_DEG: f64 = 0.1;
 
 /// Largest spacing of the table's depths, km.
-const LEVEL_KM: f64 = 10.0;
+const LEVEL_KM: f64 = 20.0;
 
 /// Height of the bins by which a depth finds its cell, km.
 const BIN_KM: f64 = 2.0;
