@@ -240,14 +240,48 @@ impl Surface {
             start
                 .times
                 .resize(first + search.layout().size(), f32::INFINITY);
-            for place in search.places() {
-                let at = search.node_position(face.block, face.side, place);
-                let time = incoming
-                    .at(at)
-                    .filter(|arrival| enters(arrival, face.side))
-                    .map_or(f64::INFINITY, |arrival| arrival.time_s - wave.earliest_s);
-                start.times[first + place] = time as f32;
-            }
+            let out = &mut start.times[first..];
+            sample_face(search, face, incoming, wave.earliest_s, out);
         }
     }
+}
+
+/// Places of the samples along each side of a face, as shares of its width.
+const SAMPLES: [f64; 3] = [0.0, 0.5, 1.0];
+
+/// Fills `out` with incoming times (s after `earliest_s`) at the nodes of a face:
+/// quadratic between three by three samples where the wave enters at all of
+/// them, else node by node.
+fn sample_face<C: Chart>(
+    search: &FineSearch<'_, C>,
+    face: &SurfaceFace,
+    incoming: &dyn Incoming,
+    earliest_s: f64,
+    out: &mut [f32],
+) {
+    let time_at = |at: Vec3| {
+        incoming
+            .at(at)
+            .filter(|arrival| enters(arrival, face.side))
+            .map_or(f64::INFINITY, |arrival| arrival.time_s - earliest_s)
+    };
+    let samples = SAMPLES
+        .map(|u| SAMPLES.map(|v| time_at(search.face_position(face.block, face.side, [u, v]))));
+    let everywhere = samples.iter().flatten().all(|time| time.is_finite());
+    for place in search.places() {
+        let [u, v] = search.fractions(place);
+        out[place] = if everywhere {
+            let (across, along) = (quadratic(u), quadratic(v));
+            let rows = samples.map(|row| dot(row, along));
+            dot(rows, across) as f32
+        } else {
+            time_at(search.node_position(face.block, face.side, place)) as f32
+        };
+    }
+}
+
+/// Weights of the three [`SAMPLES`] at a share of the width (Lagrange).
+fn quadratic(share: f64) -> Vec3 {
+    let (start, middle, end) = (share, share - 0.5, share - 1.0);
+    [2.0 * middle * end, -4.0 * start * end, 2.0 * start * middle]
 }

@@ -96,9 +96,13 @@ impl<'a, C: Chart> Refiner<'a, C> {
         self.optimise(path, 0.001, 8);
     }
 
-    /// Refines a path in place; its time never rises.
+    /// Refines a path in place; its time never rises. Without any rounds the
+    /// crossing points are settled only.
     pub fn refine(&mut self, path: &mut Path, effort: Effort) {
         self.settle(path);
+        if effort.chord_rounds + effort.flip_rounds == 0 {
+            return;
+        }
         for _ in 0..effort.chord_rounds {
             if self.pull_chords(path, &[1000, 24, 12, 6, 4, 3, 2]) == 0 {
                 break;

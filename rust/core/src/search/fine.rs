@@ -154,15 +154,25 @@ impl<'a, C: Chart> FineSearch<'a, C> {
 
     /// Grid coordinates (km) of the node at a place on a face.
     pub fn node_position(&self, block: u32, side: Side, place: usize) -> Vec3 {
+        self.face_position(block, side, self.fractions(place))
+    }
+
+    /// Shares of a face's widths at which a place lies.
+    pub fn fractions(&self, place: usize) -> [f64; 2] {
+        let (row, column) = (place / self.layout.lanes, place % self.layout.lanes);
+        [row, column].map(|index| self.layout.fraction(index))
+    }
+
+    /// Grid coordinates (km) of a point on a face, given as shares of its widths.
+    pub fn face_position(&self, block: u32, side: Side, shares: [f64; 2]) -> Vec3 {
         let axis = side / 2;
         let (u, v) = face_axes(axis);
         let mut at = [0.0; 3];
         let (low, high) = self.blocks.range(block, axis);
         at[axis] = if side % 2 == 1 { high } else { low };
-        let (row, column) = (place / self.layout.lanes, place % self.layout.lanes);
-        for (along, index) in [(u, row), (v, column)] {
+        for (along, share) in [u, v].into_iter().zip(shares) {
             let (low, high) = self.blocks.range(block, along);
-            at[along] = low + (high - low) * self.layout.fraction(index);
+            at[along] = low + (high - low) * share;
         }
         at
     }
