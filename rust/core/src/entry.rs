@@ -237,9 +237,7 @@ impl Surface {
             }
             start.faces.push((face.block, face.side));
             let first = start.times.len();
-            start
-                .times
-                .resize(first + search.layout().size(), f32::INFINITY);
+            start.times.resize(first + search.size(), f32::INFINITY);
             let out = &mut start.times[first..];
             sample_face(search, face, incoming, wave.earliest_s, out);
         }
@@ -268,8 +266,8 @@ fn sample_face<C: Chart>(
     let samples = SAMPLES
         .map(|u| SAMPLES.map(|v| time_at(search.face_position(face.block, face.side, [u, v]))));
     let everywhere = samples.iter().flatten().all(|time| time.is_finite());
-    for place in search.places() {
-        let [u, v] = search.fractions(place);
+    for place in search.places(face.side) {
+        let [u, v] = search.fractions(face.side, place);
         out[place] = if everywhere {
             let (across, along) = (quadratic(u), quadratic(v));
             let rows = samples.map(|row| dot(row, along));

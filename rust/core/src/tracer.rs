@@ -13,6 +13,7 @@ use crate::lattice::Lattice;
 use crate::monitor::Monitor;
 use crate::path::Path;
 use crate::search::backtrack::trace_back;
+use crate::search::box_tables::{MOST_NODES, NodeCounts};
 use crate::search::coarse::{CoarseField, CoarseSearch};
 use crate::search::fine::{Bound, FineField, FineSearch, Start, SurfaceStart};
 use crate::undisturbed::{undisturbed_leg, undisturbed_ray};
@@ -35,10 +36,16 @@ const LEG_STRETCH: f64 = 1.25;
 /// … plus this many block transits.
 const LEG_MARGIN: f64 = 2.0;
 
-/// Flatness beyond which graphs get more nodes …
+/// Of two paths the later one is not refined further if it is later by more than
+/// this (block transits).
+const HOPELESS: f64 = 0.05;
+
+/// Flatness beyond which the coarse graph gets more nodes.
 const FLAT_BLOCKS: f64 = 1.4;
-/// … so many more along each side of a fine face.
-const MORE_FINE_NODES: usize = 4;
+/// Fewest nodes along an edge of the fine graph.
+const FEWEST_NODES: f64 = 3.0;
+/// Rows of eight nodes fill a vector; fewer than this do not repay a second one.
+const WORTH_TWO_VECTORS: f64 = 11.0;
 
 /// How finely to search and how hard to refine.
 #[derive(Debug, Clone, Copy)]
@@ -48,11 +55,11 @@ pub struct Quality {
     pub coarse_nodes: usize,
     /// Whether every edge carries just that many, however long it is.
     pub uniform_nodes: bool,
-    /// Nodes along each side of a face of the fine graph; 0 leaves the fine
-    /// search out.
+    /// Nodes along each edge of a cube in the fine graph, at the same spacing in
+    /// other blocks; 0 leaves the fine search out.
     pub fine_nodes: usize,
     /// Relative excess of the fine graph's times over true ones, in cubes; it
-    /// grows with the square of the blocks' flatness.
+    /// grows with the root of the blocks' flatness and the square of the spacing.
     pub fine_bias: f64,
     /// How much later than the present ray a fine path may be, as a share of the
     /// mean time through a block.
@@ -76,14 +83,14 @@ impl Quality {
             uniform_nodes: false,
             fine_nodes: 8,
             fine_bias: 0.0033,
-            slack: 0.08,
+            slack: 0.12,
             slack_again: 0.03,
             again: Effort {
                 chord_rounds: 0,
                 flip_rounds: 1,
                 flip_patience: 0.02,
             },
-            first: effort(0, 0),
+            first: effort(2, 0),
             last: effort(2, 10),
         }
     }
@@ -96,7 +103,7 @@ impl Quality {
             uniform_nodes: false,
             fine_nodes: 12,
             fine_bias: 0.0016,
-            slack: 0.05,
+            slack: 0.08,
             slack_again: 0.02,
             again: Effort {
                 chord_rounds: 0,
@@ -110,20 +117,39 @@ impl Quality {
 }
 
 impl Quality {
-    /// The same level for a given model: flat blocks need more nodes on both
-    /// graphs for the same error.
+    /// The same level for a given model: flat blocks need more nodes on the coarse
+    /// graph for the same error.
     #[must_use]
     pub fn suited_to<C: Chart>(mut self, blocks: &Blocks<C>) -> Self {
         if blocks.flatness() > FLAT_BLOCKS {
             self.coarse_nodes += usize::from(!self.uniform_nodes);
-            self.fine_nodes += self.fine_nodes.min(MORE_FINE_NODES);
-            self.fine_bias *= (1.0 - MORE_FINE_NODES as f64 / self.fine_nodes as f64).powi(2);
         }
         self
     }
 
     fn slacks(&self) -> [f64; 2] {
         [self.slack, self.slack + RETRY_SLACK]
+    }
+
+    /// The fine graph's nodes in a model, equally spaced along all axes as far as
+    /// their numbers allow, and the excess of its times.
+    fn fine_graph<C: Chart>(&self, blocks: &Blocks<C>) -> (NodeCounts, f64) {
+        let wanted = blocks.mean_width_km() / (self.fine_nodes.max(2) - 1) as f64;
+        let widths = [0, 1, 2].map(|axis| blocks.mean_width_along(axis));
+        let counts = widths.map(|width| {
+            let count = (width / wanted).round() + 1.0;
+            let count = if count > 8.0 && count < WORTH_TWO_VECTORS {
+                8.0
+            } else {
+                count
+            };
+            count.clamp(FEWEST_NODES, MOST_NODES as f64)
+        });
+        let widest = (0..3)
+            .map(|axis| widths[axis] / (counts[axis] - 1.0))
+            .fold(wanted, f64::max);
+        let bias = self.fine_bias * blocks.flatness().sqrt() * (widest / wanted).powi(2);
+        (NodeCounts::new(counts.map(|count| count as usize)), bias)
     }
 
     /// The coarse graph's nodes in a model.
@@ -241,15 +267,15 @@ impl<'a, C: Chart> Tracer<'a, C> {
         surface: Option<&'a Surface>,
         quality: Quality,
     ) -> Self {
+        let (fine_nodes, fine_bias) = quality.fine_graph(blocks);
         Self {
             blocks,
             coarse: CoarseSearch::new(blocks, lattice),
-            fine: (quality.fine_nodes > 0)
-                .then(|| FineSearch::new(blocks, lattice, quality.fine_nodes)),
+            fine: (quality.fine_nodes > 0).then(|| FineSearch::new(blocks, lattice, fine_nodes)),
             surface,
             quality,
             transit_s: blocks.mean_transit_s(),
-            fine_bias: quality.fine_bias * blocks.flatness().powi(2),
+            fine_bias,
         }
     }
 
@@ -399,19 +425,11 @@ impl<'a, C: Chart> Tracer<'a, C> {
             let before_s = workspace.refiner.total_time(&path);
             let found = self.search_around(receiver, beginning, &path, graph, slacks, workspace);
             let refiner = &mut workspace.refiner;
-            refiner.refine(&mut path, effort);
-            if let Some(mut other) = found {
-                let narrow = slacks.len() == 1;
-                if narrow {
-                    refiner.settle(&mut other);
-                }
-                if !narrow || refiner.total_time(&other) < refiner.total_time(&path) {
-                    refiner.refine(&mut other, self.quality.last);
-                }
-                if refiner.total_time(&other) < refiner.total_time(&path) {
-                    path = other;
-                }
-            }
+            path = if slacks.len() == 1 {
+                self.again_or_found((path, effort), found, refiner)
+            } else {
+                self.earlier((path, effort), found, refiner)
+            };
             if before_s - refiner.total_time(&path) < self.trusted_gain_s() {
                 break;
             }
@@ -421,6 +439,54 @@ impl<'a, C: Chart> Tracer<'a, C> {
             path,
             outside_time_s,
         })
+    }
+
+    /// A known path, refined, or one found around it where that is earlier even
+    /// before its last refinement.
+    fn again_or_found(
+        &self,
+        (mut path, effort): (Path, Effort),
+        found: Option<Path>,
+        refiner: &mut Refiner<'_, C>,
+    ) -> Path {
+        refiner.refine(&mut path, effort);
+        if let Some(mut other) = found {
+            refiner.settle(&mut other);
+            if refiner.total_time(&other) < refiner.total_time(&path) {
+                refiner.refine(&mut other, self.quality.last);
+                return other;
+            }
+        }
+        path
+    }
+
+    /// The earlier of a path and one found around it, both refined; a path that is
+    /// late by much before its last refinement is given up.
+    fn earlier(
+        &self,
+        (mut path, effort): (Path, Effort),
+        found: Option<Path>,
+        refiner: &mut Refiner<'_, C>,
+    ) -> Path {
+        if let Some(mut other) = found {
+            refiner.settle(&mut other);
+            let gain_s = refiner.total_time(&path) - refiner.total_time(&other);
+            let close_s = HOPELESS * self.transit_s;
+            if gain_s > -close_s {
+                refiner.refine(&mut other, self.quality.last);
+                if gain_s > close_s {
+                    return other;
+                }
+                refiner.refine(&mut path, effort);
+                return if refiner.total_time(&other) < refiner.total_time(&path) {
+                    other
+                } else {
+                    path
+                };
+            }
+        }
+        refiner.refine(&mut path, effort);
+        path
     }
 
     /// The ray to search around, the graph's leg, and whether that ray is known

@@ -1,12 +1,12 @@
 //! Distances between the face nodes of a block, tabulated: [`BoxTables`].
 //!
-//! In a box whose faces carry equally spaced nodes, the distance between nodes
+//! In a box whose edges carry equally spaced nodes, each axis its own number, the distance between nodes
 //! of two faces depends on two indices and one difference of indices only. The
 //! tables hold those few values so that the distances from one node to a whole
 //! face are contiguous rows, shifted by that difference:
 //!
-//! - *shifted lanes* (rows `2n` long): the common axis of both faces runs along
-//!   the target's rows, or the faces are opposite; the row starts at `n − 1 − j`;
+//! - *shifted lanes* (rows twice a face's): the common axis of both faces runs along
+//!   the target's rows, or the faces are opposite; the row starts at `n − 1 − j` for n nodes along that axis;
 //! - *shifted rows* (rows as long as a face's): the common axis runs across the
 //!   target's rows; the block of rows starts at row `n − 1 − j`.
 
@@ -15,30 +15,25 @@ use crate::blocks::{Side, face_axes};
 /// Share of a face left free at its rim, so that a node belongs to one face.
 pub const RIM: f64 = 0.003;
 
-/// Layout of the nodes on a face: `count` rows of `count` nodes, padded to
-/// `lanes`.
+/// Most nodes along an edge.
+pub const MOST_NODES: usize = 16;
+
+/// Layout of the nodes on a face: rows of nodes, padded to `lanes`.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub struct FaceLayout {
-    /// Nodes along each side of a face.
-    pub count: usize,
+    /// Nodes along the first axis of the face.
+    pub rows: usize,
+    /// Nodes along the second axis of the face.
+    pub columns: usize,
     /// Length of a row in memory.
     pub lanes: usize,
 }
 
 impl FaceLayout {
-    /// The layout of `count × count` nodes.
-    #[must_use]
-    pub fn new(count: usize) -> Self {
-        Self {
-            count,
-            lanes: count.next_power_of_two().max(8),
-        }
-    }
-
-    /// Length of an array over a face.
+    /// Length of an array over a face, whole vectors.
     #[must_use]
     pub fn size(self) -> usize {
-        self.count * self.lanes
+        (self.rows * self.lanes).next_multiple_of(16)
     }
 
     /// Length of a row of shifted lanes.
@@ -46,11 +41,47 @@ impl FaceLayout {
     pub fn long_row(self) -> usize {
         2 * self.lanes
     }
+}
 
-    /// Place of a node along a side, as a share of the face's width.
+/// Nodes along the edges of a block, and so on its faces.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct NodeCounts([usize; 3]);
+
+impl NodeCounts {
+    /// Nodes along each axis, 2 to [`MOST_NODES`].
     #[must_use]
-    pub fn fraction(self, index: usize) -> f64 {
-        RIM + (1.0 - 2.0 * RIM) * index as f64 / (self.count - 1) as f64
+    pub fn new(along: [usize; 3]) -> Self {
+        Self(along.map(|count| count.clamp(2, MOST_NODES)))
+    }
+
+    /// Nodes along an axis.
+    #[must_use]
+    pub fn along(self, axis: usize) -> usize {
+        self.0[axis]
+    }
+
+    /// The layout of faces normal to an axis.
+    #[must_use]
+    pub fn face(self, axis: usize) -> FaceLayout {
+        let (u, v) = face_axes(axis);
+        FaceLayout {
+            rows: self.0[u],
+            columns: self.0[v],
+            lanes: self.0[v].next_power_of_two().max(8),
+        }
+    }
+
+    /// Length of an array that holds any face.
+    #[must_use]
+    pub fn size(self) -> usize {
+        let sizes = [0, 1, 2].map(|axis| self.face(axis).size());
+        sizes[0].max(sizes[1]).max(sizes[2])
+    }
+
+    /// Place of a node along an axis, as a share of the block's width.
+    #[must_use]
+    pub fn fraction(self, axis: usize, index: usize) -> f64 {
+        RIM + (1.0 - 2.0 * RIM) * index as f64 / (self.0[axis] - 1) as f64
     }
 }
 
@@ -59,14 +90,14 @@ impl FaceLayout {
 pub enum Rows {
     /// Rows of [`FaceLayout::long_row`], read from a shifted start.
     Long = 0,
-    /// Rows of [`FaceLayout::lanes`].
+    /// Rows of a face's lanes.
     Short = 1,
 }
 
 /// Distances (km) inside one box.
 #[derive(Debug)]
 pub struct BoxTables {
-    layout: FaceLayout,
+    counts: NodeCounts,
     widths_km: [f64; 3],
     values: Vec<f32>,
 }
@@ -90,18 +121,19 @@ pub struct RowIndex {
 }
 
 impl RowIndex {
-    /// The index of a layout.
+    /// The index for given nodes.
     #[must_use]
-    pub fn new(layout: FaceLayout) -> Self {
-        let starts = section_starts(layout);
-        let size = layout.size();
+    pub fn new(counts: NodeCounts) -> Self {
+        let starts = section_starts(counts);
+        let size = counts.size();
         let mut rows = vec![RowsFrom::default(); 36 * size];
         for from in 0..6 {
+            let layout = counts.face(from / 2);
             for onto in (0..6).filter(|&onto| onto != from) {
-                for row in 0..layout.count {
-                    for column in 0..layout.count {
+                for row in 0..layout.rows {
+                    for column in 0..layout.columns {
                         let place = row * layout.lanes + column;
-                        let mut found = rows_from(layout, from, (row, column), onto);
+                        let mut found = rows_from(counts, from, (row, column), onto);
                         found.start += starts[from][onto / 2] as u32;
                         rows[(from * 6 + onto) * size + place] = found;
                     }
@@ -122,54 +154,58 @@ impl RowIndex {
 /// Rows from node (`row`, `column`) of side `from` to side `onto`, counted from
 /// the start of their section.
 fn rows_from(
-    layout: FaceLayout,
+    counts: NodeCounts,
     from: Side,
     (row, column): (usize, usize),
     onto: Side,
 ) -> RowsFrom {
-    let n = layout.count;
-    if from / 2 == onto / 2 {
+    let (axis, onto_axis) = (from / 2, onto / 2);
+    let target = counts.face(onto_axis);
+    if axis == onto_axis {
         return RowsFrom {
-            start: (row * n * layout.long_row() + (n - 1 - column)) as u32,
+            start: (row * target.rows * target.long_row() + (target.columns - 1 - column)) as u32,
             least: 1.0,
         };
     }
-    let (first, _) = face_axes(from / 2);
-    let (away, common) = if first == onto / 2 {
+    let (first, _) = face_axes(axis);
+    let (away, common) = if first == onto_axis {
         (row, column)
     } else {
         (column, row)
     };
-    let away = mirrored(onto, away, n);
-    let shift = n - 1 - common;
+    let along = counts.along(3 - axis - onto_axis);
+    let away = mirrored(onto, away, counts.along(onto_axis));
+    let shift = along - 1 - common;
     let start = match rows_between(from, onto) {
-        Rows::Long => away * n * layout.long_row() + shift,
-        Rows::Short => (away * (2 * n - 1) + shift) * layout.lanes,
+        Rows::Long => away * target.rows * target.long_row() + shift,
+        Rows::Short => (away * (2 * along - 1) + shift) * target.lanes,
     };
     RowsFrom {
         start: start as u32,
-        least: layout.fraction(away) as f32,
+        least: counts.fraction(onto_axis, away) as f32,
     }
 }
 
 /// Where the section from each side to each axis starts in a box's table, in
 /// the order in which [`BoxTables::new`] fills it.
-fn section_starts(layout: FaceLayout) -> [[usize; 3]; 6] {
-    let n = layout.count;
+fn section_starts(counts: NodeCounts) -> [[usize; 3]; 6] {
     let mut starts = [[0; 3]; 6];
     let mut next = 0;
     for axis in 0..3 {
+        let layout = counts.face(axis);
         starts[2 * axis][axis] = next;
         starts[2 * axis + 1][axis] = next;
-        next += n * n * layout.long_row();
+        next += layout.rows * layout.rows * layout.long_row();
     }
     for (from, starts) in starts.iter_mut().enumerate() {
         for onto in (0..3).filter(|&axis| axis != from / 2) {
             starts[onto] = next;
-            next += match rows_between(from, 2 * onto) {
-                Rows::Long => n * n * layout.long_row(),
-                Rows::Short => n * (2 * n - 1) * layout.lanes,
+            let target = counts.face(onto);
+            let rows = match rows_between(from, 2 * onto) {
+                Rows::Long => target.rows * target.long_row(),
+                Rows::Short => (2 * counts.along(3 - from / 2 - onto) - 1) * target.lanes,
             };
+            next += counts.along(onto) * rows;
         }
     }
     starts
@@ -178,9 +214,9 @@ fn section_starts(layout: FaceLayout) -> [[usize; 3]; 6] {
 impl BoxTables {
     /// Tabulates a box of the given widths (km).
     #[must_use]
-    pub fn new(layout: FaceLayout, widths_km: [f64; 3]) -> Self {
+    pub fn new(counts: NodeCounts, widths_km: [f64; 3]) -> Self {
         let mut tables = Self {
-            layout,
+            counts,
             widths_km,
             values: Vec::new(),
         };
@@ -211,12 +247,12 @@ impl BoxTables {
     }
 
     fn place(&self, axis: usize, index: usize) -> f64 {
-        self.layout.fraction(index) * self.widths_km[axis]
+        self.counts.fraction(axis, index) * self.widths_km[axis]
     }
 
     /// Distance (km) along `axis` between nodes `shift − (n − 1)` apart.
     fn shifted(&self, axis: usize, shift: usize) -> f64 {
-        let steps = shift as f64 - (self.layout.count - 1) as f64;
+        let steps = shift as f64 - (self.counts.along(axis) - 1) as f64;
         steps * (self.place(axis, 1) - self.place(axis, 0))
     }
 
@@ -226,11 +262,11 @@ impl BoxTables {
 
     fn add_opposite(&mut self, axis: usize) {
         let (u, v) = face_axes(axis);
-        let n = self.layout.count;
-        for row in 0..n {
-            for target_row in 0..n {
+        let layout = self.counts.face(axis);
+        for row in 0..layout.rows {
+            for target_row in 0..layout.rows {
                 let across = self.place(u, row) - self.place(u, target_row);
-                for shift in 0..self.layout.long_row() {
+                for shift in 0..layout.long_row() {
                     self.push(self.widths_km[axis], across, self.shifted(v, shift));
                 }
             }
@@ -240,12 +276,12 @@ impl BoxTables {
     fn add_shifted_lanes(&mut self, from: Side, onto_axis: usize) {
         let axis = from / 2;
         let common = 3 - axis - onto_axis;
-        let n = self.layout.count;
-        for away in 0..n {
+        let target = self.counts.face(onto_axis);
+        for away in 0..self.counts.along(onto_axis) {
             let to_plane = self.place(onto_axis, away);
-            for target_row in 0..n {
-                let from_plane = self.place(axis, mirrored(from, target_row, n));
-                for shift in 0..self.layout.long_row() {
+            for target_row in 0..target.rows {
+                let from_plane = self.place(axis, mirrored(from, target_row, target.rows));
+                for shift in 0..target.long_row() {
                     self.push(to_plane, from_plane, self.shifted(common, shift));
                 }
             }
@@ -255,14 +291,15 @@ impl BoxTables {
     fn add_shifted_rows(&mut self, from: Side, onto_axis: usize) {
         let axis = from / 2;
         let common = 3 - axis - onto_axis;
-        let n = self.layout.count;
-        for away in 0..n {
+        let target = self.counts.face(onto_axis);
+        let last = target.columns - 1;
+        for away in 0..self.counts.along(onto_axis) {
             let to_plane = self.place(onto_axis, away);
-            for shift in 0..2 * n - 1 {
+            for shift in 0..2 * self.counts.along(common) - 1 {
                 let along = self.shifted(common, shift);
-                for lane in 0..self.layout.lanes {
-                    let from_plane = self.place(axis, mirrored(from, lane.min(n - 1), n));
-                    self.push(to_plane, from_plane, along);
+                for lane in 0..target.lanes {
+                    let column = mirrored(from, lane.min(last), target.columns);
+                    self.push(to_plane, self.place(axis, column), along);
                 }
             }
         }

@@ -5,7 +5,7 @@ use std::sync::OnceLock;
 
 use crate::blocks::Blocks;
 use crate::frame::Chart;
-use crate::search::box_tables::{BoxTables, FaceLayout};
+use crate::search::box_tables::{BoxTables, NodeCounts};
 use crate::vec3::norm;
 
 /// Blocks on the sphere whose mean widths agree within this share have one table.
@@ -15,7 +15,7 @@ const WIDTH_STEP: f64 = 0.002;
 /// are made when first asked for.
 #[derive(Debug)]
 pub struct BoxSet {
-    layout: FaceLayout,
+    counts: NodeCounts,
     shape_of: Vec<u32>,
     widths_km: Vec<[f64; 3]>,
     tables: Vec<OnceLock<BoxTables>>,
@@ -23,7 +23,7 @@ pub struct BoxSet {
 
 impl BoxSet {
     /// Sorts the blocks of a model by shape.
-    pub fn new<C: Chart>(blocks: &Blocks<C>, layout: FaceLayout) -> Self {
+    pub fn new<C: Chart>(blocks: &Blocks<C>, counts: NodeCounts) -> Self {
         let mut known: HashMap<[i64; 3], u32> = HashMap::new();
         let mut widths_km = Vec::new();
         let shape_of = (0..blocks.count() as u32)
@@ -44,7 +44,7 @@ impl BoxSet {
             })
             .collect();
         Self {
-            layout,
+            counts,
             shape_of,
             tables: widths_km.iter().map(|_| OnceLock::new()).collect(),
             widths_km,
@@ -54,7 +54,7 @@ impl BoxSet {
     /// The table of a block's shape.
     pub fn table(&self, block: u32) -> &BoxTables {
         let shape = self.shape_of[block as usize] as usize;
-        self.tables[shape].get_or_init(|| BoxTables::new(self.layout, self.widths_km[shape]))
+        self.tables[shape].get_or_init(|| BoxTables::new(self.counts, self.widths_km[shape]))
     }
 }
 

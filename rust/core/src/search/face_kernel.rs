@@ -48,7 +48,7 @@ fn relax_plainly(
 ) {
     for source in sources {
         let distances = &table[source.start as usize..];
-        for (row, times) in times.chunks_mut(layout.lanes).enumerate() {
+        for (row, times) in times.chunks_mut(layout.lanes).take(layout.rows).enumerate() {
             let distances = &distances[row * stride..][..layout.lanes];
             for (time, distance) in times.iter_mut().zip(distances) {
                 *time = time.min(distance * slowness + source.time_s);
@@ -79,14 +79,14 @@ mod vectors {
     ) {
         for column in (0..layout.lanes).step_by(WIDTH) {
             let mut row = 0;
-            while row < layout.count {
+            while row < layout.rows {
                 let block = Block {
                     times: &mut times[row * layout.lanes + column..],
                     lanes: layout.lanes,
                     offset: row * stride + column,
                 };
                 let task = (table, sources, slowness);
-                row += match (layout.count - row, stride) {
+                row += match (layout.rows - row, stride) {
                     (12.., 32) => block.relax::<12, 32>(simd, task),
                     (12.., 16) => block.relax::<12, 16>(simd, task),
                     (8.., 32) => block.relax::<8, 32>(simd, task),

@@ -1,7 +1,7 @@
 //! Search around one ray on a fine graph, inside a proven bound: [`FineSearch`].
 //!
-//! Nodes are `n × n` points on every face, each face its own copies, without
-//! corner or edge nodes. Blocks and faces are created when first reached. A node
+//! Nodes are rows of points on every face, their numbers its own for each axis;
+//! each face has its own copies, and there are no corner or edge nodes. Blocks and faces are created when first reached. A node
 //! stays alive only while its time plus the scaled coarse time on to the goal
 //! stays below the bound (a goal-directed search with the coarse field as its
 //! potential). Only the faces just reached from one side are relaxed into the
@@ -13,7 +13,7 @@ use crate::frame::Chart;
 use crate::lattice::Lattice;
 use crate::path::Path;
 use crate::relax::lowered;
-use crate::search::box_tables::{BoxTables, FaceLayout, RowIndex, Rows, rows_between};
+use crate::search::box_tables::{BoxTables, NodeCounts, RowIndex, Rows, rows_between};
 use crate::search::boxes::BoxSet;
 use crate::search::buckets::BucketQueue;
 use crate::search::face_kernel::{Tabulated, relax_face};
@@ -37,8 +37,8 @@ pub enum Start<'a> {
 pub struct SurfaceStart {
     /// Block and side of each face.
     pub faces: Vec<(u32, Side)>,
-    /// Times (s) of each face in turn, one per place of the face's layout;
-    /// infinite where no wave enters.
+    /// Times (s) of each face in turn, [`FineSearch::size`] long, one per place of
+    /// the face's layout; infinite where no wave enters.
     pub times: Vec<f32>,
 }
 
@@ -47,7 +47,8 @@ pub struct SurfaceStart {
 pub struct FineSearch<'a, C> {
     pub(super) blocks: &'a Blocks<C>,
     lattice: &'a Lattice,
-    layout: FaceLayout,
+    counts: NodeCounts,
+    size: usize,
     rows: RowIndex,
     boxes: BoxSet,
     interpolation: [Vec<(usize, f32)>; 3],
@@ -109,14 +110,14 @@ impl FineField {
 }
 
 impl<'a, C: Chart> FineSearch<'a, C> {
-    /// Prepares searches with `nodes × nodes` nodes on each face; the potential
+    /// Prepares searches with given nodes along the blocks' edges; the potential
     /// comes from a coarse search over `lattice`.
-    pub fn new(blocks: &'a Blocks<C>, lattice: &'a Lattice, nodes: usize) -> Self {
-        let layout = FaceLayout::new(nodes);
-        let interpolation = lattice.subdivisions().map(|steps| {
-            (0..nodes)
+    pub fn new(blocks: &'a Blocks<C>, lattice: &'a Lattice, counts: NodeCounts) -> Self {
+        let interpolation = [0, 1, 2].map(|axis| {
+            let steps = lattice.subdivisions()[axis];
+            (0..counts.along(axis))
                 .map(|index| {
-                    let place = layout.fraction(index) * steps as f64;
+                    let place = counts.fraction(axis, index) * steps as f64;
                     let step = (place as usize).min(steps - 1);
                     (step, (place - step as f64) as f32)
                 })
@@ -137,9 +138,10 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         Self {
             blocks,
             lattice,
-            layout,
-            rows: RowIndex::new(layout),
-            boxes: BoxSet::new(blocks, layout),
+            counts,
+            size: counts.size(),
+            rows: RowIndex::new(counts),
+            boxes: BoxSet::new(blocks, counts),
             interpolation,
             bucket_width_s: (0.5 * fastest * narrowest) as f32,
             face_offsets: [0, x_faces, x_faces + y_faces],
@@ -147,20 +149,30 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         }
     }
 
-    /// Layout of the nodes on a face.
-    pub fn layout(&self) -> FaceLayout {
-        self.layout
+    /// Nodes along the blocks' edges.
+    pub fn counts(&self) -> NodeCounts {
+        self.counts
+    }
+
+    /// Length of an array that holds any face.
+    pub fn size(&self) -> usize {
+        self.size
     }
 
     /// Grid coordinates (km) of the node at a place on a face.
     pub fn node_position(&self, block: u32, side: Side, place: usize) -> Vec3 {
-        self.face_position(block, side, self.fractions(place))
+        self.face_position(block, side, self.fractions(side, place))
     }
 
     /// Shares of a face's widths at which a place lies.
-    pub fn fractions(&self, place: usize) -> [f64; 2] {
-        let (row, column) = (place / self.layout.lanes, place % self.layout.lanes);
-        [row, column].map(|index| self.layout.fraction(index))
+    pub fn fractions(&self, side: Side, place: usize) -> [f64; 2] {
+        let (u, v) = face_axes(side / 2);
+        let lanes = self.counts.face(side / 2).lanes;
+        let (row, column) = (place / lanes, place % lanes);
+        [
+            self.counts.fraction(u, row),
+            self.counts.fraction(v, column),
+        ]
     }
 
     /// Grid coordinates (km) of a point on a face, given as shares of its widths.
@@ -178,9 +190,10 @@ impl<'a, C: Chart> FineSearch<'a, C> {
     }
 
     /// Places of all nodes on a face.
-    pub fn places(&self) -> impl Iterator<Item = usize> + use<C> {
-        let FaceLayout { count, lanes } = self.layout;
-        (0..count).flat_map(move |row| (0..count).map(move |column| row * lanes + column))
+    pub fn places(&self, side: Side) -> impl Iterator<Item = usize> + use<C> {
+        let layout = self.counts.face(side / 2);
+        (0..layout.rows)
+            .flat_map(move |row| (0..layout.columns).map(move |column| row * layout.lanes + column))
     }
 
     pub(super) fn table(&self, block: u32) -> &BoxTables {
@@ -197,7 +210,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
     }
 
     fn words(&self) -> usize {
-        self.layout.size().div_ceil(64)
+        self.size.div_ceil(64)
     }
 
     /// Searches from `start` and returns the path from there to `goal` (grid
@@ -230,7 +243,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         field.pending.clear();
         field.faces.clear();
         field.queue.reset(0, self.bucket_width_s);
-        field.old.resize(self.layout.size(), 0.0);
+        field.old.resize(self.size, 0.0);
     }
 
     fn start_at_point(&self, source: Vec3, bound: Bound<'_>, field: &mut FineField) {
@@ -242,8 +255,8 @@ impl<'a, C: Chart> FineSearch<'a, C> {
                     continue;
                 }
                 let face = self.filled_face(slot, side, bound, field);
-                let mut times = vec![f32::INFINITY; self.layout.size()];
-                for place in self.places() {
+                let mut times = vec![f32::INFINITY; self.size];
+                for place in self.places(side) {
                     let at = self.node_position(block, side, place);
                     times[place] = (self.blocks.chart().distance(at, source) * slowness) as f32;
                 }
@@ -254,7 +267,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
     }
 
     fn start_on_surface(&self, surface: &SurfaceStart, bound: Bound<'_>, field: &mut FineField) {
-        let size = self.layout.size();
+        let size = self.size;
         for (&(block, side), times) in surface.faces.iter().zip(surface.times.chunks(size)) {
             let slot = self.block_slot(block, field);
             let face = self.filled_face(slot, side, bound, field);
@@ -276,7 +289,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         let words = self.words();
         let mut earliest = f32::INFINITY;
         for (node, &time) in times.iter().enumerate() {
-            let place = face * self.layout.size() + node;
+            let place = face * self.size + node;
             if time >= field.times[place] {
                 continue;
             }
@@ -342,7 +355,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
                 least_potential: least,
                 filled: false,
             });
-            let length = field.faces.len() * self.layout.size();
+            let length = field.faces.len() * self.size;
             if field.times.len() < length {
                 field.times.resize(length, f32::INFINITY);
                 field.potentials.resize(length, f32::INFINITY);
@@ -365,19 +378,20 @@ impl<'a, C: Chart> FineSearch<'a, C> {
             return face;
         }
         field.faces[face].filled = true;
-        let size = self.layout.size();
+        let size = self.size;
         let place = face * size;
         field.times[place..place + size].fill(f32::INFINITY);
+        field.potentials[place..place + size].fill(f32::INFINITY);
         let cell = self.blocks.cell(field.visited[slot].block);
         let (start, stride_u, stride_v) = self.lattice.face(cell, side);
         let coarse = |i: usize, j: usize| bound.potential[start + i * stride_u + j * stride_v];
         let (u, v) = face_axes(side / 2);
+        let lanes = self.counts.face(side / 2).lanes;
         for (row, &(i, fu)) in self.interpolation[u].iter().enumerate() {
             for (column, &(j, fv)) in self.interpolation[v].iter().enumerate() {
                 let low = coarse(i, j) + fv * (coarse(i, j + 1) - coarse(i, j));
                 let high = coarse(i + 1, j) + fv * (coarse(i + 1, j + 1) - coarse(i + 1, j));
-                field.potentials[place + row * self.layout.lanes + column] =
-                    low + fu * (high - low);
+                field.potentials[place + row * lanes + column] = low + fu * (high - low);
             }
         }
         face
@@ -434,7 +448,7 @@ impl<'a, C: Chart> FineSearch<'a, C> {
                 while bits != 0 {
                     let place = word * 64 + bits.trailing_zeros() as usize;
                     bits &= bits - 1;
-                    let time_s = field.times[face as usize * self.layout.size() + place];
+                    let time_s = field.times[face as usize * self.size + place];
                     *earliest = earliest.min(time_s);
                     field.sources[side].push((place as u32, time_s));
                 }
@@ -475,19 +489,21 @@ impl<'a, C: Chart> FineSearch<'a, C> {
         let block = field.visited[slot].block;
         let slowness = self.blocks.slowness_of(block) as f32;
         let values = self.table(block).values();
-        let size = self.layout.size();
-        let times = &mut field.times[face * size..][..size];
-        field.old.copy_from_slice(times);
+        let layout = self.counts.face(side / 2);
+        let (first, size) = (face * self.size, layout.size());
+        let times = &mut field.times[first..][..size];
+        let old = &mut field.old[..size];
+        old.copy_from_slice(times);
         for rows in [Rows::Long, Rows::Short] {
             let chosen = &field.chosen[rows as usize];
-            relax_face((self.layout, rows), values, chosen, slowness, times);
+            relax_face((layout, rows), values, chosen, slowness, times);
         }
         let words = self.words();
-        let potentials = &field.potentials[face * size..][..size];
+        let potentials = &field.potentials[first..][..size];
         let mut alive = [0_u64; 4];
         let earliest = lowered(
             times,
-            &field.old,
+            old,
             potentials,
             (bound.scale, bound.limit_s),
             &mut alive,

@@ -90,22 +90,23 @@ impl<C: Chart> FineSearch<'_, C> {
             (position.at[axis] - low) / (high - low) * width[axis]
         });
         let slowness = self.blocks.slowness_of(block) as f32;
-        let (cell, layout) = (self.blocks.cell(block), self.layout());
+        let cell = self.blocks.cell(block);
         let mut best: Option<Step> = None;
         for side in (0..6).filter(|&side| Some(side) != position.arrived_by) {
-            let Some(times) = field.times_on(self.face_id(cell, side), layout.size()) else {
+            let Some(times) = field.times_on(self.face_id(cell, side), self.size()) else {
                 continue;
             };
             let axis = side / 2;
             let (u, v) = face_axes(axis);
+            let (counts, layout) = (self.counts(), self.counts().face(axis));
             let across = here[axis] - if side % 2 == 1 { width[axis] } else { 0.0 };
             for place in self
-                .places()
+                .places(side)
                 .filter(|&place| times[place] < position.time_s)
             {
                 let (row, column) = (place / layout.lanes, place % layout.lanes);
-                let du = here[u] - layout.fraction(row) * width[u];
-                let dv = here[v] - layout.fraction(column) * width[v];
+                let du = here[u] - counts.fraction(u, row) * width[u];
+                let dv = here[v] - counts.fraction(v, column) * width[v];
                 let way = (across * across + du * du + dv * dv).sqrt();
                 let time_s = times[place] + slowness * way as f32;
                 if best.is_none_or(|step| time_s < step.time_s) {
