@@ -42,11 +42,7 @@ fn model(velocity_km_s: impl Fn(Vec3) -> f64) -> Blocks<FlatChart> {
 /// Points of the only ray, after checks that it is sound: no block twice, no
 /// segment without length, every point on the faces of both its blocks.
 fn check_course(blocks: &Blocks<FlatChart>, rays: &RayBatch) {
-    let points: Vec<Vec3> = rays
-        .points_km
-        .chunks(3)
-        .map(|point| [point[0], point[1], point[2]])
-        .collect();
+    let points = &rays.points_km;
     let mut seen = std::collections::HashSet::new();
     for (ends, &block) in points.windows(2).zip(&rays.segment_blocks) {
         assert!(seen.insert(block), "block {block} comes twice");
