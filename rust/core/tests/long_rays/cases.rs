@@ -2,7 +2,7 @@
 //!
 //! 75 × 50 × 40 blocks of 15 km, 6 km/s at the surface and 9.75 km/s at 600 km,
 //! perturbed by 5 %. Random numbers come from a hash of the block's or ray's
-//! number (SplitMix64, Steele, Lea & Flood 2014), so that no generator's state
+//! number (splitmix64, Steele, Lea & Flood 2014), so that no generator's state
 //! has to be shared.
 
 #![allow(dead_code, reason = "each user of this file needs its own part")]
