@@ -18,7 +18,7 @@ from rayloom.forward import trace
 
 Floats = NDArray[np.float64]
 THREADS = 2
-BYTES_PER_VALUE = 8 + 4
+BYTES_PER_VALUE = {"rayloom": 8 + 4, "rayloom float32": 4 + 4, "scipy": 8 + 4}
 COPY_MIB = 512
 
 
@@ -47,7 +47,8 @@ def run(*, quick: bool, output: Path) -> Report:
         stacked = csr_array(vstack([matrix] * times, format="csr"))
         _one_matrix(report, table, stacked, quick=quick)
     report.remarks += [
-        "Bandwidth counts the matrix's values and column indices once, 12 bytes each; that of "
+        "Bandwidth counts the matrix's values and column indices once, 12 bytes each (8 with "
+        "float32 values); that of "
         f"copying counts bytes read and written by {THREADS} threads, "
         f"{64 if quick else COPY_MIB} MiB each way.",
         "Large matrices are the smallest one several times below itself. A matrix is out of "
@@ -59,19 +60,24 @@ def run(*, quick: bool, output: Path) -> Report:
 def _one_matrix(report: Report, table: Table, matrix: csr_array, *, quick: bool) -> None:
     random = np.random.default_rng(61)
     x, y = random.standard_normal(matrix.shape[1]), random.standard_normal(matrix.shape[0])
-    own = SparseProducts(
-        matrix.indptr.astype(np.int64),
-        matrix.indices.astype(np.int32),
-        matrix.data,
-        matrix.shape[1],
-        threads=THREADS,
+    own, single = (
+        SparseProducts(
+            matrix.indptr.astype(np.int64),
+            matrix.indices.astype(np.int32),
+            matrix.data.astype(dtype),
+            matrix.shape[1],
+            threads=THREADS,
+        )
+        for dtype in (np.float64, np.float32)
     )
     laps = race(
         {
             "copy": _copy(64 if quick else COPY_MIB),
             "G x, rayloom": lambda: own.times(x),
+            "G x, rayloom float32": lambda: single.times(x),
             "G x, scipy": lambda: matrix @ x,
             "Gᵀ y, rayloom": lambda: own.transposed_times(y),
+            "Gᵀ y, rayloom float32": lambda: single.transposed_times(y),
             "Gᵀ y, scipy": lambda: matrix.T @ y,
         },
         repeats=7,
@@ -90,12 +96,12 @@ def _lines(
     laps: dict[str, Lap],
     copy_gb_s: float,
 ) -> None:
-    moved = matrix.nnz * BYTES_PER_VALUE
     theirs = laps[f"{product}, scipy"]
-    size = matrix.shape[0], matrix.nnz / 1e6, moved / 2**20
-    for program in ("rayloom", "scipy"):
+    moved = {program: matrix.nnz * width for program, width in BYTES_PER_VALUE.items()}
+    for program in moved:
+        size = matrix.shape[0], matrix.nnz / 1e6, moved[program] / 2**20
         lap = laps[f"{product}, {program}"]
-        speed = moved / lap.timing.wall / 1e9
+        speed = moved[program] / lap.timing.wall / 1e9
         difference = np.abs(lap.result - theirs.result).max() / np.abs(theirs.result).max()
         table.add(
             product,
@@ -109,9 +115,9 @@ def _lines(
             float(difference),
         )
     own = laps[f"{product}, rayloom"].timing
-    label = f"{product}, {size[2]:.0f} MiB"
+    label = f"{product}, {moved['rayloom'] / 2**20:.0f} MiB"
     report.at_least(f"{label}: faster than scipy", theirs.timing.wall / own.wall, 1.5)
-    share = 100.0 * moved / own.wall / 1e9 / copy_gb_s
+    share = 100.0 * moved["rayloom"] / own.wall / 1e9 / copy_gb_s
     report.at_least(f"{label}: share of the copy bandwidth (%)", share, 50.0)
 
 

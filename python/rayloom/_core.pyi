@@ -22,7 +22,7 @@ class SparseProducts:
         cls,
         row_pointers: NDArray[np.int64],
         columns: NDArray[np.int32],
-        values: NDArray[np.float64],
+        values: NDArray[np.float64] | NDArray[np.float32],
         column_count: int,
         *,
         threads: int | None = None,
