@@ -256,9 +256,9 @@ pub fn trace_between<C: Chart>(
     let quality = quality.suited_to(blocks);
     let lattice = quality.lattice(blocks);
     let tracer = Tracer::new(blocks, &lattice, None, quality);
-    per_group(
-        pairs,
-        near,
+    let groups = grouped(pairs, near);
+    let batches = per_group(
+        &groups,
         || tracer.workspace(),
         |workspace, members| {
             let goal = ends[near][pairs[members[0]][near] as usize];
@@ -281,7 +281,8 @@ pub fn trace_between<C: Chart>(
                 ..pack(blocks, rays)
             })
         },
-    )
+    )?;
+    Ok(in_order(pairs.len(), &groups, batches))
 }
 
 /// The rays of some pairs to one receiver, and the check of their bound.
@@ -310,7 +311,7 @@ fn traced_and_checked<'b, C: Chart>(
 /// As [`trace_between`].
 pub fn trace_distant(
     blocks: &Blocks<SphereChart>,
-    waves: &DistantWaves,
+    waves: DistantWaves,
     stations: &[Vec3],
     pairs: &[[u32; 2]],
     quality: Quality,
@@ -324,7 +325,7 @@ pub fn trace_distant(
     let quality = quality.suited_to(blocks);
     let lattice = quality.lattice(blocks);
     let surface = Surface::new(blocks, &lattice);
-    let waves: Vec<Option<EarthWave<'_>>> = waves
+    let incoming: Vec<Option<EarthWave<'_>>> = waves
         .tables
         .iter()
         .zip(&waves.epicentres)
@@ -334,21 +335,21 @@ pub fn trace_distant(
                 .map(|table| EarthWave::new(table, blocks.chart(), epicentre))
         })
         .collect();
-    let corners: Vec<Option<CornerTimes>> = waves
+    let corners: Vec<Option<CornerTimes>> = incoming
         .par_iter()
         .map(|wave| wave.as_ref().map(|wave| surface.sample(wave)))
         .collect();
     let tracer = Tracer::new(blocks, &lattice, Some(&surface), quality);
-    per_group(
-        pairs,
-        1,
+    let groups = grouped(pairs, 1);
+    let batches = per_group(
+        &groups,
         || tracer.workspace(),
         |workspace, members| {
             let beginnings: Vec<_> = members
                 .iter()
                 .map(|&member| {
                     let event = pairs[member][0] as usize;
-                    match (&waves[event], &corners[event]) {
+                    match (&incoming[event], &corners[event]) {
                         (Some(incoming), Some(corners)) => Beginning::Wave {
                             incoming,
                             corners,
@@ -367,7 +368,10 @@ pub fn trace_distant(
                 ..pack(blocks, rays)
             })
         },
-    )
+    )?;
+    drop((incoming, corners));
+    drop(waves);
+    Ok(in_order(pairs.len(), &groups, batches))
 }
 
 /// Straight chords from given entry points to stations; `outside_time_s` is
@@ -420,30 +424,32 @@ fn chords<C: Chart>(
     .collect()
 }
 
-/// Runs `work` once for each distinct index in column `by` of the pairs, in
-/// parallel, and brings the results into the order of the pairs.
-fn per_group<W>(
-    pairs: &[[u32; 2]],
-    by: usize,
-    workspace: impl Fn() -> W + Sync + Send,
-    work: impl Fn(&mut W, &[usize]) -> Result<RayBatch> + Sync + Send,
-) -> Result<RayBatch> {
+/// The pairs that share their index in column `by`, in rising order.
+fn grouped(pairs: &[[u32; 2]], by: usize) -> Vec<Vec<usize>> {
     let mut order: Vec<usize> = (0..pairs.len()).collect();
     order.sort_by_key(|&pair| (pairs[pair][by], pair));
-    let groups: Vec<&[usize]> = order
+    order
         .chunk_by(|&a, &b| pairs[a][by] == pairs[b][by])
-        .collect();
-    let batches = groups
+        .map(<[usize]>::to_vec)
+        .collect()
+}
+
+/// Runs `work` on every group, in parallel.
+fn per_group<W>(
+    groups: &[Vec<usize>],
+    workspace: impl Fn() -> W + Sync + Send,
+    work: impl Fn(&mut W, &[usize]) -> Result<RayBatch> + Sync + Send,
+) -> Result<Vec<RayBatch>> {
+    groups
         .par_iter()
         .with_max_len(1)
         .map_init(workspace, |workspace, members| work(workspace, members))
-        .collect::<Result<Vec<_>>>()?;
-    Ok(in_order(pairs.len(), &groups, batches))
+        .collect()
 }
 
 /// Joins batches; ray `k` of each is that of pair `groups[…][k]`. Arrays are
 /// moved one after the other, so that hardly more than one exists twice.
-fn in_order(count: usize, groups: &[&[usize]], mut batches: Vec<RayBatch>) -> RayBatch {
+fn in_order(count: usize, groups: &[Vec<usize>], mut batches: Vec<RayBatch>) -> RayBatch {
     let mut places = vec![(0, 0); count];
     for (batch, members) in groups.iter().enumerate() {
         for (ray, &member) in members.iter().enumerate() {
@@ -566,6 +572,10 @@ fn pack<C: Chart>(blocks: &Blocks<C>, rays: Vec<Option<Ray>>) -> RayBatch {
         batch.time_s.push(inside + outside);
         batch.outside_time_s.push(outside);
     }
+    batch.columns.shrink_to_fit();
+    batch.lengths_km.shrink_to_fit();
+    batch.points_km.shrink_to_fit();
+    batch.segment_blocks.shrink_to_fit();
     batch
 }
 

@@ -169,7 +169,7 @@ fn trace_distant(
     let batch = run_long(py, threads, &progress, |monitor| {
         let blocks = on_sphere(model)?;
         let waves = rays::DistantWaves::new(blocks, &earth.earth, &phases, epicentres, depths_km)?;
-        rays::trace_distant(blocks, &waves, stations, pairs, quality, earlier, monitor)
+        rays::trace_distant(blocks, waves, stations, pairs, quality, earlier, monitor)
     })?;
     RayArrays::new(py, batch)
 }

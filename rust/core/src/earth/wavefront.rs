@@ -49,8 +49,10 @@ pub struct WavefrontTable {
     cells: Vec<Cell>,
     /// The cell that holds the top of each depth bin.
     bins: Vec<u32>,
-    /// Row by row: T, ∂T/∂Δ, ∂T/∂z, ∂²T/∂Δ∂z.
-    nodes: Vec<[f64; 4]>,
+    /// Row by row: T.
+    times_s: Vec<f64>,
+    /// Row by row: ∂T/∂Δ, ∂T/∂z, ∂²T/∂Δ∂z, whose last digits bear on none of T's.
+    slopes: Vec<[f32; 3]>,
 }
 
 /// A range of depth and the two rows of nodes that bound it.
@@ -94,7 +96,8 @@ impl WavefrontTable {
             columns: columns.max(2),
             bins: bins(&cells),
             cells,
-            nodes: Vec::new(),
+            times_s: Vec::new(),
+            slopes: Vec::new(),
         };
         table.fill(&route, &levels, &rows);
         Ok(table)
@@ -174,9 +177,13 @@ impl WavefrontTable {
         Some((&self.cells[index], depth_km))
     }
 
-    fn pair(&self, row: usize, column: usize) -> &[[f64; 4]] {
+    #[inline]
+    fn pair(&self, row: usize, column: usize) -> [[f64; 4]; 2] {
         let start = row * self.columns + column;
-        &self.nodes[start..start + 2]
+        [start, start + 1].map(|node| {
+            let [across, down, mixed] = self.slopes[node].map(f64::from);
+            [self.times_s[node], across, down, mixed]
+        })
     }
 
     /// Computes every node. `levels` are falling radii, `rows` their rows.
@@ -187,10 +194,13 @@ impl WavefrontTable {
         let curves: Vec<Vec<[f64; 3]>> = (0..levels.len())
             .map(|level| self.first_arrivals(&fan, levels.len() - 1 - level))
             .collect();
-        self.nodes = rows
-            .iter()
-            .flat_map(|row| curves[row.level].iter().map(|curve| row.node(curve)))
-            .collect();
+        for row in rows {
+            for curve in &curves[row.level] {
+                let [time_s, slopes @ ..] = row.node(curve);
+                self.times_s.push(time_s);
+                self.slopes.push(slopes.map(|slope| slope as f32));
+            }
+        }
     }
 
     /// T, p and dp/dΔ of the first arrival at each distance; infinitely late if
@@ -272,8 +282,7 @@ impl Hermite {
 
     /// T, ∂T/∂Δ, ∂T/∂z and ∂²T/∂Δ∂z between two nodes of a row.
     #[inline]
-    fn blend(&self, nodes: &[[f64; 4]]) -> [f64; 4] {
-        let (a, b) = (&nodes[0], &nodes[1]);
+    fn blend(&self, [a, b]: [[f64; 4]; 2]) -> [f64; 4] {
         [
             self.value([a[0], a[1]], [b[0], b[1]]),
             self.slope([a[0], a[1]], [b[0], b[1]]),
