@@ -134,7 +134,7 @@ def test_a_run_that_is_interrupted_goes_on_to_the_same_model(
     with subprocess.Popen(command, stderr=subprocess.PIPE, text=True) as process:
         checkpoints = broken / "checkpoints"
         deadline = time.monotonic() + 60.0
-        while not any(checkpoints.glob("*.npz")) and time.monotonic() < deadline:
+        while not any(checkpoints.glob("invert_*.npz")) and time.monotonic() < deadline:
             time.sleep(0.005)
         process.send_signal(request_to_stop)
         _, told = process.communicate(timeout=60)

@@ -46,6 +46,7 @@ def found() -> Found:
     bodies = find_bodies(
         problem,
         posterior_samples(problem, count=16, seed=3),
+        threshold_percent=1.0,
         min_resolution=0.1,
         min_volume_km3=1.5e5,
         top_km=0.0,

@@ -116,5 +116,6 @@ def test_uncertainty_defaults_quality_and_repeats(tmp_path: Path, earth: Referen
 
 def test_unwritable_place_is_told(tmp_path: Path, earth: ReferenceEarth) -> None:
     residuals = read_residuals(written(tmp_path, GOOD), STATIONS, EVENTS, earth)
+    (tmp_path / "taken").write_text("no folder")
     with pytest.raises(FileAccessError, match="cannot be written"):
-        residuals.write_csv(tmp_path / "absent" / "file.csv")
+        residuals.write_csv(tmp_path / "taken" / "file.csv")
