@@ -21,7 +21,9 @@ class ForwardSettings(BaseModel):
         Rays bent by the model, rays of the reference model, or chords.
     quality : {"standard", "thorough"}
         How close to the true first arrival a bent ray must come; "thorough" costs
-        about twice as much and leaves about a third of the error.
+        two to three times as much. On rays of 80 s through models of ±5 %, 30 in each
+        of six models, they are 1.7 to 6.2 ms and 0.4 to 2.5 ms off in the mean
+        (measured against wider and finer searches).
     threads : int, optional
         Number of threads; all cores by default.
     """
@@ -33,6 +35,6 @@ class ForwardSettings(BaseModel):
     )
     quality: Quality = Field(
         default="standard",
-        description="standard or thorough: a third of the error, twice the time",
+        description="standard or thorough: less than half of the error, over twice the time",
     )
     threads: int | None = Field(default=None, ge=1, description="all cores if left out")
