@@ -19,6 +19,7 @@ SUBJECTS = {
     "growth": "cost against the number of blocks, rays and threads",
     "reading": "one survey of 18,000 picks read in each format",
     "inversion": "a whole inversion of 5,000 residuals",
+    "large_inversion": "36,000 residuals in 150,000 blocks, six retracings, stage by stage",
     "appraisal": "samples, probes, restorations, bootstrap and squeezing of 6,000 residuals",
     "squeezing": "power of squeezing and coverage of body intervals on the demo's survey",
     "comparison": "straight, reference and bent rays at equal misfit on a known structure",
