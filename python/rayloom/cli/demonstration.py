@@ -108,7 +108,7 @@ def _body_lines(body: BodyVerdict) -> list[str]:
         _row(body.name, "true", body.true),
         _row("", "found", body.found),
         f"{'':<14}off by {body.horizontal_error_km:.0f} km horizontally, "
-        f"{body.depth_error_km:+.0f} km in depth",
+        f"{round(body.depth_error_km):+d} km in depth",
     ]
 
 
