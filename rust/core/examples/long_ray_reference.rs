@@ -15,8 +15,8 @@ use rayloom_core::blocks::Blocks;
 use rayloom_core::error::Result;
 use rayloom_core::frame::{Chart, FlatChart, SphereChart};
 use rayloom_core::monitor::Monitor;
+use rayloom_core::quality::Quality;
 use rayloom_core::rays::{Method, trace_between};
-use rayloom_core::tracer::Quality;
 
 /// Nodes per edge of the coarse graph, and along each side of a fine face.
 const GRAPHS: [(usize, usize); 3] = [(3, 12), (3, 16), (2, 16)];

@@ -2,25 +2,23 @@
 //! receiver, then for every ray the first guess, the fine search inside its
 //! bound and the Fermat refinement.
 
+use crate::beginning::Beginning;
 use crate::blocks::Blocks;
 use crate::course::path_along;
-use crate::entry::{CornerTimes, Surface, entry_axis_at};
+use crate::entry::{Surface, entry_axis_at};
 use crate::error::Result;
 use crate::fermat::{Effort, Refiner};
 use crate::frame::Chart;
-use crate::incoming::Incoming;
 use crate::lattice::Lattice;
 use crate::monitor::Monitor;
 use crate::path::Path;
+use crate::quality::Quality;
 use crate::search::backtrack::trace_back;
-use crate::search::box_tables::{MOST_NODES, NodeCounts};
 use crate::search::coarse::{CoarseField, CoarseSearch};
 use crate::search::fine::{Bound, FineField, FineSearch, Start, SurfaceStart};
 use crate::undisturbed::{undisturbed_leg, undisturbed_ray};
 use crate::vec3::Vec3;
 
-/// Added to the slack of a fine search that found nothing (block transits).
-const RETRY_SLACK: f64 = 0.1;
 /// A known ray of a similar model that gains more than this (block transits) when
 /// it settles or in the fine search around it is no guide.
 const TRUSTED_GAIN: f64 = 0.002;
@@ -39,171 +37,6 @@ const LEG_MARGIN: f64 = 2.0;
 /// Of two paths the later one is not refined further if it is later by more than
 /// this (block transits).
 const HOPELESS: f64 = 0.05;
-
-/// Flatness beyond which the coarse graph gets more nodes.
-const FLAT_BLOCKS: f64 = 1.4;
-/// Fewest nodes along an edge of the fine graph.
-const FEWEST_NODES: f64 = 3.0;
-/// Rows of eight nodes fill a vector; fewer than this do not repay a second one.
-const WORTH_TWO_VECTORS: f64 = 11.0;
-
-/// How finely to search and how hard to refine.
-#[derive(Debug, Clone, Copy)]
-pub struct Quality {
-    /// Nodes inside each block edge of the coarse graph (and squared in each
-    /// face).
-    pub coarse_nodes: usize,
-    /// Whether every edge carries just that many, however long it is.
-    pub uniform_nodes: bool,
-    /// Nodes along each edge of a cube in the fine graph, at the same spacing in
-    /// other blocks; 0 leaves the fine search out.
-    pub fine_nodes: usize,
-    /// Relative excess of the fine graph's times over true ones, in cubes; it
-    /// grows with the root of the blocks' flatness and the square of the spacing.
-    pub fine_bias: f64,
-    /// How much later than the present ray a fine path may be, as a share of the
-    /// mean time through a block.
-    pub slack: f64,
-    /// The same slack around a known ray of a similar model.
-    pub slack_again: f64,
-    /// Refinement of that ray if the fine search finds nothing earlier.
-    pub again: Effort,
-    /// Refinement before the fine search.
-    pub first: Effort,
-    /// Refinement after the fine search.
-    pub last: Effort,
-}
-
-impl Quality {
-    /// The everyday level.
-    #[must_use]
-    pub fn standard() -> Self {
-        Self {
-            coarse_nodes: 2,
-            uniform_nodes: false,
-            fine_nodes: 8,
-            fine_bias: 0.0033,
-            slack: 0.12,
-            slack_again: 0.03,
-            again: Effort {
-                chord_rounds: 0,
-                flip_rounds: 1,
-                flip_patience: 0.02,
-            },
-            first: effort(2, 0),
-            last: effort(2, 10),
-        }
-    }
-
-    /// About three times smaller errors, at about twice the cost.
-    #[must_use]
-    pub fn thorough() -> Self {
-        Self {
-            coarse_nodes: 3,
-            uniform_nodes: false,
-            fine_nodes: 12,
-            fine_bias: 0.0016,
-            slack: 0.08,
-            slack_again: 0.02,
-            again: Effort {
-                chord_rounds: 0,
-                flip_rounds: 1,
-                flip_patience: 0.02,
-            },
-            first: effort(2, 4),
-            last: effort(3, 20),
-        }
-    }
-}
-
-impl Quality {
-    /// The same level for a given model: flat blocks need more nodes on the coarse
-    /// graph for the same error.
-    #[must_use]
-    pub fn suited_to<C: Chart>(mut self, blocks: &Blocks<C>) -> Self {
-        if blocks.flatness() > FLAT_BLOCKS {
-            self.coarse_nodes += usize::from(!self.uniform_nodes);
-        }
-        self
-    }
-
-    fn slacks(&self) -> [f64; 2] {
-        [self.slack, self.slack + RETRY_SLACK]
-    }
-
-    /// The fine graph's nodes in a model, equally spaced along all axes as far as
-    /// their numbers allow, and the excess of its times.
-    fn fine_graph<C: Chart>(&self, blocks: &Blocks<C>) -> (NodeCounts, f64) {
-        let wanted = blocks.mean_width_km() / (self.fine_nodes.max(2) - 1) as f64;
-        let widths = [0, 1, 2].map(|axis| blocks.mean_width_along(axis));
-        let counts = widths.map(|width| {
-            let count = (width / wanted).round() + 1.0;
-            let count = if count > 8.0 && count < WORTH_TWO_VECTORS {
-                8.0
-            } else {
-                count
-            };
-            count.clamp(FEWEST_NODES, MOST_NODES as f64)
-        });
-        let widest = (0..3)
-            .map(|axis| widths[axis] / (counts[axis] - 1.0))
-            .fold(wanted, f64::max);
-        let bias = self.fine_bias * blocks.flatness().sqrt() * (widest / wanted).powi(2);
-        (NodeCounts::new(counts.map(|count| count as usize)), bias)
-    }
-
-    /// The coarse graph's nodes in a model.
-    #[must_use]
-    pub fn lattice<C: Chart>(&self, blocks: &Blocks<C>) -> Lattice {
-        if self.uniform_nodes {
-            Lattice::uniform(blocks, self.coarse_nodes)
-        } else {
-            Lattice::new(blocks, self.coarse_nodes)
-        }
-    }
-}
-
-fn effort(chord_rounds: usize, flip_rounds: usize) -> Effort {
-    Effort {
-        chord_rounds,
-        flip_rounds,
-        flip_patience: 0.16,
-    }
-}
-
-/// Where a ray begins.
-#[derive(Clone, Copy)]
-pub enum Beginning<'a> {
-    /// At a point inside the model (grid coordinates, km).
-    Point(Vec3),
-    /// On the model's surface, with a wave from outside.
-    Wave {
-        /// The wave.
-        incoming: &'a dyn Incoming,
-        /// Its times at the surface's corners.
-        corners: &'a CornerTimes,
-        /// Its ray in a similar model (grid coordinates, km); empty if unknown.
-        earlier: &'a [Vec3],
-    },
-    /// No direct wave comes.
-    Nowhere,
-}
-
-impl<'a> Beginning<'a> {
-    fn incoming(&self) -> Option<&'a dyn Incoming> {
-        match *self {
-            Self::Wave { incoming, .. } => Some(incoming),
-            Self::Point(_) | Self::Nowhere => None,
-        }
-    }
-
-    fn point(&self) -> Option<Vec3> {
-        match self {
-            Self::Point(point) => Some(*point),
-            Self::Wave { .. } | Self::Nowhere => None,
-        }
-    }
-}
 
 /// One traced ray.
 #[derive(Debug, Clone)]

@@ -8,8 +8,8 @@ use cases::{ENDS, Roughness, ends, model, radius_km};
 use rayloom_core::blocks::Blocks;
 use rayloom_core::frame::{Chart, FlatChart, SphereChart};
 use rayloom_core::monitor::Monitor;
+use rayloom_core::quality::Quality;
 use rayloom_core::rays::{Method, trace_between};
-use rayloom_core::tracer::Quality;
 
 const REFERENCE: &str = include_str!("long_rays/reference.csv");
 

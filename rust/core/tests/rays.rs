@@ -7,8 +7,8 @@ use rayloom_core::blocks::Blocks;
 use rayloom_core::course::path_along;
 use rayloom_core::frame::{Chart, FlatChart, SphereChart};
 use rayloom_core::monitor::Monitor;
+use rayloom_core::quality::Quality;
 use rayloom_core::rays::{Method, RayBatch, trace_between};
-use rayloom_core::tracer::Quality;
 use rayloom_core::vec3::Vec3;
 
 fn all_pairs(first: usize, second: usize) -> Vec<[u32; 2]> {

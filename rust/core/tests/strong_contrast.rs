@@ -8,8 +8,8 @@ use common::edges;
 use rayloom_core::blocks::Blocks;
 use rayloom_core::frame::FlatChart;
 use rayloom_core::monitor::Monitor;
+use rayloom_core::quality::Quality;
 use rayloom_core::rays::{Method, RayBatch, trace_between};
-use rayloom_core::tracer::Quality;
 use rayloom_core::vec3::{Vec3, distance};
 
 const BLOCK_KM: f64 = 15.0;

@@ -6,8 +6,9 @@ use pyo3::prelude::*;
 use rayloom_core::blocks::Blocks;
 use rayloom_core::error::{CoreError, Result};
 use rayloom_core::frame::{FlatChart, SphereChart};
+use rayloom_core::quality::Quality;
 use rayloom_core::rays::{self, Earlier, Method, RayBatch};
-use rayloom_core::tracer::Quality;
+use rayloom_core::waves::DistantWaves;
 
 use crate::earth::{LayeredEarth, phase_named};
 use crate::gate::{Progress, run_long};
@@ -168,7 +169,7 @@ fn trace_distant(
         .collect::<PyResult<Vec<_>>>()?;
     let batch = run_long(py, threads, &progress, |monitor| {
         let blocks = on_sphere(model)?;
-        let waves = rays::DistantWaves::new(blocks, &earth.earth, &phases, epicentres, depths_km)?;
+        let waves = DistantWaves::new(blocks, &earth.earth, &phases, epicentres, depths_km)?;
         rays::trace_distant(blocks, waves, stations, pairs, quality, earlier, monitor)
     })?;
     RayArrays::new(py, batch)

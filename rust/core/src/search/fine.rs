@@ -1,10 +1,10 @@
 //! Search around one ray on a fine graph, inside a proven bound: [`FineSearch`].
 //!
-//! Nodes are rows of points on every face, their numbers its own for each axis;
-//! each face has its own copies, and there are no corner or edge nodes. Blocks and faces are created when first reached. A node
-//! stays alive only while its time plus the scaled coarse time on to the goal
-//! stays below the bound (a goal-directed search with the coarse field as its
-//! potential). Only the faces just reached from one side are relaxed into the
+//! Nodes are rows of points on every face, as many along each axis as it asks
+//! for; each face has its own copies, and there are no corner or edge nodes.
+//! Blocks and faces are created when first reached. A node stays alive only while
+//! its time plus the scaled coarse time on to the goal stays below the bound (a
+//! goal-directed search with the coarse field as its potential). Only the faces just reached from one side are relaxed into the
 //! block on the other: within a block all nodes see each other, so a path never
 //! spends two segments in one block.
 
@@ -47,7 +47,7 @@ pub struct SurfaceStart {
 pub struct FineSearch<'a, C> {
     pub(super) blocks: &'a Blocks<C>,
     lattice: &'a Lattice,
-    counts: NodeCounts,
+    pub(super) counts: NodeCounts,
     size: usize,
     rows: RowIndex,
     boxes: BoxSet,
@@ -157,43 +157,6 @@ impl<'a, C: Chart> FineSearch<'a, C> {
     /// Length of an array that holds any face.
     pub fn size(&self) -> usize {
         self.size
-    }
-
-    /// Grid coordinates (km) of the node at a place on a face.
-    pub fn node_position(&self, block: u32, side: Side, place: usize) -> Vec3 {
-        self.face_position(block, side, self.fractions(side, place))
-    }
-
-    /// Shares of a face's widths at which a place lies.
-    pub fn fractions(&self, side: Side, place: usize) -> [f64; 2] {
-        let (u, v) = face_axes(side / 2);
-        let lanes = self.counts.face(side / 2).lanes;
-        let (row, column) = (place / lanes, place % lanes);
-        [
-            self.counts.fraction(u, row),
-            self.counts.fraction(v, column),
-        ]
-    }
-
-    /// Grid coordinates (km) of a point on a face, given as shares of its widths.
-    pub fn face_position(&self, block: u32, side: Side, shares: [f64; 2]) -> Vec3 {
-        let axis = side / 2;
-        let (u, v) = face_axes(axis);
-        let mut at = [0.0; 3];
-        let (low, high) = self.blocks.range(block, axis);
-        at[axis] = if side % 2 == 1 { high } else { low };
-        for (along, share) in [u, v].into_iter().zip(shares) {
-            let (low, high) = self.blocks.range(block, along);
-            at[along] = low + (high - low) * share;
-        }
-        at
-    }
-
-    /// Places of all nodes on a face.
-    pub fn places(&self, side: Side) -> impl Iterator<Item = usize> + use<C> {
-        let layout = self.counts.face(side / 2);
-        (0..layout.rows)
-            .flat_map(move |row| (0..layout.columns).map(move |column| row * layout.lanes + column))
     }
 
     pub(super) fn table(&self, block: u32) -> &BoxTables {

@@ -10,3 +10,4 @@ pub mod coarse;
 pub mod face_kernel;
 pub mod fine;
 mod fine_backtrack;
+mod fine_nodes;
