@@ -4,8 +4,9 @@
 //! The way through the crate: [`frame`] and [`blocks`] describe the model,
 //! [`lattice`] its graph, [`search`] finds paths on it, [`fermat`] refines them,
 //! [`tracer`] joins the three as thoroughly as [`quality`] says, [`rays`] traces
-//! whole data sets in parallel and packs their sensitivities, [`products`] multiplies with them; [`earth`],
-//! [`waves`] and [`entry`] bring the waves from outside.
+//! whole data sets in parallel and packs their sensitivities, [`products`]
+//! multiplies with them; [`earth`], [`waves`] and [`entry`] bring the waves from
+//! outside.
 //!
 //! Every long call takes a [`monitor::Monitor`] and returns
 //! [`error::CoreError`] on failure; results never depend on the number of
