@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
 from typing import TYPE_CHECKING, Final
 
 import numpy as np
@@ -21,8 +20,8 @@ from rayloom.outputs.rose_figure import figure_roses, rose_counts
 from rayloom.outputs.spread_figure import figure_point_spread
 from rayloom.settings import RunSettings
 from rayloom.workflow.folder import RunFolder
-from rayloom.workflow.plan import Files
 from rayloom.workflow.sample_file import save_samples
+from rayloom.workflow.written import Written
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -33,22 +32,6 @@ if TYPE_CHECKING:
 
 Floats = NDArray[np.float64]
 SECTION_FILE: Final = "appraisal_report.json"
-
-
-@dataclass(frozen=True)
-class Written:
-    """What was written.
-
-    Attributes
-    ----------
-    files : dict
-        Paths by their names in the run folder.
-    section : ReportSection
-        The part of the report.
-    """
-
-    files: Files
-    section: ReportSection
 
 
 def write_appraisal(folder: RunFolder, settings: RunSettings, found: Appraisal) -> Written:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
@@ -24,7 +24,7 @@ from rayloom.outputs.report_section import ReportSection, SectionFigure, Section
 from rayloom.outputs.squeezing_figure import figure_squeezing
 from rayloom.settings import RunSettings
 from rayloom.workflow.folder import RunFolder
-from rayloom.workflow.plan import Files
+from rayloom.workflow.written import Written
 
 if TYPE_CHECKING:
     from rayloom.workflow.bodies import FoundBodies
@@ -47,23 +47,7 @@ _CAPTIONS: Final = {
 }
 
 
-@dataclass(frozen=True)
-class WrittenBodies:
-    """What was written.
-
-    Attributes
-    ----------
-    files : dict
-        Paths by their names in the run folder.
-    section : ReportSection
-        The part of the report.
-    """
-
-    files: Files
-    section: ReportSection
-
-
-def write_bodies(folder: RunFolder, settings: RunSettings, found: FoundBodies) -> WrittenBodies:
+def write_bodies(folder: RunFolder, settings: RunSettings, found: FoundBodies) -> Written:
     """Write everything of the step.
 
     Parameters
@@ -104,7 +88,7 @@ def write_bodies(folder: RunFolder, settings: RunSettings, found: FoundBodies) -
     names = [*tables, "bodies.json", SECTION_FILE, *drawn]
     if found.squeezed is not None:
         names.append(SQUEEZED_FILE)
-    return WrittenBodies({name: folder.file(name) for name in names}, section)
+    return Written({name: folder.file(name) for name in names}, section)
 
 
 def sentences(found: FoundBodies) -> list[str]:
